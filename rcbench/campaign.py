@@ -5,17 +5,26 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
 
 from rcbench.device import Device
-from rcbench.errors import InputError, suggest
+from rcbench.device_file import device_table, read_device
+from rcbench.errors import InputError, InputErrors, raise_all, suggest
+from rcbench.regions import read_regions, write_regions
+from rcbench.signatures.registry import signature
+from rcbench.tomlfile import Section, read_toml
 
 FAMILIES = ("brickwork", "product", "dimers")
 TWO_QUBIT = ("haar", "clifford", "cz", "iswap", "sqrt-iswap", "fsim", "zz")
 ONE_QUBIT = ("none", "haar", "quarter-turns", "azimuth", "clifford")
 REFERENCES = ("ideal", "noise-model")
 CIRCUIT_FORMATS = ("qasm3", "qasm2", "cirq-json")
+RULE = "equivalence of paired differences"
+_NAME = re.compile(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,59}")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -140,7 +149,7 @@ class Campaign:
     experiments: tuple[Experiment, ...]
     confidence: float = 0.95
     circuit_format: str = "qasm3"
-    rule: str = "equivalence of paired differences"
+    rule: str = RULE
 
     def __post_init__(self) -> None:
         if not 0.5 <= self.confidence < 1:
@@ -154,3 +163,291 @@ class Campaign:
             if experiment.name == name:
                 return experiment
         raise InputError("experiment", name, suggest(name, [e.name for e in self.experiments]))
+
+
+def load_campaign(path: Path | str) -> Campaign:
+    """Read and check a campaign file; protocols given as paths are taken relative to it.
+
+    Raises:
+        InputError: every error of the file at once, each with file, line, key, what was found and what is allowed.
+    """
+    path = Path(path)
+    file = read_toml(path)
+    errors: list[InputError] = []
+    top = Section(file, (), file.data, errors)
+    head, device_section = top.section("campaign"), top.section("device")
+    if head is None:
+        top.error("campaign", "nothing", "a table [campaign] with title and seed")
+    device = read_device(device_section) if device_section is not None else None
+    if device_section is None:
+        top.error("device", "nothing", "a table [device]")
+    facts: dict[str, Any] = {}
+    if head is not None:
+        facts = {
+            "title": head.text("title"),
+            "seed": head.whole("seed", low=0),
+            "confidence": head.number("confidence", 0.95),
+            "circuit_format": head.choice("circuit_format", CIRCUIT_FORMATS, "qasm3"),
+            "rule": head.choice("rule", [RULE], RULE),
+        }
+        head.close()
+    sections = top.sections("experiment")
+    if not sections:
+        top.error("experiment", "nothing", "one or more tables [[experiment]]")
+    top.close()
+    experiments: list[Experiment] = []
+    if device is not None:
+        for section in sections:
+            experiment = _read_experiment(section, device, experiments, path.parent)
+            if experiment is not None:
+                experiments.append(experiment)
+    if not errors:
+        _check_links(sections, experiments)
+    raise_all(errors)
+    assert device is not None
+    try:
+        return Campaign(device=device, experiments=tuple(experiments), **facts)
+    except InputError as error:
+        raise error.at(file.where("campaign", error.key)) from None
+
+
+def load_device(path: Path | str) -> Device:
+    """The device of a file that holds a [device] table and nothing else that matters."""
+    file = read_toml(Path(path))
+    errors: list[InputError] = []
+    section = Section(file, (), file.data, errors).section("device")
+    if section is None:
+        raise InputError("device", "nothing", "a table [device]", f"{file.name}:1: ")
+    device = read_device(section)
+    raise_all(errors)
+    assert device is not None
+    return device
+
+
+def _read_experiment(section: Section, device: Device, before: list[Experiment], folder: Path) -> Experiment | None:
+    """One [[experiment]]; what it leaves out it takes from the experiment whose circuits it shares."""
+    errors_before = len(section.errors)
+    name = section.text("name")
+    if isinstance(name, str) and not _NAME.fullmatch(name):
+        section.error("name", name, "letters, digits, '-', '_' and '.', at most 60")
+    if name in [experiment.name for experiment in before]:
+        section.error("name", name, "a name that no other experiment has")
+    source_name = section.text("same_circuits_as", "")
+    source = next((experiment for experiment in before if experiment.name == source_name), None)
+    if source_name and source is None:
+        section.error(
+            "same_circuits_as", source_name, suggest(source_name, [e.name for e in before]) or "an earlier one"
+        )
+    qubits, patch = _read_qubits(section, device, source)
+    protocol, signatures = section.text("protocol", None), section.texts("signatures", ())
+    if (protocol is None) == (not signatures):
+        section.error("protocol", protocol, "either a protocol, or a list of signatures to predict only")
+    circuits = _read_circuits(section, source.circuits if source else None, device)
+    like = {"depths": source.depths, "instances": source.instances} if source else {}
+    facts: dict[str, Any] = {
+        "name": name,
+        "depths": section.wholes("depths", like.get("depths", ...)),
+        "instances": section.whole("instances", like.get("instances", ...), low=1, high=1_000_000),
+        "shots": section.whole("shots", source.shots if source else 1000, low=1),
+        "repeats": section.whole("repeats", 1, low=1, high=10_000),
+        "nested": section.flag("nested", source.nested if source else True),
+        "against": section.choice("against", REFERENCES, "noise-model" if device.errors else "ideal"),
+        "control_for": section.text("control_for", ""),
+        "same_circuits_as": source_name,
+        "sites": _read_sites(section),
+        "regions": _read_regions(section),
+    }
+    stated = _read_margins(section)
+    section.close()
+    if protocol is not None:
+        facts["protocol"], keys = _find_protocol(section, protocol, folder)
+        facts["margins"] = {key: Margin(value=signature(key).margin) for key in keys if not _no_margin(key)} | stated
+    else:
+        facts["signatures"], facts["margins"] = signatures, stated
+        for key in signatures:
+            try:
+                signature(key)
+            except InputError as error:
+                section.error("signatures", key, error.allowed)
+    if len(section.errors) > errors_before or circuits is None:
+        return None
+    if facts["against"] == "noise-model" and device.errors is None:
+        section.error("against", "noise-model", "ideal, since the device states no errors")
+    try:
+        return Experiment(circuits=circuits, qubits=qubits, patch=patch, **facts)
+    except InputError as error:
+        section.catch(error)
+        return None
+
+
+def _no_margin(key: str) -> bool:
+    return signature(key).axis == "prediction only"
+
+
+def _find_protocol(section: Section, protocol: str, folder: Path) -> tuple[str, tuple[str, ...]]:
+    """A shipped protocol's name, or the path of a file beside the campaign; with the signatures it measures."""
+    from rcbench.protocol import load_protocol
+
+    local = folder / protocol
+    found = str(local) if protocol.endswith(".toml") else protocol
+    try:
+        return found, load_protocol(found).signature_keys
+    except InputError as error:
+        if error.where and not isinstance(error, InputErrors):
+            section.errors.append(error)
+        elif isinstance(error, InputErrors):
+            section.errors.extend(error.errors)
+        else:
+            section.error("protocol", protocol, error.allowed)
+        return found, ()
+
+
+def _read_qubits(section: Section, device: Device, source: Experiment | None) -> tuple[tuple[int, ...], str]:
+    patch = section.text("patch", "")
+    qubits = section.wholes("qubits", ())
+    if patch and qubits:
+        section.error("patch", patch, "either patch or qubits, not both")
+    if patch:
+        if patch not in device.patches:
+            section.error("patch", patch, suggest(patch, device.patches) or "no patch: the device names none")
+        return device.patches.get(patch, ()), patch
+    if qubits:
+        working = set(device.working_qubits)
+        for qubit in qubits:
+            if qubit not in working:
+                section.error("qubits", qubit, f"working qubits of the device, 0 to {device.n_qubits - 1}")
+        if len(set(qubits)) != len(qubits):
+            section.error("qubits", list(qubits), "each qubit once")
+        return qubits, ""
+    return (source.qubits, source.patch) if source else (device.working_qubits, "")
+
+
+def _read_circuits(section: Section, like: Circuits | None, device: Device) -> Circuits | None:
+    default = like or Circuits()
+    facts: dict[str, Any] = {
+        "family": section.choice("family", FAMILIES, default.family),
+        "two_qubit": section.choice("two_qubit", TWO_QUBIT, default.two_qubit),
+        "angle": section.number("angle", default.angle),
+    }
+    plain = "none" if facts["two_qubit"] in ("haar", "clifford") else "quarter-turns"
+    facts["one_qubit"] = section.choice("one_qubit", ONE_QUBIT, like.one_qubit if like else plain)
+    if facts["two_qubit"] not in ("haar", "clifford"):
+        try:
+            device.native(facts["two_qubit"])
+        except InputError as error:
+            section.error("two_qubit", facts["two_qubit"], error.allowed)
+    try:
+        return Circuits(**facts)
+    except InputError as error:
+        section.catch(error)
+        return None
+
+
+def _read_sites(section: Section) -> dict[str, tuple[int, ...]]:
+    table = section.section("sites")
+    return {} if table is None else {name: table.wholes(name, ()) for name in table.data}
+
+
+def _read_regions(section: Section) -> tuple[tuple[int, ...], ...]:
+    out: list[tuple[int, ...]] = []
+    for label in section.texts("regions", ()):
+        try:
+            out += read_regions(label)
+        except InputError as error:
+            section.error("regions", label, error.allowed)
+    return tuple(out)
+
+
+def _read_margins(section: Section) -> dict[str, Margin]:
+    """Margins by signature: a number, or { relative = 0.1 } or { absolute = 0.05 }."""
+    table = section.section("margins")
+    out: dict[str, Margin] = {}
+    for key in table.data if table is not None else ():
+        assert table is not None
+        try:
+            signature(key)
+        except InputError as error:
+            table.error(key, table.raw(key), error.allowed)
+            continue
+        inner = table.section(key) if isinstance(table.data[key], dict) else None
+        try:
+            if inner is not None and inner.has("relative"):
+                value, relative = inner.number("relative"), True
+            else:
+                value, relative = (inner.number("absolute") if inner is not None else table.number(key)), False
+            if value is not None:
+                out[key] = Margin(value=value, relative=relative)
+        except InputError as error:
+            table.error(key, error.found, error.allowed)
+        if inner is not None:
+            inner.close()
+    return out
+
+
+def _check_links(sections: list[Section], experiments: list[Experiment]) -> None:
+    """Experiments that share circuits or stand as controls must fit each other."""
+    by_name = {experiment.name: experiment for experiment in experiments}
+    for section, experiment in zip(sections, experiments, strict=True):
+        if experiment.control_for and experiment.control_for not in by_name:
+            section.error("control_for", experiment.control_for, suggest(experiment.control_for, by_name))
+        source = by_name.get(experiment.same_circuits_as)
+        if source is None:
+            continue
+        for key in ("qubits", "nested"):
+            if getattr(experiment, key) != getattr(source, key):
+                section.error(
+                    "same_circuits_as", source.name, f"an experiment with the same {key}, {getattr(experiment, key)}"
+                )
+        same_gates = experiment.circuits.gates == source.circuits.gates
+        if not same_gates:
+            section.error("same_circuits_as", source.name, f"an experiment with gates {experiment.circuits.gates}")
+
+
+def dump_campaign(campaign: Campaign) -> str:
+    """The resolved campaign as TOML; `load_campaign` reads the same campaign from it."""
+    import tomli_w
+
+    data: dict[str, Any] = {
+        "campaign": {
+            "title": campaign.title,
+            "seed": campaign.seed,
+            "confidence": campaign.confidence,
+            "circuit_format": campaign.circuit_format,
+            "rule": campaign.rule,
+        },
+        "device": device_table(campaign.device),
+        "experiment": [_experiment_table(experiment) for experiment in campaign.experiments],
+    }
+    return tomli_w.dumps(data)
+
+
+def _experiment_table(experiment: Experiment) -> dict[str, Any]:
+    table: dict[str, Any] = {"name": experiment.name}
+    if experiment.protocol is not None:
+        table["protocol"] = experiment.protocol
+    else:
+        table["signatures"] = list(experiment.signatures)
+    circuits = experiment.circuits
+    table |= {"family": circuits.family, "two_qubit": circuits.two_qubit, "one_qubit": circuits.one_qubit}
+    if circuits.angle is not None:
+        table["angle"] = circuits.angle
+    table |= {
+        "depths": list(experiment.depths),
+        "instances": experiment.instances,
+        "shots": experiment.shots,
+        "repeats": experiment.repeats,
+        "nested": experiment.nested,
+        "against": experiment.against,
+    }
+    table |= {"patch": experiment.patch} if experiment.patch else {"qubits": list(experiment.qubits)}
+    for key in ("same_circuits_as", "control_for"):
+        if getattr(experiment, key):
+            table[key] = getattr(experiment, key)
+    if experiment.regions:
+        table["regions"] = [write_regions(region) for region in experiment.regions]
+    table["sites"] = {name: list(sites) for name, sites in experiment.sites.items()}
+    table["margins"] = {
+        key: {"relative": margin.value} if margin.relative else margin.value
+        for key, margin in experiment.margins.items()
+    }
+    return table

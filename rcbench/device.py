@@ -97,7 +97,10 @@ class Timings:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Limits:
-    """What a device takes at once; None where there is no limit. exclusive: sets of couplers that must not run together."""
+    """What a device takes at once; None where there is no limit.
+
+    exclusive: sets of couplers of which only one may run at a time.
+    """
 
     shots_per_circuit: int | None = None
     circuits_per_job: int | None = None
@@ -111,7 +114,7 @@ class NativeGate:
 
     Args:
         name: one of NATIVE_TWO_QUBIT.
-        parameters: fsim (theta, phi) or zz (angle,) in radians; empty for the others. For zz an empty tuple means any angle.
+        parameters: fsim (theta, phi) or zz (angle,) in radians; empty for the others, and for zz of any angle.
         by_coupler: calibrated parameters of single couplers (a, b), a < b.
         negative: true where the device also offers the gate with all its angles negated.
     """
@@ -161,4 +164,6 @@ class Device:
         for gate in self.two_qubit:
             if gate.name == name:
                 return gate
-        raise InputError("two_qubit", name, suggest(name, [gate.name for gate in self.two_qubit]) + f" (native to {self.name})")
+        raise InputError(
+            "two_qubit", name, suggest(name, [gate.name for gate in self.two_qubit]) + f" (native to {self.name})"
+        )

@@ -95,6 +95,17 @@ class CircuitBuilder:
         second = int(qubits[1]) if len(qubits) > 1 else -1
         self._rows.append((self._layer, CODE[name], int(qubits[0]), second, first))
 
+    def add_rows(self, name: str, qubits: IntArray, parameters: FloatArray | None = None) -> None:
+        """Many rows of one kind in the current layer; qubits: (m,) or (m, 2); parameters: (m, k)."""
+        pairs = np.asarray(qubits)
+        count, start = len(pairs), len(self._parameters)
+        one, two = pairs.T.tolist() if pairs.ndim == 2 else (pairs.tolist(), [-1] * count)
+        first: Iterable[int] = [-1] * count
+        if parameters is not None and parameters.size:
+            self._parameters += parameters.ravel().tolist()
+            first = range(start, len(self._parameters), parameters.shape[1])
+        self._rows += zip([self._layer] * count, [CODE[name]] * count, one, two, first, strict=True)
+
     def next_layer(self) -> None:
         """Later rows run after those so far; an empty layer is not counted."""
         if self._rows and self._rows[-1][0] == self._layer:

@@ -20,6 +20,16 @@ class Value(NamedTuple):
     std_error: float
 
 
+def at_least_one_shot(value: Value, shots: int, span: float) -> Value:
+    """The value with a standard error no smaller than one more shot could move the mean of a function of that span.
+
+    Shots that all agree have no spread of their own, which does not make their mean exact. Predictions stay as they are.
+    """
+    if shots == 0:
+        return value
+    return Value(value.value, max(value.std_error, float(span) / (shots + 1)))
+
+
 class Sample(Protocol):
     """Outcomes or a distribution over bitstrings of n_bits classical bits, bit 0 first and most significant."""
 

@@ -1,0 +1,177 @@
+"""The path by depth in the plane of spread against kept, with the controls that must stay out of one corner."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+from rcbench.campaign import Experiment
+from rcbench.report import figures as look
+from rcbench.report.curves import Curve, compared_curve, curve
+from rcbench.report.source import Group, Source
+from rcbench.report.spreading import anticoncentration, spread_curve
+
+FAMILIES = ("brickwork", "product", "dimers")
+KEPT_KEYS = {"self_fidelity": "kept", "xeb_fidelity": "faithful, a bound from below"}
+
+
+@dataclass(frozen=True, slots=True)
+class PathData:
+    """The path of one group.
+
+    points: columns family, depth, spread, spread_low, spread_high, kept, kept_low, kept_high, axis. kept_key: the
+    signature on the upright axis. measured: whether spread was measured by OTOC; else computed from the circuits.
+    model: columns depth, spread, kept of the noise model, empty where it cannot be drawn. absent: why a control is missing.
+    """
+
+    points: pd.DataFrame
+    kept_key: str
+    measured: bool
+    model: pd.DataFrame
+    absent: tuple[str, ...]
+
+
+def path_data(source: Source, group: Group) -> PathData | None:
+    """Join spread and kept by depth for a group and its controls; None where one of the two axes has no data."""
+    families: dict[str, tuple[Experiment, ...]] = {"brickwork": group.experiments, **group.controls}
+    spread = {family: _spread_of(source, members) for family, members in families.items()}
+    measured = len(spread["brickwork"]) > 0
+    if not measured:
+        spread = {family: _computed_spread(source, members) for family, members in families.items()}
+    for key in KEPT_KEYS:
+        kept = {family: _kept_of(source, members, key) for family, members in families.items()}
+        if len(kept["brickwork"]) and len(spread["brickwork"]):
+            break
+    else:
+        return None
+    frames, absent = [], []
+    for family in families:
+        frame = _join(spread[family], kept[family])
+        if frame.empty:
+            what = "spread" if len(spread[family]) == 0 else "kept" if len(kept[family]) == 0 else "a common depth"
+            absent.append(f"{family} has no place here: no data on {what}.")
+        frames.append(frame.assign(family=family))
+    points = pd.concat(frames, ignore_index=True)
+    if not (points["family"] == "brickwork").any():
+        return None
+    return PathData(points, key, measured, _model_path(source, group, key) if measured else pd.DataFrame(), tuple(absent))
+
+
+def _spread_of(source: Source, members: tuple[Experiment, ...]) -> Curve:
+    found = [spread_curve(source, experiment) for experiment in members if _has(source, experiment, "otoc")]
+    return found[0] if found else curve([], [], [], [])
+
+
+def _computed_spread(source: Source, members: tuple[Experiment, ...]) -> Curve:
+    """Porter-Thomas collision excess over that of the ideal circuits, at most 1: 1 where outcomes are spread."""
+    for experiment in members:
+        points = anticoncentration(source, experiment)
+        if len(points):
+            ratio = [np.minimum(1 / np.maximum(1 + edge, 1e-9), 1.0) for edge in (points.value, points.high, points.low)]
+            return Curve(points.depth, *ratio)
+    return curve([], [], [], [])
+
+
+def _kept_of(source: Source, members: tuple[Experiment, ...], key: str) -> Curve:
+    found = [compared_curve(source, experiment.name, key) for experiment in members if _has(source, experiment, key)]
+    return found[0] if found else curve([], [], [], [])
+
+
+def _has(source: Source, experiment: Experiment, key: str) -> bool:
+    return bool(source.compared(experiment.name, key)["measured"].notna().any())
+
+
+def _join(spread: Curve, kept: Curve) -> pd.DataFrame:
+    def frame(points: Curve, name: str) -> pd.DataFrame:
+        return pd.DataFrame({
+            "depth": points.depth, name: points.value, f"{name}_low": points.low, f"{name}_high": points.high,
+        })  # fmt: skip
+
+    return frame(spread, "spread").merge(frame(kept, "kept"), on="depth", how="inner")
+
+
+def _model_path(source: Source, group: Group, key: str) -> pd.DataFrame:
+    """The noise model's own path, from the averaged predictions."""
+    spread = kept = pd.Series(dtype=float)
+    for experiment in group.experiments:
+        otoc = source.predicted(experiment.name, "otoc", "noise-model")
+        if len(otoc) and spread.empty:
+            spread = 1 - otoc["value"].abs().groupby(otoc["depth"]).mean()
+        fidelity = source.predicted(experiment.name, key, "noise-model")
+        if len(fidelity) and kept.empty:
+            kept = fidelity.groupby("depth")["value"].mean()
+    return pd.DataFrame({"spread": spread, "kept": kept}).dropna().rename_axis("depth").reset_index()
+
+
+def path_figure(source: Source, data: PathData, threshold: float, folder: Path, name: str) -> look.Picture:
+    """Draw a path: joined points labelled by depth, the controls with other markers, the noise model's path beneath."""
+    with look.style():
+        figure = Figure(figsize=(look.WIDE, 4.6), layout="constrained")
+        axes = figure.add_subplot()
+        axes.axhline(threshold, color=look.GREY, linewidth=1.0, linestyle=(0, (1, 2)))
+        axes.axhline(0, color=look.GREY, linewidth=0.6)
+        if len(data.model):
+            axes.plot(data.model["spread"], data.model["kept"], label="noise model", zorder=2, **look.NOISE_MODEL)
+        for family in FAMILIES:
+            part = data.points[data.points["family"] == family].sort_values("depth")
+            if len(part):
+                _trail(axes, part, family)
+        axes.set_xlabel(
+            "spread: 1 − mean |OTOC − scrambled value|" if data.measured
+            else "spread of outcomes, computed: Porter-Thomas over ideal collision excess"
+        )  # fmt: skip
+        axes.set_ylabel(f"{KEPT_KEYS[data.kept_key].split(',')[0]}: {data.kept_key.replace('_', '-')}")
+        axes.set_xlim(min(-0.06, float(data.points["spread"].min()) - 0.06), 1.12)
+        top = max(1.08, float(data.points["kept"].max()) + 0.08)
+        axes.set_ylim(min(-0.05, float(data.points["kept_low"].min()) - 0.02), top)
+        axes.annotate("not spread, kept", (0.005, 0.985), xycoords="axes fraction", va="top", color=look.GREY, style="italic")
+        axes.annotate("spread and kept", (0.995, 0.985), xycoords="axes fraction", va="top", ha="right", color=look.GREY, style="italic")
+        axes.annotate("spread, lost", (0.995, 0.015), xycoords="axes fraction", ha="right", color=look.GREY, style="italic")
+        axes.annotate("not spread, lost", (0.005, 0.015), xycoords="axes fraction", color=look.GREY, style="italic")
+        axes.annotate(f"p = {threshold:g}", (1.115, threshold), va="bottom", ha="right", color=look.GREY, fontsize=8)
+        axes.legend(loc="lower left", bbox_to_anchor=(0, 1.0), ncols=4, borderaxespad=0.2)
+        return look.finish(figure, folder, name, *_words(data))
+
+
+def _trail(axes: Axes, part: pd.DataFrame, family: str) -> None:
+    kind: dict[str, Any] = {"color": look.BLACK, "marker": "o"} if family == "brickwork" else dict(look.CONTROLS[family])
+    errors = [
+        np.abs(np.vstack([part[key] - part[f"{key}_low"], part[f"{key}_high"] - part[key]])) for key in ("spread", "kept")
+    ]
+    label = "measured" if family == "brickwork" else f"control: {family}"
+    axes.errorbar(
+        part["spread"], part["kept"], xerr=errors[0], yerr=errors[1], linestyle="-" if family == "brickwork" else ":",
+        linewidth=1.0, elinewidth=0.8, capsize=2, label=label, zorder=4, markersize=5.5, **kind,
+    )  # fmt: skip
+    for at, row in enumerate(part.itertuples()):
+        # controls hardly move along the path's axis: their labels go to the left, the first and last only
+        if family != "brickwork" and at not in (0, len(part) - 1):
+            continue
+        offset = (6, 4) if family == "brickwork" else (-6, 0)
+        axes.annotate(
+            f"{row.depth:g}", (row.spread, row.kept), xytext=offset, textcoords="offset points", fontsize=8,
+            ha="left" if family == "brickwork" else "right", va="bottom" if family == "brickwork" else "center",
+            color=kind["color"], weight="bold" if family == "brickwork" else "normal",
+        )  # fmt: skip
+
+
+def _words(data: PathData) -> tuple[str, str]:
+    parts = []
+    for row in data.points.sort_values(["family", "depth"], kind="stable").itertuples():
+        parts.append(f"{row.family} at depth {row.depth:g}: spread {row.spread:.2f}, kept {row.kept:.2f}")
+    what = (
+        "Each point is one depth, labelled. Scrambling moves a point to the right, loss moves it down; a device that "
+        "only decoheres falls without moving right once the reference echo divides the loss out. The controls have "
+        "the same one-qubit gates (product) or the same gate count (dimers) and cannot spread."
+    )
+    if not data.measured:
+        what += " No OTOC was measured: spread is computed from the circuits, so the device moves a point down only."
+    if data.kept_key != "self_fidelity":
+        what += " The upright axis is the cross-entropy fidelity, which bounds what is kept from below."
+    return " ".join([what, *data.absent]), "Spread against kept. " + "; ".join(parts) + "."

@@ -1,0 +1,108 @@
+"""How every figure looks and is written: colours, markers, sizes, and the same bytes for the same data.
+
+The colours are those of Okabe and Ito (Color Universal Design, 2008), which colour-blind readers tell apart. No
+colour stands alone: each kind of curve has its own line style and each kind of point its own marker.
+"""
+
+from __future__ import annotations
+
+import io
+import re
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from pathlib import Path
+
+import matplotlib as mpl
+import seaborn as sns
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+from rcbench.files import write_bytes
+
+BLACK, BLUE, ORANGE, GREEN, PURPLE, SKY, GREY = (
+    "#000000", "#0072B2", "#D55E00", "#009E73", "#CC79A7", "#56B4E9", "#6B6B6B",
+)  # fmt: skip
+MEASURED = {"color": BLACK, "marker": "o", "linestyle": "none"}
+IDEAL = {"color": BLUE, "linestyle": "-", "linewidth": 1.4}
+NOISE_MODEL = {"color": ORANGE, "linestyle": (0, (5, 2)), "linewidth": 1.4}
+CONTROLS = {"product": {"color": GREEN, "marker": "s"}, "dimers": {"color": PURPLE, "marker": "^"}}
+# filled: agrees; open: undecided; a cross: departs
+FINDING_MARKERS = {
+    "agrees": {"marker": "o", "markerfacecolor": BLACK, "markeredgecolor": BLACK},
+    "departs": {"marker": "X", "markerfacecolor": ORANGE, "markeredgecolor": BLACK, "markersize": 7.5},
+    "undecided": {"marker": "o", "markerfacecolor": "white", "markeredgecolor": BLACK},
+    "not-tested": {"marker": "|", "markerfacecolor": GREY, "markeredgecolor": GREY},
+}
+DEPTH_MARKERS = ("o", "s", "^", "D", "v", "P", "<", "X", ">", "p")
+WIDE = 7.4  # inches: the text width of an A4 page
+DPI = 120
+_PREAMBLE = re.compile(r"\A.*?(?=<svg )", re.DOTALL)
+_COMMENTS = re.compile(r"<!--.*?-->\s*|<metadata>.*?</metadata>\s*", re.DOTALL)
+_SIZE = re.compile(r'(<svg [^>]*?)\s+width="[^"]*"|\s+height="[0-9.]+pt"')
+
+
+@dataclass(frozen=True, slots=True)
+class Picture:
+    """A figure as the report shows it. name: of its files; svg: inline SVG; caption; alt: in words, for who cannot see."""
+
+    name: str
+    svg: str
+    caption: str
+    alt: str
+
+
+@contextmanager
+def style() -> Iterator[None]:
+    """The settings of every figure, for as long as the context lasts."""
+    settings = {
+        **sns.axes_style("ticks"),
+        "font.family": "DejaVu Sans",
+        "font.size": 8.5,
+        "axes.titlesize": 9,
+        "axes.titleweight": "bold",
+        "axes.titlelocation": "left",
+        "axes.labelsize": 8.5,
+        "axes.linewidth": 0.8,
+        "axes.grid": True,
+        "grid.color": "#E3E3E3",
+        "grid.linewidth": 0.6,
+        "xtick.labelsize": 8,
+        "ytick.labelsize": 8,
+        "legend.fontsize": 7.8,
+        "legend.frameon": False,
+        "lines.markersize": 5,
+        "lines.linewidth": 1.4,
+        "errorbar.capsize": 2.5,
+        "hatch.linewidth": 0.5,
+        "svg.hashsalt": "rcbench",  # element names depend on the data only, so reruns give the same bytes
+        "svg.fonttype": "path",
+        "axes.unicode_minus": True,
+        "figure.facecolor": "white",
+    }
+    with mpl.rc_context(settings):
+        yield
+
+
+def whole_depths(axes: Axes, depths: list[float]) -> None:
+    """Ticks at the depths measured, thinned where they would touch."""
+    ticks = sorted(set(depths))
+    while len(ticks) > 10:
+        ticks = ticks[::2]
+    axes.set_xticks(ticks, [f"{depth:g}" for depth in ticks])
+    if len(set(depths)) > 1:
+        room = 0.05 * (max(depths) - min(depths))
+        axes.set_xlim(min(depths) - room, max(depths) + room)
+
+
+def finish(figure: Figure, folder: Path, name: str, caption: str, alt: str) -> Picture:
+    """Write a figure as SVG and PNG without dates or versions, and give it for the page."""
+    sns.despine(figure)
+    drawn = io.BytesIO()
+    figure.savefig(drawn, format="svg", metadata={"Date": None, "Creator": None})
+    write_bytes(folder / f"{name}.svg", drawn.getvalue())
+    painted = io.BytesIO()
+    figure.savefig(painted, format="png", dpi=DPI, metadata={"Software": None})
+    write_bytes(folder / f"{name}.png", painted.getvalue())
+    text = _COMMENTS.sub("", _PREAMBLE.sub("", drawn.getvalue().decode("utf-8"), count=1))
+    return Picture(name, _SIZE.sub(r"\1", text, count=2), caption, alt)
