@@ -82,6 +82,7 @@ class Experiment:
         circuits: the circuit family.
         depths: layers of logical two-qubit gates, one way, rising.
         instances: random circuits. shots: per circuit. repeats: times each circuit is run.
+        settings: random settings of each circuit, for protocols that have them.
         qubits: device qubits in the order of the experiment's own labels 0, 1, ...
         patch: name of the device patch they came from, or empty.
         nested: the circuit of depth d is the first d layers of the deepest one.
@@ -101,6 +102,7 @@ class Experiment:
     instances: int
     shots: int = 1000
     repeats: int = 1
+    settings: int = 1
     qubits: tuple[int, ...]
     patch: str = ""
     nested: bool = True
@@ -114,9 +116,9 @@ class Experiment:
     def __post_init__(self) -> None:
         if not self.depths or any(b <= a for a, b in zip((-1, *self.depths), self.depths, strict=False)):
             raise InputError("depths", self.depths, "whole numbers from 0 up, each larger than the last")
-        for key, value in (("instances", self.instances), ("shots", self.shots), ("repeats", self.repeats)):
-            if value < 1:
-                raise InputError(key, value, "a whole number, 1 or more")
+        for key in ("instances", "shots", "repeats", "settings"):
+            if getattr(self, key) < 1:
+                raise InputError(key, getattr(self, key), "a whole number, 1 or more")
         if self.against not in REFERENCES:
             raise InputError("against", self.against, suggest(self.against, REFERENCES))
         n = len(self.qubits)
@@ -250,6 +252,7 @@ def _read_experiment(section: Section, device: Device, before: list[Experiment],
         "instances": section.whole("instances", like.get("instances", ...), low=1, high=1_000_000),
         "shots": section.whole("shots", source.shots if source else 1000, low=1),
         "repeats": section.whole("repeats", 1, low=1, high=10_000),
+        "settings": section.whole("settings", 1, low=1, high=1_000_000),
         "nested": section.flag("nested", source.nested if source else True),
         "against": section.choice("against", REFERENCES, "noise-model" if device.errors else "ideal"),
         "control_for": section.text("control_for", ""),
@@ -261,7 +264,7 @@ def _read_experiment(section: Section, device: Device, before: list[Experiment],
     section.close()
     if protocol is not None:
         facts["protocol"], keys = _find_protocol(section, protocol, folder)
-        facts["margins"] = {key: Margin(value=signature(key).margin) for key in keys if not _no_margin(key)} | stated
+        facts["margins"] = {key: _default_margin(key) for key in keys if not _no_margin(key)} | stated
     else:
         facts["signatures"], facts["margins"] = signatures, stated
         for key in signatures:
@@ -278,6 +281,11 @@ def _read_experiment(section: Section, device: Device, before: list[Experiment],
     except InputError as error:
         section.catch(error)
         return None
+
+
+def _default_margin(key: str) -> Margin:
+    row = signature(key)
+    return Margin(value=row.margin, relative=row.margin_relative)
 
 
 def _no_margin(key: str) -> bool:
@@ -436,6 +444,7 @@ def _experiment_table(experiment: Experiment) -> dict[str, Any]:
         "instances": experiment.instances,
         "shots": experiment.shots,
         "repeats": experiment.repeats,
+        "settings": experiment.settings,
         "nested": experiment.nested,
         "against": experiment.against,
     }

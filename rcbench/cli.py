@@ -134,6 +134,21 @@ def demo(out: Path) -> None:
 
 @cli.command()
 @click.argument("campaign", type=_EXISTING)
+@click.option("--csv", "csv_file", type=_NEW, metavar="FILE", help="Write the table to a CSV file too.")
+def plan(campaign: Path, csv_file: Path | None) -> None:
+    """Say what precision a campaign buys, and what it costs in circuits, shots and device time."""
+    from rcbench.files import write_csv
+    from rcbench.plan import PLAN, plan_text
+    from rcbench.plan import plan as make_plan
+
+    table = make_plan(campaign)
+    if csv_file is not None:
+        write_csv(csv_file, table, PLAN)
+    click.echo(plan_text(table))
+
+
+@cli.command()
+@click.argument("campaign", type=_EXISTING)
 @click.option("--out", type=_NEW, required=True, help="Folder for the kit.")
 @click.option("--format", "circuit_format", type=click.Choice(["qasm3", "qasm2", "cirq-json"]), help="Circuit files.")
 @click.option("--missing", type=_EXISTING, metavar="SHOTS", help="Only the circuits that these shots lack.")

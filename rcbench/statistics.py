@@ -34,7 +34,7 @@ class Component(NamedTuple):
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Interval:
-    """A value with its interval. std_error: combined; runs: the part from between runs; kind: how it was made."""
+    """A value with its interval. std_error: combined; kind: how it was made."""
 
     value: float
     std_error: float
@@ -42,7 +42,6 @@ class Interval:
     high: float
     dof: float
     kind: str
-    runs: Component = Component(0.0)
 
 
 def quantile(probability: float, dof: float) -> float:
@@ -110,7 +109,8 @@ def leave_one_out(values: FloatArray) -> FloatArray:
     count = there.sum(axis=0)
     total = filled.sum(axis=0)
     left = count - there
-    return np.where(left > 0, (total - filled) / np.maximum(left, 1), total / np.maximum(count, 1))
+    without: FloatArray = np.where(left > 0, (total - filled) / np.maximum(left, 1), total / np.maximum(count, 1))
+    return without
 
 
 def jackknife(replicates: FloatArray) -> Component:

@@ -16,7 +16,8 @@ from rcbench.circuits.kak import Canonical
 from rcbench.device import NativeGate
 from rcbench.errors import InputError
 
-# two-qubit Cliffords by class: local, CNOT-like, iSWAP-like, SWAP-like (Corcoles et al., Phys. Rev. A 87, 030301 (2013))
+# two-qubit Cliffords by class: local, CNOT-like, iSWAP-like, SWAP-like
+# (Corcoles et al., Phys. Rev. A 87, 030301 (2013))
 CLASSES = (576, 5184, 5184, 576)
 ORDER = sum(CLASSES)
 
@@ -76,19 +77,19 @@ def _clifford_table() -> ComplexArray:
     diagonals.
     """
     h, axes = np.sqrt(0.5), np.eye(3)
-    quaternions = [(1, 0, 0, 0), (0, 1, 0, 0), (0, 0, 1, 0), (0, 0, 0, 1)]
+    quaternions: list[tuple[float, ...]] = [(1, 0, 0, 0), (0, 1, 0, 0), (0, 0, 1, 0), (0, 0, 0, 1)]
     quaternions += [(h, *(sign * h * axis)) for axis in axes for sign in (1, -1)]
     quaternions += [(0, *(h * axes[a] + sign * h * axes[b])) for a, b in ((0, 1), (0, 2), (1, 2)) for sign in (1, -1)]
     quaternions += [(0.5, x / 2, y / 2, z / 2) for x in (1, -1) for y in (1, -1) for z in (1, -1)]
     basis = np.array([np.eye(2), *(-1j * gate_matrix(name) for name in "xyz")])
-    return np.einsum("mk,kij->mij", np.array(quaternions, dtype=np.complex128), basis)
+    return np.asarray(np.einsum("mk,kij->mij", np.array(quaternions), basis))
 
 
 def _sqrt_iswap_steps() -> ComplexArray:
     """(4, 4, 2, 2, 2) by [class, step, qubit]: local gates around sqrt-iSWAP that make the four interactions.
 
-    sqrt-iSWAP is exp(i pi/8 (XX + YY)). X on one qubit turns the sign of YY, which leaves XX; two are iSWAP; and the three
-    turned forms XX + YY, YY + ZZ, ZZ + XX together are SWAP.
+    sqrt-iSWAP is exp(i pi/8 (XX + YY)). Two of them with X on one qubit around the second leave XX, two are iSWAP, and
+    the three forms turned to XX + YY, YY + ZZ and ZZ + XX together are SWAP.
     """
     steps = np.broadcast_to(np.eye(2, dtype=np.complex128), (4, 4, 2, 2, 2)).copy()
     steps[1, 1:3, 0] = gate_matrix("x")

@@ -5,8 +5,8 @@
     azimuth         pi/2 about an axis anywhere on the equator
     clifford        uniform over the 24 one-qubit Cliffords
 
-`quarter-turns` and `clifford` are discrete: raw random words are mapped to numbers of a table, so that the same draw gives
-the same circuit on every machine. All gates hold up to a global phase.
+`quarter-turns` and `clifford` are discrete: raw random words are mapped to numbers of a table, so that the same draw
+gives the same circuit on every machine. All gates hold up to a global phase.
 """
 
 from __future__ import annotations
@@ -58,10 +58,7 @@ def one_qubit_layer(
         choice = draw.integers(len(CLIFFORD1), n_qubits)
         return CLIFFORD1[choice], choice
     if name == "quarter-turns":
-        if previous is None:
-            choice = draw.integers(3, n_qubits)
-        else:
-            choice = (previous + 1 + draw.integers(2, n_qubits)) % 3
+        choice = draw.integers(3, n_qubits) if previous is None else (previous + 1 + draw.integers(2, n_qubits)) % 3
         return QUARTER_TURNS[choice], choice
     raise InputError("one_qubit", name, suggest(name, LAYERS))
 
@@ -72,6 +69,7 @@ def _half_pi_about(phi: FloatArray) -> ComplexArray:
     out[:, 0, 0] = out[:, 1, 1] = np.sqrt(0.5)
     out[:, 0, 1], out[:, 1, 0] = -1j * np.sqrt(0.5) * np.exp(-1j * phi), -1j * np.sqrt(0.5) * np.exp(1j * phi)
     return out
+
 
 QUARTER_TURNS = _half_pi_about(np.array([0, np.pi / 2, np.pi / 4]))
 QUARTER_TURNS.flags.writeable = False

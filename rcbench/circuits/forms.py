@@ -11,16 +11,15 @@ gates reach, and returns (m, count + 1, 2, 2, 2) local gates, the first step fir
 
 from __future__ import annotations
 
-from collections.abc import Callable
-
 import numpy as np
 
 from rcbench.arrays import ComplexArray, FloatArray, IntArray
-from rcbench.circuits.gates import KINDS, CODE, gate_matrix
+from rcbench.circuits.gates import gate_matrices, gate_matrix
 
 CLASS_TOLERANCE = 1e-11  # coordinates closer than this to a class with fewer gates are set to it
 
-_I, _X, _Z, _H, _S, _SDG = (np.eye(2), *(gate_matrix(name) for name in ("x", "z", "h", "s", "sdg")))
+_I: ComplexArray = np.eye(2, dtype=np.complex128)
+_X, _H, _S, _SDG = (gate_matrix(name) for name in ("x", "h", "s", "sdg"))
 _RX = gate_matrix("r", np.pi / 2, 0.0)  # takes Y to Z
 
 
@@ -45,7 +44,7 @@ def iswap_count(coordinates: FloatArray) -> IntArray:
 
 def zz_count(coordinates: FloatArray) -> IntArray:
     """(m,) the number of ZZ rotations."""
-    return np.count_nonzero(coordinates, axis=1)
+    return np.asarray(np.count_nonzero(coordinates, axis=1))
 
 
 def cz_locals(coordinates: FloatArray, count: int) -> ComplexArray:
@@ -55,15 +54,15 @@ def cz_locals(coordinates: FloatArray, count: int) -> ComplexArray:
         return _steps(len(x), [(_SDG @ _H, _SDG @ _H), (_H, _H)])
     if count == 2:
         back = _RX.conj().T
-        return _steps(len(x), [(_RX, _H @ _RX), (r_gates(-2 * x, 0.0), r_gates(-2 * y, 0.0)), (back, back @ _H)])
+        return _steps(len(x), [(_RX, _H @ _RX), (_r(-2 * x, 0.0), _r(-2 * y, 0.0)), (back, back @ _H)])
     if count == 3:
         quarter = np.pi / 2
         return _steps(
             len(x),
             [
                 (_H, _SDG),
-                (rz_gates(quarter - 2 * z) @ _H, _H @ r_gates(2 * x - quarter, quarter)),
-                (_H, r_gates(quarter - 2 * y, quarter) @ _H),
+                (gate_matrices("rz", (quarter - 2 * z)[:, None]) @ _H, _H @ _r(2 * x - quarter, quarter)),
+                (_H, _r(quarter - 2 * y, quarter) @ _H),
                 (_S @ _H, _I),
             ],
         )
@@ -113,17 +112,6 @@ def _steps(m: int, steps: list[tuple[ComplexArray, ComplexArray]]) -> ComplexArr
     return out
 
 
-def rz_gates(angles: FloatArray) -> ComplexArray:
-    """(m, 2, 2) rotations about Z."""
-    return _gates("rz", angles[:, None])
-
-
-def r_gates(angles: FloatArray, axis: float) -> ComplexArray:
-    """(m, 2, 2) rotations about one equatorial axis."""
-    return _gates("r", np.stack([angles, np.full_like(angles, axis)], axis=1))
-
-
-def _gates(name: str, parameters: FloatArray) -> ComplexArray:
-    matrices: Callable[[FloatArray], ComplexArray] | None = KINDS[CODE[name]].matrices
-    assert matrices is not None
-    return matrices(parameters)
+def _r(angles: FloatArray, axis: float) -> ComplexArray:
+    """Rotations about one equatorial axis."""
+    return gate_matrices("r", np.stack([angles, np.full_like(angles, axis)], axis=1))

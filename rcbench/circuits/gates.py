@@ -136,4 +136,13 @@ def gate_matrix(name: str, *parameters: float) -> ComplexArray:
     matrices = KINDS[CODE[name]].matrices
     if matrices is None:
         raise KeyError(f"{name} has no matrix")
-    return matrices(np.array([parameters], dtype=np.float64).reshape(1, -1))[0]
+    return np.asarray(matrices(np.array([parameters], dtype=np.float64).reshape(1, -1))[0])
+
+
+def gate_matrices(name: str, parameters: FloatArray) -> ComplexArray:
+    """(..., d, d) matrices of gates of one kind from their (..., n_parameters) angles, complex128."""
+    matrices = KINDS[CODE[name]].matrices
+    if matrices is None:
+        raise KeyError(f"{name} has no matrix")
+    out = matrices(parameters.reshape(-1, parameters.shape[-1]))
+    return out.reshape(*parameters.shape[:-1], *out.shape[1:])

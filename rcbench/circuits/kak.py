@@ -18,9 +18,9 @@ from rcbench.circuits.gates import gate_matrix
 from rcbench.errors import InputError
 
 UNITARY_TOLERANCE = 1e-8
-# the real and imaginary parts are diagonalised together by one mix of both: where its eigenvalues nearly meet, try another
+# the real and imaginary parts are diagonalised by one mix of both; where its eigenvalues nearly meet, by another
 _MIXES = (0.613, 1.217, 2.171, 2.749, 0.259, 1.847)
-_GOOD = 2e-15
+_GOOD = 2e-14
 _ENOUGH = 1e-10
 
 PAULIS = np.array([gate_matrix(name) for name in "xyz"])
@@ -58,7 +58,7 @@ class Canonical:
 def interaction(coordinates: FloatArray) -> ComplexArray:
     """(m, 4, 4) the gates exp(i (x XX + y YY + z ZZ)) of (m, 3) coordinates."""
     phases = np.exp(1j * (np.asarray(coordinates) @ _SIGNS))
-    return (_MAGIC * phases[..., None, :]) @ _MAGIC.conj().T
+    return np.asarray((_MAGIC * phases[..., None, :]) @ _MAGIC.conj().T)
 
 
 def kron(locals_: ComplexArray) -> ComplexArray:
@@ -71,7 +71,9 @@ def kron(locals_: ComplexArray) -> ComplexArray:
 def split_kron(matrices: ComplexArray) -> ComplexArray:
     """(m, 2, 2, 2) the one-qubit gates of (m, 4, 4) local gates, each of determinant 1."""
     m = len(matrices)
-    blocks = matrices.reshape(m, 2, 2, 2, 2).transpose(0, 1, 3, 2, 4).reshape(m, 4, 2, 2)  # [row and column of the first]
+    blocks = (
+        matrices.reshape(m, 2, 2, 2, 2).transpose(0, 1, 3, 2, 4).reshape(m, 4, 2, 2)
+    )  # [row and column of the first]
     largest = np.argmax(np.einsum("mbij,mbij->mb", blocks, blocks.conj()).real, axis=1)
     second = _special(blocks[np.arange(m), largest])
     first = np.einsum("mbij,mij->mb", blocks, second.conj()).reshape(m, 2, 2)
@@ -123,7 +125,7 @@ def to_chamber(form: Canonical) -> Canonical:
 def _turn_signs(
     before: ComplexArray, xyz: FloatArray, after: ComplexArray, which: IntArray
 ) -> tuple[ComplexArray, FloatArray, ComplexArray]:
-    """which: (m,) 0 nothing, 1 x-conjugation (turns y, z), 2 y-conjugation (turns x, z), 3 z-conjugation (turns x, y)."""
+    """which: (m,) the Pauli: 0 none, 1 X (turns the signs of y and z), 2 Y (of x and z), 3 Z (of x and y)."""
     pauli = np.concatenate([np.eye(2)[None], PAULIS])[which]
     signs = np.array([[1, 1, 1], [1, -1, -1], [-1, 1, -1], [-1, -1, 1]])[which]
     before, after = before.copy(), after.copy()
@@ -160,7 +162,7 @@ def _eigenframe(square: ComplexArray) -> FloatArray:
         error = np.abs(rest * (1 - np.eye(4))).max(axis=(1, 2))
         better = error < worst[left]
         best[left[better]], worst[left[better]] = frame[better], error[better]
-        left = left[worst[left] > _GOOD * 10]
+        left = left[worst[left] > _GOOD]
         if not len(left):
             break
     assert worst.max(initial=0.0) < _ENOUGH, "no mix of the real and imaginary parts separates the eigenvalues"

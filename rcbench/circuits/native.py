@@ -13,18 +13,41 @@ what is the identity adds no row.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
-from rcbench.arrays import ComplexArray, FloatArray
+from rcbench.arrays import BoolArray, ComplexArray, FloatArray, IntArray
 from rcbench.circuits.circuit import CircuitBuilder
-from rcbench.device import NATIVE_ONE_QUBIT, NativeGate
+from rcbench.device import NATIVE_ONE_QUBIT, NATIVE_TWO_QUBIT, NativeGate
 from rcbench.errors import InputError, suggest
 
-# (logical, native) two-qubit gates compiled here; zz at any angle or at pi/2, fsim at (pi/2, 0) only
-SERVED: tuple[tuple[str, str], ...] = (("haar", "cz"), ("haar", "iswap"), ("haar", "sqrt-iswap"), ("haar", "zz"), ("haar", "fsim"))
+# (logical, native) two-qubit gates compiled here; zz at any angle or at +-pi/2, fsim at (+-pi/2, 0) only
+SERVED: tuple[tuple[str, str], ...] = tuple(
+    (logical, gate) for logical in ("haar", "clifford") for gate in NATIVE_TWO_QUBIT
+)
 SNAP = 1e-12
+ANGLE_TOLERANCE = 1e-7  # a stated native angle this close to pi/2 or 0 counts as that angle
+
+
+@dataclass(frozen=True, slots=True)
+class Pulse:
+    """One native layer of many one-qubit gates at once.
+
+    Args:
+        name: gate kind.
+        present: (...) true where the gate has a row in this layer.
+        parameters: (..., k) its angles, None where the kind has none.
+    """
+
+    name: str
+    present: BoolArray
+    parameters: FloatArray | None = None
+
+    def __getitem__(self, rows: Any) -> Pulse:
+        return Pulse(self.name, self.present[rows], None if self.parameters is None else self.parameters[rows])
 
 
 def snap(angles: FloatArray) -> FloatArray:
@@ -53,6 +76,17 @@ def euler_angles(matrices: ComplexArray) -> FloatArray:
     return np.stack([t, snap(p), snap(l)], axis=-1)
 
 
+def pulses(native: str, angles: FloatArray) -> tuple[Pulse, ...]:
+    """The native layers, first to last, of gates given by their (..., 3) angles from `euler_angles`.
+
+    Raises:
+        InputError: an unknown native set.
+    """
+    if native not in _PULSES:
+        raise InputError("one_qubit", native, suggest(native, NATIVE_ONE_QUBIT))
+    return _PULSES[native](angles)
+
+
 def add_one_qubit(builder: CircuitBuilder, native: str, qubits: Sequence[int], matrices: ComplexArray) -> None:
     """Add rows for one unitary a qubit, in native gates, up to a global phase; the layers are aligned.
 
@@ -68,60 +102,62 @@ def add_one_qubit(builder: CircuitBuilder, native: str, qubits: Sequence[int], m
 
 
 def add_euler(builder: CircuitBuilder, native: str, qubits: Sequence[int], angles: FloatArray) -> None:
-    """The same for unitaries given by their (m, 3) angles from `euler_angles`, where many were worked out at once."""
-    if native not in _ADD:
-        raise InputError("one_qubit", native, suggest(native, NATIVE_ONE_QUBIT))
-    _ADD[native](builder, np.asarray(qubits), angles)
+    """The same for gates given by their (m, 3) angles from `euler_angles`, where many were worked out at once."""
+    add_pulses(builder, np.asarray(qubits), pulses(native, angles))
 
 
-def _add_u(builder: CircuitBuilder, qubits: np.ndarray, angles: FloatArray) -> None:
-    _add_where(builder, "u", qubits, angles, angles.any(axis=1))
-
-
-def _add_r_rz(builder: CircuitBuilder, qubits: np.ndarray, angles: FloatArray) -> None:
-    t, p, l = angles.T
-    _add_where(builder, "r", qubits, np.stack([t, snap(np.pi / 2 - l)], axis=1), t != 0)
-    _add_rz(builder, qubits, p + l)
-
-
-def _add_sx_rz(builder: CircuitBuilder, qubits: np.ndarray, angles: FloatArray) -> None:
-    t, p, l = angles.T
-    none, one, half = t == 0, t == np.pi / 2, t == np.pi
-    # a half turn is two quarter turns with nothing between: all its phase goes to the end
-    start = np.where(none | half, 0, np.where(one, l - np.pi / 2, l))
-    end = np.where(none, p + l, np.where(one, p + np.pi / 2, np.where(half, p - l + np.pi, p + np.pi)))
-    _add_rz(builder, qubits, start)
-    _add_where(builder, "sx", qubits, None, ~none)
-    _add_rz(builder, qubits, np.where(none | one | half, 0, t + np.pi))
-    _add_where(builder, "sx", qubits, None, ~(none | one))
-    _add_rz(builder, qubits, end)
-
-
-def _add_rz(builder: CircuitBuilder, qubits: np.ndarray, angles: FloatArray) -> None:
-    angles = snap(angles)
-    _add_where(builder, "rz", qubits, angles[:, None], angles != 0)
-
-
-def _add_where(
-    builder: CircuitBuilder, name: str, qubits: np.ndarray, parameters: FloatArray | None, which: np.ndarray
-) -> None:
-    """One layer of the rows chosen; nothing where none is."""
-    if not which.any():
-        return
-    builder.add_rows(name, qubits[which], None if parameters is None else parameters[which])
-    builder.next_layer()
-
-
-_ADD = {"u": _add_u, "r+rz": _add_r_rz, "sx+rz": _add_sx_rz}
+def add_pulses(builder: CircuitBuilder, qubits: IntArray, layers: Iterable[Pulse]) -> None:
+    """The same for gates given by their `pulses`: (m,) qubits, and pulses of m gates."""
+    for pulse in layers:
+        present = pulse.present
+        if present.any():
+            builder.add_rows(
+                pulse.name, qubits[present], None if pulse.parameters is None else pulse.parameters[present]
+            )
+            builder.next_layer()
 
 
 def served_parameters(gate: NativeGate) -> tuple[float, ...]:
-    """The angles of a native gate where it compiles every two-qubit unitary on every coupler alike.
+    """The angles of a native gate on all couplers, where two-qubit unitaries are to be compiled to it.
 
     Raises:
         InputError: couplers with different angles.
     """
-    for pair, values in gate.by_coupler.items():
-        if not np.allclose(values, gate.parameters or values, rtol=0, atol=1e-7) or not gate.parameters:
-            raise InputError(gate.name, dict(gate.by_coupler), f"the same angles on all couplers, where two-qubit unitaries are compiled to it")
-    return gate.parameters
+    found = [values for values in (gate.parameters, *gate.by_coupler.values()) if values]
+    if any(
+        np.shape(one) != np.shape(found[0]) or not np.allclose(one, found[0], rtol=0, atol=ANGLE_TOLERANCE)
+        for one in found
+    ):
+        raise InputError(
+            gate.name, sorted(set(found)), "the same angles on all couplers, where unitaries are compiled to it"
+        )
+    return found[0] if found else ()
+
+
+def _u_pulses(angles: FloatArray) -> tuple[Pulse, ...]:
+    return (Pulse("u", np.asarray(angles.any(axis=-1)), angles),)
+
+
+def _r_rz_pulses(angles: FloatArray) -> tuple[Pulse, ...]:
+    t, p, l = np.moveaxis(angles, -1, 0)
+    turn = np.stack([t, snap(np.pi / 2 - l)], axis=-1)
+    return Pulse("r", t != 0, turn), _rz_pulse(p + l)
+
+
+def _sx_rz_pulses(angles: FloatArray) -> tuple[Pulse, ...]:
+    t, p, l = np.moveaxis(angles, -1, 0)
+    none, one, half = t == 0, t == np.pi / 2, t == np.pi
+    # a half turn is two quarter turns with nothing between: all its phase goes to the end
+    start = np.where(none | half, 0, np.where(one, l - np.pi / 2, l))
+    between = np.where(none | one | half, 0, t + np.pi)
+    end = np.where(none, p + l, np.where(one, p + np.pi / 2, np.where(half, p - l + np.pi, p + np.pi)))
+    first, second = Pulse("sx", ~none), Pulse("sx", ~(none | one))
+    return _rz_pulse(start), first, _rz_pulse(between), second, _rz_pulse(end)
+
+
+def _rz_pulse(angles: FloatArray) -> Pulse:
+    angles = snap(angles)
+    return Pulse("rz", angles != 0, angles[..., None])
+
+
+_PULSES = {"u": _u_pulses, "r+rz": _r_rz_pulses, "sx+rz": _sx_rz_pulses}

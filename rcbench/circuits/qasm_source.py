@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 from bisect import bisect_right
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 
 from rcbench.errors import InputError
@@ -16,9 +16,10 @@ MAX_DEPTH = 32
 MAX_FILES = 1000
 MAX_CHARACTERS = 100_000_000
 
-# comments first, so that an include inside one is none, and strings, so that // inside one is no comment
+# comments first, so that an include inside one is none; strings too, so that // inside one is no comment
 _MARK = re.compile(
-    r"""//[^\n]*|/\*.*?(?:\*/|(?P<open>\Z))|(?<!\w)include\s*(?P<quote>["'])(?P<name>[^"'\n]*)(?P=quote)\s*;|"[^"\n]*\"""",
+    r"//[^\n]*|/\*.*?(?:\*/|(?P<open>\Z))"
+    r"|(?<!\w)include\s*(?P<quote>[\"'])(?P<name>[^\"'\n]*)(?P=quote)\s*;|\"[^\"\n]*\"",
     re.DOTALL,
 )
 _LINE_MARK = re.compile(r"^[ \t]*(?:#[ \t]*pragma|pragma|@[^\W\d])[^\n]*", re.MULTILINE)
@@ -32,7 +33,17 @@ class Missing:
     where: str
 
 
-@dataclass(slots=True)
+@dataclass(frozen=True, slots=True)
+class Piece:
+    """A stretch of the spliced text that comes from one file. start: place in the splice; begin: place in the file."""
+
+    start: int
+    name: str
+    whole: str
+    begin: int
+
+
+@dataclass(frozen=True, slots=True)
 class Source:
     """A program as one text.
 
@@ -41,42 +52,17 @@ class Source:
     libraries: standard gate files asked for. missing: includes found nowhere. files: include files put in place.
     """
 
-    code: str = ""
-    text: str = ""
-    libraries: set[str] = field(default_factory=set)
-    missing: list[Missing] = field(default_factory=list)
-    files: list[Path] = field(default_factory=list)
-    _starts: list[int] = field(default_factory=list)  # where each piece starts in the code ...
-    _pieces: list[tuple[str, str, int]] = field(default_factory=list)  # ... its file's name, text and place in it
+    code: str
+    text: str
+    libraries: frozenset[str]
+    missing: tuple[Missing, ...]
+    files: tuple[Path, ...]
+    pieces: tuple[Piece, ...]
 
     def place(self, offset: int) -> str:
         """`file:line: ` of a place in the code."""
-        if not self._starts:
-            return ""
-        piece = max(bisect_right(self._starts, offset) - 1, 0)
-        name, text, begin = self._pieces[piece]
-        line = text.count("\n", 0, begin + offset - self._starts[piece]) + 1
-        return f"{name}:{line}: "
-
-    def add(self, text: str, code: str, name: str, whole: str, begin: int) -> None:
-        """Append one piece of a file; kept as parts until `close`."""
-        self._starts.append(self._length)
-        self._pieces.append((name, whole, begin))
-        self._texts.append(text)
-        self._codes.append(code)
-        self._length += len(text)
-        if self._length > MAX_CHARACTERS:
-            raise InputError("include", name, f"a program of at most {MAX_CHARACTERS} characters, includes put in place")
-
-    _texts: list[str] = field(default_factory=list)
-    _codes: list[str] = field(default_factory=list)
-    _length: int = 0
-
-    def close(self) -> None:
-        """Join the pieces."""
-        self.text, self.code = "".join(self._texts), "".join(self._codes)
-        if "pragma" in self.code or "@" in self.code:
-            self.code = _LINE_MARK.sub(_blank, self.code)
+        piece = self.pieces[max(bisect_right(self.pieces, offset, key=lambda one: one.start) - 1, 0)]
+        return _where(piece.name, piece.whole, piece.begin + offset - piece.start)
 
 
 def read_source(text: str, name: str, include_dirs: Sequence[Path] = (), folder: Path | None = None) -> Source:
@@ -89,91 +75,124 @@ def read_source(text: str, name: str, include_dirs: Sequence[Path] = (), folder:
     Raises:
         InputError: an include that includes itself, leads outside the folders, or cannot be read; a comment left open.
     """
-    source = Source()
-    roots = [path.resolve() for path in ([folder] if folder else []) + list(include_dirs)]
-    _splice(source, text.removeprefix("\ufeff"), name, folder.resolve() if folder else None, roots, ())
-    source.close()
-    return source
+    splicer = _Splicer([path.resolve() for path in ([folder] if folder else []) + list(include_dirs)])
+    splicer.file(text.removeprefix("\ufeff"), name, folder.resolve() if folder else None, ())
+    return splicer.source()
 
 
-def _splice(source: Source, text: str, name: str, folder: Path | None, roots: list[Path], chain: tuple[Path, ...]) -> None:
-    done = 0
-    # marks end early in most programs: nothing is searched behind the last of them
-    end = max(text.rfind("//"), text.rfind("*/"), text.rfind("/*"), text.rfind("include"))
-    for match in _MARK.finditer(text) if end >= 0 else ():
-        if match.start() > end:
-            break
-        where = f"{name}:{text.count(chr(10), 0, match.start()) + 1}: "
-        if match.group("open") is not None:
-            raise InputError("comment", "/*", "a comment that ends in */", where)
-        if match.group("name") is None:
-            if not match.group().startswith('"'):
-                source.add(text[done : match.start()], text[done : match.start()], name, text, done)
-                source.add(match.group(), _blank(match), name, text, match.start())
-                done = match.end()
-            continue
-        source.add(text[done : match.start()], text[done : match.start()], name, text, done)
-        _include(source, match, name, text, where, folder, roots, chain)
-        done = match.end()
-    source.add(text[done:], text[done:], name, text, done)
+class _Splicer:
+    """Collects the pieces of a program, file by file."""
 
+    def __init__(self, roots: list[Path]) -> None:
+        self.roots = roots
+        self.libraries: set[str] = set()
+        self.missing: list[Missing] = []
+        self.files: list[Path] = []
+        self.pieces: list[Piece] = []
+        self.texts: list[str] = []
+        self.codes: list[str] = []
+        self.length = 0
 
-def _include(
-    source: Source, match: re.Match[str], name: str, text: str, where: str, folder: Path | None, roots: list[Path], chain: tuple[Path, ...]
-) -> None:
-    wanted = match.group("name")
-    path = _find(wanted, where, folder, roots)
-    statement = match.group()
-    if path is None:
-        if wanted in LIBRARIES:
-            source.libraries.add(wanted)
-        else:
-            source.missing.append(Missing(wanted, where))
-        source.add(statement, _blank(match), name, text, match.start())
-        return
-    if path in chain:
-        raise InputError("include", wanted, "a file that does not include itself, by no way round", where)
-    if len(chain) >= MAX_DEPTH or len(source.files) >= MAX_FILES:
-        raise InputError("include", wanted, f"at most {MAX_FILES} includes, {MAX_DEPTH} inside one another", where)
-    source.files.append(path)
-    try:
-        content = read_text(path, "include")
-    except InputError as error:
-        raise error.at(where) from None
-    inner = str(Path(wanted)) if not chain else path.name
-    _mark(source, f"// {_printable(wanted)}, put in place:\n", name, text, match.start())
-    _splice(source, content, inner, path.parent, roots, (*chain, path))
-    _mark(source, f"\n// end of {_printable(wanted)}\n", name, text, match.start())
+    def source(self) -> Source:
+        code = "".join(self.codes)
+        if "pragma" in code or "@" in code:
+            code = _LINE_MARK.sub(lambda match: _blank(match.group()), code)
+        return Source(
+            code,
+            "".join(self.texts),
+            frozenset(self.libraries),
+            tuple(self.missing),
+            tuple(self.files),
+            tuple(self.pieces),
+        )
 
+    def add(self, text: str, code: str, name: str, whole: str, begin: int) -> None:
+        if not text:
+            return
+        self.pieces.append(Piece(self.length, name, whole, begin))
+        self.texts.append(text)
+        self.codes.append(code)
+        self.length += len(text)
+        if self.length > MAX_CHARACTERS:
+            raise InputError(
+                "include",
+                name,
+                f"a program of at most {MAX_CHARACTERS} characters with its includes",
+                _where(name, whole, begin),
+            )
 
-def _mark(source: Source, comment: str, name: str, text: str, begin: int) -> None:
-    source.add(comment, "".join(" " if sign != "\n" else sign for sign in comment), name, text, begin)
+    def file(self, text: str, name: str, folder: Path | None, chain: tuple[Path, ...]) -> None:
+        """One file; chain: the include files it stands in."""
+        done = 0
+        # most programs hold their comments and includes at the top: nothing is searched behind the last of them
+        last = max(text.rfind("//"), text.rfind("*/"), text.rfind("/*"), text.rfind("include"))
+        end = max(text.find("\n", last), text.find(";", last)) + 1 or len(text)
+        for match in _MARK.finditer(text, 0, end) if last >= 0 else ():
+            start, found = match.start(), match.group()
+            if match.group("open") is not None:
+                raise InputError("comment", "/*", "a comment that ends in */", _where(name, text, start))
+            if found[0] == '"':
+                continue
+            self.add(text[done:start], text[done:start], name, text, done)
+            done = match.end()
+            if match.group("name") is None:
+                self.add(found, _blank(found), name, text, start)
+            else:
+                self.include(match, text, name, folder, chain)
+        self.add(text[done:], text[done:], name, text, done)
 
-
-def _find(wanted: str, where: str, folder: Path | None, roots: list[Path]) -> Path | None:
-    """The include file, inside one of the folders; None where there is none."""
-    outside = False
-    for base in ([folder] if folder and folder not in roots else []) + roots:
+    def include(self, match: re.Match[str], text: str, name: str, folder: Path | None, chain: tuple[Path, ...]) -> None:
+        """What an include statement stands for: a file, or nothing where it is a standard one or missing."""
+        wanted, start = match.group("name"), match.start()
+        where = _where(name, text, start)
+        path = self.find(wanted, where, folder)
+        if path is None:
+            if wanted in LIBRARIES:
+                self.libraries.add(wanted)
+            else:
+                self.missing.append(Missing(wanted, where))
+            self.add(match.group(), _blank(match.group()), name, text, start)
+            return
+        if path in chain:
+            raise InputError("include", wanted, "a file that does not include itself, by no way round", where)
+        if len(chain) >= MAX_DEPTH or len(self.files) >= MAX_FILES:
+            raise InputError("include", wanted, f"at most {MAX_FILES} includes, {MAX_DEPTH} inside one another", where)
+        self.files.append(path)
         try:
-            path = (base / wanted).resolve()
-            found = path.is_file()
-        except (OSError, ValueError, RuntimeError):
-            continue
-        if not found:
-            continue
-        if any(path.is_relative_to(root) for root in roots):
-            return path
-        outside = True
-    if outside:
-        raise InputError("include", wanted, "a file inside the program's own folder or a folder given by --include", where)
-    return None
+            content = read_text(path, "include")
+        except InputError as error:
+            raise error.at(where) from None
+        shown = "".join(sign if sign.isprintable() else "?" for sign in wanted)
+        for mark in (f"// {shown}, put in place:\n", None, f"\n// end of {shown}\n"):
+            if mark is None:
+                self.file(content, wanted, path.parent, (*chain, path))
+            else:
+                self.add(mark, _blank(mark), name, text, start)
+
+    def find(self, wanted: str, where: str, folder: Path | None) -> Path | None:
+        """The include file, inside one of the folders; None where there is none."""
+        outside = False
+        for base in ([folder] if folder and folder not in self.roots else []) + self.roots:
+            try:
+                path = (base / wanted).resolve()
+                found = path.is_file()
+            except (OSError, ValueError, RuntimeError):  # a name no file can have, or links in a circle
+                continue
+            if found and any(path.is_relative_to(root) for root in self.roots):
+                return path
+            outside = outside or found
+        if outside:
+            raise InputError(
+                "include", wanted, "a file inside the program's own folder or one given by --include", where
+            )
+        return None
 
 
-def _blank(match: re.Match[str]) -> str:
-    """Spaces in place of what matched, its line breaks kept."""
-    text = match.group()
+def _where(name: str, text: str, offset: int) -> str:
+    line = text.count("\n", 0, offset) + 1
+    return f"{name}:{line}: "
+
+
+def _blank(text: str) -> str:
+    """Spaces, with the line breaks kept."""
     return " " * len(text) if "\n" not in text else "".join(sign if sign == "\n" else " " for sign in text)
-
-
-def _printable(name: str) -> str:
-    return "".join(sign if sign.isprintable() else "?" for sign in name)

@@ -10,13 +10,14 @@ among the experiment's qubits is in exactly one pattern:
     edges        the colours of a proper edge colouring; as many as the largest degree where the graph is bipartite
     all-to-all   no pattern: a fresh random perfect matching in each layer
 
-Patterns that would be empty are left out. All pairs (a, b), a < b, are in the experiment's labels: positions in `qubits`.
+Patterns that would be empty are left out. All pairs (a, b), a < b, are in the experiment's labels: places in `qubits`.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from functools import lru_cache
+from itertools import pairwise
 
 from rcbench.device import Device, Limits, Pair
 from rcbench.errors import InputError
@@ -37,7 +38,9 @@ def couplers_among(device: Device, qubits: Sequence[int]) -> Layer:
     place: dict[int, int] = {}
     for label, qubit in enumerate(qubits):
         if qubit not in working:
-            raise InputError("qubits", qubit, f"working qubits of {device.name}: {write_regions(device.working_qubits)}")
+            raise InputError(
+                "qubits", qubit, f"working qubits of {device.name}: {write_regions(device.working_qubits)}"
+            )
         if qubit in place:
             raise InputError("qubits", tuple(qubits), f"each qubit once ({qubit} is repeated)")
         place[qubit] = label
@@ -62,7 +65,9 @@ def layers(device: Device, qubits: Sequence[int], depth: int, draw: Draw) -> lis
     couplers = couplers_among(device, qubits)
     if not couplers:
         if len(qubits) > 1:
-            raise InputError("couplers", f"none among qubits {write_regions(qubits)}", f"qubits of {device.name} that are coupled")
+            raise InputError(
+                "couplers", f"none among qubits {write_regions(qubits)}", f"qubits of {device.name} that are coupled"
+            )
         return [()] * depth
     if device.layout == "all-to-all":
         return [_random_matching(len(qubits), couplers, draw) for _ in range(depth)]
@@ -71,10 +76,10 @@ def layers(device: Device, qubits: Sequence[int], depth: int, draw: Draw) -> lis
 
 
 def dimer_layers(device: Device, qubits: Sequence[int], depth: int, draw: Draw) -> list[Layer]:
-    """Layers with as many gates as those of `layers`, but every qubit keeps one fixed partner: equal loss, no spreading.
+    """Layers with as many gates as those of `layers`, but with one fixed partner a qubit: equal loss, no spreading.
 
     The partners are a maximum matching of the couplers, the lexicographically first one. No layer of `layers` has more
-    gates than that matching, so the counts agree layer by layer. Where a layer has fewer, the pairs left out take turns.
+    gates than that matching, so the counts agree layer by layer. Where a layer has fewer, the pairs left out rotate.
     A layer takes as many native slots as its model wherever some turn of the pairs allows it (with couplers that must
     not run together it may not; the nearest number of slots is taken then). Qubits left without a partner stay idle.
 
@@ -85,7 +90,9 @@ def dimer_layers(device: Device, qubits: Sequence[int], depth: int, draw: Draw) 
     out: list[Layer] = []
     start = 0
     for layer in model:
-        turns = [_turn(pairs, start + shift, len(layer)) for shift in range(len(pairs) if device.limits.exclusive else 1)]
+        turns = [
+            _turn(pairs, start + shift, len(layer)) for shift in range(len(pairs) if device.limits.exclusive else 1)
+        ]
         wanted = len(native_slots(layer, device, qubits)) if len(turns) > 1 else 0
         chosen = min(turns, key=lambda turn: abs(len(native_slots(turn, device, qubits)) - wanted)) if turns else ()
         out.append(chosen)
@@ -144,7 +151,9 @@ def _patterns(layout: str, columns: int, couplers: Layer, qubits: tuple[int, ...
         colours = _parities(couplers)
     else:
         colours = edge_colouring(couplers)
-    groups = [tuple(pair for pair in couplers if colours[pair] == colour) for colour in range(max(colours.values()) + 1)]
+    groups = [
+        tuple(pair for pair in couplers if colours[pair] == colour) for colour in range(max(colours.values()) + 1)
+    ]
     return tuple(group for group in groups if group)
 
 
@@ -171,7 +180,7 @@ def _parities(couplers: Layer) -> dict[Pair, int]:
         if any(len(neighbours[qubit]) > 2 for qubit in part):
             raise InputError("couplers", couplers, "couplers of a line or ring join no qubit to more than two others")
         chain = _walk(min((q for q in part if len(neighbours[q]) == 1), default=lowest), neighbours)
-        bonds = [(min(a, b), max(a, b)) for a, b in zip(chain, chain[1:], strict=False)]
+        bonds = [(min(a, b), max(a, b)) for a, b in pairwise(chain)]
         first = bonds.index(min(bonds)) % 2  # the parity of the lowest label comes first
         found = {bond: (index + first) % 2 for index, bond in enumerate(bonds)}
         if chain[0] == chain[-1] and len(bonds) % 2:
@@ -278,4 +287,3 @@ def _random_matching(n_qubits: int, couplers: Layer, draw: Draw) -> Layer:
         f"{n_qubits * (n_qubits - 1) // 2 - len(couplers)} broken of {n_qubits * (n_qubits - 1) // 2}",
         "so few that random perfect matchings avoid them; else give the couplers as layout edges",
     )
-

@@ -13,8 +13,8 @@ from itertools import combinations, product
 import numpy as np
 
 from rcbench.arrays import ComplexArray, FloatArray, IntArray
-from rcbench.circuits.forms import CLASS_TOLERANCE, r_gates, rz_gates
-from rcbench.circuits.gates import gate_matrix
+from rcbench.circuits.forms import CLASS_TOLERANCE
+from rcbench.circuits.gates import gate_matrices, gate_matrix
 from rcbench.circuits.kak import Canonical, canonical, kron, to_chamber
 
 _ONE = np.eye(2, dtype=np.complex128)
@@ -63,8 +63,9 @@ def _room(coordinates: FloatArray) -> FloatArray:
 def _two(coordinates: FloatArray) -> ComplexArray:
     """The outer local gates come from the canonical form of the sequence itself."""
     alpha, beta, gamma = _angles(coordinates)
-    turn = rz_gates(gamma)
-    middle = np.stack([turn @ r_gates(alpha, 0.0) @ turn, r_gates(beta, 0.0)], axis=1)
+    turn = gate_matrices("rz", gamma[:, None])
+    about_x = [gate_matrices("r", np.stack([angle, np.zeros_like(angle)], axis=1)) for angle in (alpha, beta)]
+    middle = np.stack([turn @ about_x[0] @ turn, about_x[1]], axis=1)
     built = canonical(_ROOT @ kron(middle) @ _ROOT)
     inverse = [part.conj().swapaxes(2, 3) for part in (built.before, built.after)]
     return np.stack([inverse[0], middle, inverse[1]], axis=1)

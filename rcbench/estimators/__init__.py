@@ -27,8 +27,8 @@ from rcbench.estimators.sample import Group, Measured
 class Estimator:
     """One family of estimators.
 
-    signatures: the keys it gives. needs_ideal: it reads the ideal probabilities of each run. missing: what a group lacks
-    that all of it needs, in words; empty where it is whole. apply: the values of a group.
+    signatures: the keys it gives. needs_ideal: it reads the ideal probabilities of each run. missing: what a group
+    lacks that all of it needs, in words; empty where it is whole. apply: the values of a group.
     """
 
     name: str

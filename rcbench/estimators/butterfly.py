@@ -1,8 +1,8 @@
 """Butterfly echoes: out-of-time-order correlators by time reversal, normalised by the echo without the butterfly.
 
 A run whose `params` name a `butterfly` site is a butterfly run; one that names none is the reference. Prepared is a
-+1 state of Z at every probe, so that C = <Z> after U, the butterfly W, and the inverse of U. A row of `otoc` is labelled
-`butterfly=5;probe=2;W=X;V=Z`: W the Pauli of the butterfly, V = Z the one measured at the probe.
++1 state of Z at every probe, so that C = <Z> after U, the butterfly W, and the inverse of U. A row of `otoc` is
+labelled `butterfly=5;probe=2;W=X;V=Z`: W the Pauli of the butterfly, V = Z the one measured at the probe.
 """
 
 from __future__ import annotations
@@ -34,12 +34,12 @@ def is_butterfly(run: Run) -> bool:
 def apply(group: Group) -> list[Measured]:
     """`reference_echo` at each probe and `otoc` at each pair of butterfly and probe.
 
-    With B and R the mean Z of a probe with and without the butterfly, otoc = (B / R) / (1 + SE(R)^2 / R^2); the last factor
-    takes out the leading bias of a ratio. SE^2 = (SE(B)^2 + otoc^2 SE(R)^2) / R^2, shot noise only. Where R < 5 SE(R) the
-    value is NaN.
+    With B and R the mean Z of a probe with and without the butterfly, otoc = (B / R) / (1 + SE(R)^2 / R^2); the last
+    factor takes out the leading bias of a ratio. SE^2 = (SE(B)^2 + otoc^2 SE(R)^2) / R^2, shot noise only. Where
+    R < 5 SE(R) the value is NaN.
 
-    Sources: Mi et al., Science 374, 1479 (2021); ratio with imperfect reversal: Swingle and Yunger Halpern, Phys. Rev. A
-    97, 062113 (2018), arXiv:1802.01587; bias of a ratio: Tin, J. Am. Stat. Assoc. 60, 294 (1965) (from memory).
+    Sources: Mi et al., Science 374, 1479 (2021); ratio with imperfect reversal: Swingle and Yunger Halpern, Phys. Rev.
+    A 97, 062113 (2018), arXiv:1802.01587; bias of a ratio: Tin, J. Am. Stat. Assoc. 60, 294 (1965) (from memory).
     """
     references = [run for run in group.runs if not is_butterfly(run)]
     if not references:

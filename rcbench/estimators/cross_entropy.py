@@ -26,11 +26,11 @@ def of_run(run: Run) -> list[Measured]:
     With p the ideal probabilities, D = 2**n and v = D sum p^2 - 1:
 
     - xeb_linear: X = D <p(x)> - 1. Under white noise its mean is F v.
-    - xeb_fidelity: X / v, unbiased under white noise for any p with v > 0; for local noise at shallow depth it exceeds the
-      fidelity. NaN where v vanishes.
+    - xeb_fidelity: X / v, unbiased under white noise for any p with v > 0; for local noise at shallow depth it exceeds
+      the fidelity. NaN where v vanishes.
     - collision_probability: C, over pairs of different shots; unbiased.
-    - self_fidelity: the signed square root of F_self^2 = (D C - 1) / v. F_self^2 is unbiased and may fall below 0; a mean
-      over instances must be taken of the squares (`pool.ROOT_MEAN_SQUARE`), since the root bends it towards 0.
+    - self_fidelity: the signed square root of F_self^2 = (D C - 1) / v. F_self^2 is unbiased and may fall below 0; a
+      mean over instances must be taken of the squares (`pool.ROOT_MEAN_SQUARE`), since the root bends it towards 0.
     - porter_thomas_ks: of an ideal prediction only.
 
     Standard errors are shot noise, not the draw of circuits.
@@ -103,5 +103,6 @@ def square_again(values: FloatArray, errors: FloatArray) -> tuple[FloatArray, Fl
 
 
 def _is_ideal(run: Run) -> bool:
-    sample = run.sample
-    return getattr(sample, "batches", 0) is None and np.array_equal(getattr(sample, "exact", 0), run.ideal)
+    if run.ideal is None or getattr(run.sample, "batches", 0) is not None:
+        return False
+    return np.array_equal(getattr(run.sample, "exact", ()), run.ideal)

@@ -14,8 +14,9 @@ def apply(group: Group) -> list[Measured]:
     """The values of every run of the group that has a target.
 
     - echo_return: L, the share of shots that give the target. A fully mixed state gives 1 / D.
-    - polarization: S = [4^n sum_k (-1/2)^k h_k - 1] / (4^n - 1) with h_k the share at Hamming distance k. Between a random
-      local Clifford layer and its inverse it is the process polarization of any Pauli channel; it may fall below 0.
+    - polarization: S = [4^n sum_k (-1/2)^k h_k - 1] / (4^n - 1) with h_k the share at Hamming distance k. Between a
+      random local Clifford layer and its inverse it is the process polarization of any Pauli channel; it may fall
+      below 0.
 
     Standard errors are shot noise, and never below what one shot more could change.
 
@@ -27,7 +28,7 @@ def apply(group: Group) -> list[Measured]:
             continue
         n, sample = run.sample.n_bits, run.sample
         for key, weights in (("echo_return", return_weights(n)), ("polarization", polarization_weights(n))):
-            value = at_least_one_shot(sample.hamming_average(run.target, weights), sample.shots, np.ptp(weights))
+            value = at_least_one_shot(sample.hamming_average(run.target, weights), sample.shots, float(np.ptp(weights)))
             found.append(_row(key, value, sample.shots, run.circuit_id))
     return found
 

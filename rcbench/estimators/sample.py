@@ -23,7 +23,7 @@ class Value(NamedTuple):
 def at_least_one_shot(value: Value, shots: int, span: float) -> Value:
     """The value with a standard error no smaller than one more shot could move the mean of a function of that span.
 
-    Shots that all agree have no spread of their own, which does not make their mean exact. Predictions stay as they are.
+    Shots that all agree have no spread of their own, which does not make their mean exact. Predictions stay as is.
     """
     if shots == 0:
         return value
@@ -48,7 +48,7 @@ class Sample(Protocol):
         """Mean of +1 for outcome 0 and -1 for outcome 1 of one bit."""
 
     def hamming_average(self, target: IntArray, weights: FloatArray) -> Value:
-        """Mean of weights[k], k the Hamming distance to the target; target: (n_bits,) of 0 and 1, weights: (n_bits + 1,)."""
+        """Mean of weights[k], k the Hamming distance to the target; target: (n_bits,), weights: (n_bits + 1,)."""
 
     def collision(self) -> Value:
         """Probability that two independent outcomes are equal, unbiased: pairs of different shots or trajectories."""
@@ -56,7 +56,7 @@ class Sample(Protocol):
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Run:
-    """One roster row with its sample. target: (n_bits,) of 0 and 1, or None; ideal: (2**n_bits,) probabilities, or None."""
+    """One roster row with its sample. target: (n_bits,) of 0 and 1, or None; ideal: (2**n_bits,), or None."""
 
     circuit_id: str
     role: str
@@ -71,7 +71,7 @@ class Run:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Group:
-    """All runs of one instance of an experiment at one depth (and one repeat): every role and setting that belong together."""
+    """All runs of one instance of an experiment at one depth (and repeat): every role and setting of it."""
 
     experiment: str
     depth: int
@@ -81,7 +81,7 @@ class Group:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Measured:
-    """One estimated or predicted value of one group. region: label as `regions` writes it, empty for the whole system."""
+    """One estimated or predicted value of one group. region: as `regions` writes it, empty for the whole."""
 
     signature: str
     region: str

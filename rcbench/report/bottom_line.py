@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 from rcbench.campaign import Experiment
 from rcbench.report.curves import Curve, Crossing, compared_curve, crossing, mean_over_regions
-from rcbench.report.numbers import fixed, percent
+from rcbench.report.printed import fixed, percent
 from rcbench.report.source import Group, Source, groups
 from rcbench.report.spreading import anticoncentration, reference_alive, scrambled_value, spread_margin
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import textwrap
 from pathlib import Path
 
 import numpy as np
@@ -22,13 +23,14 @@ MOST_POINTS = 500  # in the instance panel; beyond, regions are averaged
 def decay_figure(source: Source, experiment: Experiment, key: str, folder: Path) -> look.Picture | None:
     """The figure of one signature of one experiment; None where nothing was measured against depth."""
     rows = source.compared(experiment.name, key)
-    rows = rows[rows["depth"].notna() & rows["measured"].notna()]
-    if rows.empty:
+    rows = rows[rows["depth"].notna()]
+    if rows["measured"].isna().all():
         return None
     title = signature(key).title
+    # a depth with no data still gets its place, and a mark
     with look.style():
-        figure = Figure(figsize=(look.WIDE, 3.5), layout="constrained")
-        grid = figure.add_gridspec(2, 2, width_ratios=(1.75, 1), height_ratios=(2.1, 1))
+        figure = Figure(figsize=(look.WIDE, 3.3), layout="constrained")
+        grid = figure.add_gridspec(2, 2, width_ratios=(1.6, 1), height_ratios=(2.0, 1))
         top = figure.add_subplot(grid[0, 0])
         below = figure.add_subplot(grid[1, 0], sharex=top)
         side = figure.add_subplot(grid[:, 1])
@@ -36,10 +38,17 @@ def decay_figure(source: Source, experiment: Experiment, key: str, folder: Path)
         _residuals(below, source, experiment, rows)
         _instances(side, source, experiment, key)
         regions = rows["region"].nunique()
-        top.set_ylabel(title if regions == 1 else f"{title}\nmean of {regions} regions")
+        name = textwrap.fill(title, 22)
+        top.set_ylabel(name if regions == 1 else f"{name}\nmean of {regions} regions")
         top.tick_params(labelbottom=False)
         below.set_xlabel("depth (layers of two-qubit gates, one way)")
         figure.align_ylabels([top, below])
+        handles, labels = top.get_legend_handles_labels()
+        order = sorted(range(len(labels)), key=lambda at: labels[at] != "measured")
+        figure.legend(
+            [handles[at] for at in order], [labels[at] for at in order], loc="outside upper left", ncols=6,
+            columnspacing=1.4, handlelength=2.6, borderaxespad=0.1,
+        )  # fmt: skip
         return look.finish(figure, folder, f"{experiment.name}-{key}", *_words(source, experiment, key, rows))
 
 
@@ -58,6 +67,7 @@ def _words(source: Source, experiment: Experiment, key: str, rows: pd.DataFrame)
         f"depth {depth:g}: {row['measured']:.3f}"
         + (f" against {row['noise_model']:.3f}" if np.isfinite(row["noise_model"]) else "")
         for depth, row in by_depth.iterrows()
+        if np.isfinite(row["measured"])
     )
     return caption, f"{title} against depth, measured against noise model. {points}."
 
@@ -70,7 +80,7 @@ def _curves(axes: Axes, source: Source, experiment: Experiment, key: str, rows: 
             pd.DataFrame(
                 {"measured": points.value, "ci_low": points.low, "ci_high": points.high}, index=points.depth
             ).rename_axis("depth"),
-            how="inner",
+            how="left",
         )
         spread = rows.groupby("depth")["measured"].agg(["min", "max"])
         axes.vlines(spread.index, spread["min"], spread["max"], color="#BDBDBD", linewidth=4, zorder=1, label="all regions")
@@ -79,10 +89,7 @@ def _curves(axes: Axes, source: Source, experiment: Experiment, key: str, rows: 
     band = 2 * _rate_uncertainty(source, experiment, key, depth)
     low = mean["noise_model"].to_numpy() - band
     if log:
-        floor = 0.5 * float(mean[["measured", "noise_model", "ideal"]].min(axis=None))
-        low = np.maximum(low, floor)
-        axes.set_yscale("log")
-        axes.set_ylim(bottom=floor)
+        low = np.maximum(low, look.log_axis(axes, mean[["measured", "noise_model", "ideal", "ci_high"]]))
     if mean["ideal"].notna().any():
         axes.plot(depth, mean["ideal"], label="ideal", zorder=2, **look.IDEAL)
     if mean["noise_model"].notna().any():
@@ -101,20 +108,15 @@ def _curves(axes: Axes, source: Source, experiment: Experiment, key: str, rows: 
         **look.MEASURED,
     )  # fmt: skip
     look.whole_depths(axes, depth.tolist())
-    handles, labels = axes.get_legend_handles_labels()
-    order = sorted(range(len(labels)), key=lambda at: labels[at] != "measured")
-    axes.legend(
-        [handles[at] for at in order], [labels[at] for at in order], loc="lower left", bbox_to_anchor=(0, 1.0),
-        ncols=3, borderaxespad=0.2, columnspacing=1.2, handlelength=2.4,
-    )  # fmt: skip
 
 
 def _is_decay(key: str, mean: pd.DataFrame) -> bool:
     """Whether a log axis is right: a positive quantity of the kept or faithful axis that falls by more than a third."""
-    shown = mean[["measured", "noise_model"]].dropna(axis=1, how="all")
-    if signature(key).axis not in ("kept", "faithful") or len(mean) < 3 or not (shown > 0).all(axis=None):
+    shown = mean[["measured", "noise_model"]].to_numpy(dtype=float)
+    shown = shown[np.isfinite(shown)]
+    if signature(key).axis not in ("kept", "faithful") or len(mean) < 3 or not (shown > 0).all():
         return False
-    return float(shown.max(axis=None)) > 1.5 * float(shown.min(axis=None))
+    return float(shown.max()) > 1.5 * float(shown.min())
 
 
 def _rate_uncertainty(source: Source, experiment: Experiment, key: str, depth: np.ndarray) -> np.ndarray:
@@ -132,6 +134,7 @@ def _residuals(axes: Axes, source: Source, experiment: Experiment, rows: pd.Data
         )
     axes.axhline(0, color=look.BLACK, linewidth=0.8, zorder=1)
     several = rows["region"].nunique() > 1
+    rows = rows.assign(difference=rows["difference"].where(rows["finding"] != "not-tested", 0.0))
     # regions at one depth stand side by side, not on top of each other
     place = rows.groupby("depth").cumcount() / np.maximum(rows.groupby("depth")["region"].transform("count") - 1, 1)
     gaps = np.diff(np.unique(rows["depth"]))
@@ -150,7 +153,7 @@ def _residuals(axes: Axes, source: Source, experiment: Experiment, rows: pd.Data
             at[chosen], part["difference"], yerr=None if several else np.nan_to_num(errors), linestyle="none",
             color=look.BLACK, elinewidth=1.0, zorder=3, **(marker | size),
         )  # fmt: skip
-    axes.set_ylabel(f"minus\n{experiment.against.replace('-', ' ')}")
+    axes.set_ylabel(f"measured −\n{experiment.against.replace('-', ' ')}")
     present = [name for name in look.FINDING_MARKERS if (rows["finding"] == name).any()]
     handles = [Line2D([], [], linestyle="none", color=look.BLACK, **look.FINDING_MARKERS[name]) for name in present]
     axes.legend(
@@ -192,8 +195,9 @@ def _instances(axes: Axes, source: Source, experiment: Experiment, key: str) -> 
             label=f"{depth:g}", zorder=3,
         )  # fmt: skip
     axes.set(xlim=span, ylim=span)
-    axes.set_aspect("equal", adjustable="box", anchor="N")
+    axes.set_box_aspect(1)
+    axes.locator_params(nbins=5)
     axes.legend(
-        title="depth", loc="upper center", bbox_to_anchor=(0.5, -0.24), ncols=4, columnspacing=1.0, handletextpad=0.1,
-        title_fontsize=7.8,
+        title="depth", loc="center left", bbox_to_anchor=(1.0, 0.5), handletextpad=0.1, borderaxespad=0.3,
+        title_fontsize=7.8, alignment="left",
     )  # fmt: skip

@@ -20,51 +20,53 @@ MOST_SITES = 4  # rows of maps that still fit a page
 
 def otoc_figure(source: Source, experiment: Experiment, folder: Path) -> look.Picture | None:
     """The maps of one experiment; None where no OTOC row names a butterfly and a probe."""
-    rows = _places(source.compared(experiment.name, "otoc"))
-    if rows.empty:
+    rows = _places(source.compared(experiment.name, "otoc"), ("butterfly", "probe"))
+    if rows.empty or rows["measured"].isna().all():
         return None
     sites = sorted(rows["butterfly"].unique())
-    shown = sites[:MOST_SITES]
+    lines = [(f"butterfly on {site}", rows[rows["butterfly"] == site]) for site in sites[:MOST_SITES]]
+    reference = _places(source.compared(experiment.name, "reference_echo"), ("probe",))
+    if reference["probe"].nunique() > 1:
+        lines.insert(0, ("reference", reference))
     columns = [name for name in ("measured", "noise_model", "ideal") if rows[name].notna().any()]
     with look.style():
-        figure = Figure(figsize=(look.WIDE, 0.7 + 1.75 * len(shown)), layout="constrained")
-        grid = figure.subplots(len(shown), len(columns), squeeze=False, sharex=True, sharey=True)
-        for line, site in zip(grid, shown, strict=True):
-            for axes, column in zip(line, columns, strict=True):
-                _map(axes, rows[rows["butterfly"] == site], column)
-            line[0].set_ylabel(f"butterfly on {site}\ndepth")
+        figure = Figure(figsize=(look.WIDE, 0.7 + 1.6 * len(lines)), layout="constrained")
+        grid = figure.subplots(len(lines), len(columns), squeeze=False, sharex=True, sharey=True)
+        for row_of_axes, (label, part) in zip(grid, lines, strict=True):
+            for axes, column in zip(row_of_axes, columns, strict=True):
+                _map(axes, part, column)
+            row_of_axes[0].set_ylabel(f"{label}\ndepth")
         for axes, column in zip(grid[0], columns, strict=True):
             axes.set_title(column.replace("_", " "))
         for axes in grid[-1]:
             axes.set_xlabel("probe (qubit of the experiment)")
-        bar = figure.colorbar(grid[0, 0].collections[0], ax=grid, shrink=0.75, pad=0.015, label="OTOC")
+        bar = figure.colorbar(grid[0, 0].collections[0], ax=grid, shrink=0.6, pad=0.015, label="echo or OTOC")
         bar.outline.set_visible(False)
-        left_out = f" Butterfly sites {', '.join(str(s) for s in sites[MOST_SITES:])} are in the tables." if sites[MOST_SITES:] else ""
-        caption = (
-            f"OTOC of {experiment.name} by probe and depth: light is 1 (the butterfly has not arrived), dark is 0 or "
-            f"below (it has spread over the probe). Cells marked × depart from the "
-            f"{experiment.against.replace('-', ' ')}; cells marked ? are undecided.{left_out}"
-        )
-        alt = "OTOC maps. " + "; ".join(
-            f"butterfly {site}, depth {depth:g}: mean {part['measured'].mean():.2f}"
-            for (site, depth), part in rows.groupby(["butterfly", "depth"])
-        )
-        return look.finish(figure, folder, f"{experiment.name}-otoc-map", caption, alt + ".")
+        return look.finish(figure, folder, f"{experiment.name}-otoc-map", *_words(experiment, rows, sites[MOST_SITES:]))
 
 
-def _places(rows: pd.DataFrame) -> pd.DataFrame:
-    """Rows whose region names a butterfly and a probe, with both as columns."""
-    settings = [read_setting(region) if "=" in region else {} for region in rows["region"]]
-    named = [{"butterfly", "probe"} <= setting.keys() for setting in settings]
-    chosen = rows[named]
-    kept = [setting for setting, keep in zip(settings, named, strict=True) if keep]
-    return chosen.assign(
-        butterfly=[_order(setting["butterfly"]) for setting in kept], probe=[_order(setting["probe"]) for setting in kept]
+def _words(experiment: Experiment, rows: pd.DataFrame, left_out: list[int]) -> tuple[str, str]:
+    rest = f" Butterfly sites {', '.join(str(site) for site in left_out)} are in the tables." if left_out else ""
+    caption = (
+        f"OTOC of {experiment.name} by probe and depth. Light is 1: the butterfly has not arrived. Dark is 0 or below: "
+        f"it has spread over the probe. The reference, the same echo without a butterfly, must stay light for this to "
+        f"mean anything. Cells marked × depart from the {experiment.against.replace('-', ' ')}; cells marked ? are "
+        f"undecided.{rest}"
     )
+    alt = "OTOC maps. " + "; ".join(
+        f"butterfly {site}, depth {depth:g}: mean {part['measured'].mean():.2f}"
+        for (site, depth), part in rows.groupby(["butterfly", "depth"])
+        if part["measured"].notna().any()
+    )
+    return caption, alt + "."
 
 
-def _order(label: str) -> int:
-    return int(label) if label.isdigit() else -1
+def _places(rows: pd.DataFrame, names: tuple[str, ...]) -> pd.DataFrame:
+    """The rows whose region names all these places, with each as a column of qubits."""
+    settings = [read_setting(region) if "=" in region else {} for region in rows["region"]]
+    whole = [all(setting.get(name, "").isdigit() for name in names) for setting in settings]
+    kept = [setting for setting, keep in zip(settings, whole, strict=True) if keep]
+    return rows[whole].assign(**{name: [int(setting[name]) for setting in kept] for name in names})
 
 
 def _map(axes: Axes, rows: pd.DataFrame, column: str) -> None:
@@ -82,6 +84,6 @@ def _map(axes: Axes, rows: pd.DataFrame, column: str) -> None:
     for (at, probe), finding in np.ndenumerate(found.to_numpy(dtype=object)):
         sign = {"departs": "×", "undecided": "?"}.get(str(finding))
         if sign:
-            dark = float(np.nan_to_num(table.to_numpy()[at, probe])) < 0.55
+            dark = float(np.nan_to_num(table.to_numpy()[at, probe])) < 0.45
             axes.text(probe + 0.5, at + 0.5, sign, ha="center", va="center", fontsize=8, weight="bold",
                       color="white" if dark else "black")  # fmt: skip

@@ -150,13 +150,13 @@ def _trail(axes: Axes, part: pd.DataFrame, family: str) -> None:
         linewidth=1.0, elinewidth=0.8, capsize=2, label=label, zorder=4, markersize=5.5, **kind,
     )  # fmt: skip
     for at, row in enumerate(part.itertuples()):
-        # controls hardly move along the path's axis: their labels go to the left, the first and last only
+        # controls hardly move along the path's axis: their labels go to the right, of the first and last only
         if family != "brickwork" and at not in (0, len(part) - 1):
             continue
-        offset = (6, 4) if family == "brickwork" else (-6, 0)
+        offset = (-5, -4) if family == "brickwork" else (8, 0)
         axes.annotate(
             f"{row.depth:g}", (row.spread, row.kept), xytext=offset, textcoords="offset points", fontsize=8,
-            ha="left" if family == "brickwork" else "right", va="bottom" if family == "brickwork" else "center",
+            ha="right" if family == "brickwork" else "left", va="top" if family == "brickwork" else "center",
             color=kind["color"], weight="bold" if family == "brickwork" else "normal",
         )  # fmt: skip
 

@@ -14,9 +14,12 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import matplotlib as mpl
+import numpy as np
+import pandas as pd
 import seaborn as sns
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
+from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 
 from rcbench.files import write_bytes
 
@@ -32,7 +35,7 @@ FINDING_MARKERS = {
     "agrees": {"marker": "o", "markerfacecolor": BLACK, "markeredgecolor": BLACK},
     "departs": {"marker": "X", "markerfacecolor": ORANGE, "markeredgecolor": BLACK, "markersize": 7.5},
     "undecided": {"marker": "o", "markerfacecolor": "white", "markeredgecolor": BLACK},
-    "not-tested": {"marker": "|", "markerfacecolor": GREY, "markeredgecolor": GREY},
+    "not-tested": {"marker": "1", "markerfacecolor": GREY, "markeredgecolor": GREY, "markersize": 8.0},
 }
 DEPTH_MARKERS = ("o", "s", "^", "D", "v", "P", "<", "X", ">", "p")
 WIDE = 7.4  # inches: the text width of an A4 page
@@ -91,13 +94,29 @@ def whole_depths(axes: Axes, depths: list[float]) -> None:
         ticks = ticks[::2]
     axes.set_xticks(ticks, [f"{depth:g}" for depth in ticks])
     if len(set(depths)) > 1:
-        room = 0.05 * (max(depths) - min(depths))
+        room = 0.07 * (max(depths) - min(depths))
         axes.set_xlim(min(depths) - room, max(depths) + room)
+
+
+def log_axis(axes: Axes, values: pd.DataFrame) -> float:
+    """A logarithmic upright axis round positive values, with plain numbers at its ticks; gives its lower end."""
+    numbers = values.to_numpy(dtype=float)
+    numbers = numbers[np.isfinite(numbers) & (numbers > 0)]
+    low, high = 0.75 * float(numbers.min()), 1.2 * float(numbers.max())
+    axes.set_yscale("log")
+    axes.set_ylim(low, high)
+    steps = (1, 2, 5) if high / low > 8 else (1, 1.5, 2, 3, 4, 5, 6, 8) if high / low > 2 else range(1, 10)
+    axes.yaxis.set_major_locator(LogLocator(subs=steps if high / low < 200 else (1,)))
+    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+    axes.yaxis.set_minor_formatter(NullFormatter())
+    return low
 
 
 def finish(figure: Figure, folder: Path, name: str, caption: str, alt: str) -> Picture:
     """Write a figure as SVG and PNG without dates or versions, and give it for the page."""
     sns.despine(figure)
+    figure.draw_without_rendering()  # lays it out once
+    figure.set_layout_engine("none")  # and not again for each file
     drawn = io.BytesIO()
     figure.savefig(drawn, format="svg", metadata={"Date": None, "Creator": None})
     write_bytes(folder / f"{name}.svg", drawn.getvalue())

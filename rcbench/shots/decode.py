@@ -77,11 +77,16 @@ def pack_words(characters: IntArray) -> IntArray:
     n_bytes = -(-n // 8)
     padded = np.zeros((rows, 8 * n_bytes), dtype=np.uint8)
     padded[:, 8 * n_bytes - n :] = characters
-    eights = padded.view("<u8") & _LOW_BITS
-    n_words = max(1, -(-n_bytes // 8))
-    number = np.zeros((rows, 8 * n_words), dtype=np.uint8)
-    number[:, 8 * n_words - n_bytes :] = (eights * _GATHER) >> np.uint64(56)
-    return number.view(">u8").astype(np.uint64)
+    eights = padded.view("<u8")
+    eights &= _LOW_BITS
+    eights *= _GATHER
+    eights >>= np.uint64(56)
+    words = np.zeros((rows, max(1, -(-n_bytes // 8))), dtype=np.uint64)
+    for place in range(n_bytes):
+        word = words[:, -1 - (n_bytes - 1 - place) // 8]
+        word <<= np.uint64(8)
+        word |= eights[:, place]
+    return words
 
 
 def packed_bytes(words: IntArray, n_bits: int) -> IntArray:
@@ -100,5 +105,7 @@ def check_symbols(key: str, symbols: Sequence[str], where: str = "") -> str:
     """One string of single characters that can stand for a lost or leaked qubit."""
     for symbol in symbols:
         if len(symbol) != 1 or not symbol.isascii() or not symbol.isprintable() or symbol in '01 ,"':
-            raise InputError(key, symbol, "single printable ASCII characters other than 0, 1, space, comma, quote", where)
+            raise InputError(
+                key, symbol, "single printable ASCII characters other than 0, 1, space, comma, quote", where
+            )
     return "".join(dict.fromkeys(symbols))

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+import re
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass, field
 from typing import Any, NamedTuple
 
@@ -12,6 +13,7 @@ from rcbench.arrays import BoolArray, IntArray
 
 MAX_COUNT = 2**53  # the largest sum that is still exact as a float64 of the tables
 MAX_REPEAT = 9999
+_NUMBER = re.compile(r"[-+]?[0-9]{1,20}(\.[0-9]{0,20})?([eE][-+]?[0-9]{1,3})?")
 NO_TIME = np.datetime64("NaT", "us")
 
 
@@ -81,7 +83,8 @@ class Text:
         """(k, width) characters of rows that all have this length; None for all of them, then without a copy."""
         if rows is None:
             return self.data.reshape(len(self), width)
-        return self.data[self.offsets[:-1][rows][:, None] + np.arange(width)]
+        characters: IntArray = self.data[self.offsets[:-1][rows][:, None] + np.arange(width)]
+        return characters
 
     def without(self, character: int) -> Text:
         """The same strings with one character taken out wherever it stands."""
@@ -125,16 +128,68 @@ class Batch:
         return len(self.circuit)
 
 
+def joined(batches: Iterable[Batch], rows: int = 50_000) -> Iterator[Batch]:
+    """The same rows in fewer batches: many small circuits would cost more in calls than in data.
+
+    For batches whose rows have places and one or no count, and no more columns.
+    """
+    held: list[Batch] = []
+    size = 0
+    for batch in batches:
+        held.append(batch)
+        size += len(batch)
+        if size >= rows:
+            yield _join(held)
+            held, size = [], 0
+    if held:
+        yield _join(held)
+
+
+def _join(parts: list[Batch]) -> Batch:
+    if len(parts) == 1:
+        return parts[0]
+    first_row = np.cumsum([0, *(len(part) for part in parts)])
+    first_id = np.cumsum([0, *(len(part.ids) for part in parts)])
+    first_byte = np.cumsum([0, *(len(part.bits.data) for part in parts)])
+
+    def part_of(row: int) -> tuple[Batch, int]:
+        place = int(np.searchsorted(first_row, row, side="right")) - 1
+        return parts[place], row - int(first_row[place])
+
+    def place(row: int) -> Place:
+        part, inner = part_of(row)
+        assert part.place is not None
+        return part.place(inner)
+
+    def content(row: int) -> str:
+        part, inner = part_of(row)
+        return part.content(inner)
+
+    def shown(column: str, row: int) -> object:
+        part, inner = part_of(row)
+        return part.shown(column, inner)
+
+    counted = [part.count for part in parts if part.count is not None]
+    offsets = [part.bits.offsets[1:] + start for part, start in zip(parts, first_byte[:-1], strict=True)]
+    return Batch(
+        ids=[name for part in parts for name in part.ids],
+        circuit=np.concatenate([part.circuit + start for part, start in zip(parts, first_id[:-1], strict=True)]),
+        bits=Text(np.concatenate([part.bits.data for part in parts]), np.concatenate([[0], *offsets])),
+        place=place,
+        content=content,
+        count=np.concatenate(counted) if counted else None,
+        shown=shown,
+    )
+
+
 def whole(value: object, lowest: int, highest: int, otherwise: int) -> int:
     """A whole number within limits, from a number or its text; `otherwise` where it is none."""
     if isinstance(value, str):
         try:
-            value = int(value) if value.isascii() and len(value) < 20 else value
+            # Python would take underscores and other scripts' digits
+            value = (int(value) if value.isdecimal() else float(value)) if _NUMBER.fullmatch(value) else value
         except ValueError:
-            try:
-                value = float(value)
-            except ValueError:
-                return otherwise
+            return otherwise
     if isinstance(value, float) and value.is_integer():
         value = int(value)
     if isinstance(value, bool) or not isinstance(value, int) or not lowest <= value <= highest:

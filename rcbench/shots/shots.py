@@ -10,6 +10,7 @@ import numpy as np
 
 from rcbench.shots.declarations import Execution
 from rcbench.shots.outcomes import Outcomes
+from rcbench.shots.records import BadRow
 
 RunKey = tuple[str, int]  # circuit_id, repeat
 SEVERITIES = ("error", "warning", "note")
@@ -75,7 +76,7 @@ class Shots:
         unknown: shots by circuit_id that is not of the kit; not in `outcomes`.
         times: first and last `time_utc` by (circuit_id, repeat), where the files have that column.
         batches: labels of the `batch` column by (circuit_id, repeat), where the files have it.
-        set_aside: number of bad rows (and of whole bad files) written aside; 0 unless that was asked for.
+        bad_rows: file name and row of everything set aside, whole bad files too; empty unless that was asked for.
     """
 
     outcomes: Mapping[RunKey, Outcomes]
@@ -87,7 +88,7 @@ class Shots:
     unknown: Mapping[str, int] = field(default_factory=dict)
     times: Mapping[RunKey, tuple[np.datetime64, np.datetime64]] = field(default_factory=dict)
     batches: Mapping[RunKey, tuple[str, ...]] = field(default_factory=dict)
-    set_aside: int = 0
+    bad_rows: tuple[tuple[str, BadRow], ...] = ()
 
     @property
     def returned(self) -> frozenset[RunKey]:

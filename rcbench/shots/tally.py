@@ -6,11 +6,12 @@ from collections.abc import Iterator, Sequence
 
 import numpy as np
 
-from rcbench.arrays import IntArray
+from rcbench.arrays import BoolArray, IntArray
 from rcbench.shots.decode import packed_bytes
 from rcbench.shots.outcomes import Outcomes
 
 NARROW = 40  # widest outcome that shares one 64-bit key with the number of its run: 2**24 runs
+WORTH_IT = 0.5  # merging counts costs an argsort, merging single shots only a sort
 ROWS_AT_ONCE = 1 << 21  # bounds the memory of the last pass
 
 
@@ -36,7 +37,7 @@ class Tally:
             keys = np.zeros((len(run), 1 + self._n_words), dtype=np.uint64)
             keys[:, 0] = run
             keys[:, -words.shape[1] :] = words
-        self._chunks.append(_add_up(keys, counts))
+        self._chunks.append(_add_up(keys, counts, least=WORTH_IT))
 
     def extend(self, other: Tally) -> None:
         """Take over the rows of another tally of the same width."""
@@ -86,19 +87,30 @@ class Tally:
             yield number, Outcomes(n, packed[n][start:end], counts[start:end])
 
 
-def _add_up(keys: IntArray, counts: IntArray | None) -> tuple[IntArray, IntArray | None]:
-    """Different keys, rising, and their total counts; None where every count is one."""
-    if keys.shape[1] == 1 and counts is None:
-        keys = np.sort(keys, axis=0)
-    else:
-        order = np.argsort(keys[:, 0]) if keys.shape[1] == 1 else np.lexsort(keys.T[::-1])
-        keys = keys[order]
-        counts = None if counts is None else counts[order]
-    new = np.ones(len(keys), dtype=np.bool_)
-    new[1:] = (keys[1:] != keys[:-1]).any(axis=1) if keys.shape[1] > 1 else keys[1:, 0] != keys[:-1, 0]
+def _add_up(keys: IntArray, counts: IntArray | None, *, least: float = 1.0) -> tuple[IntArray, IntArray | None]:
+    """Keys, rising, and the total count of each; None where every key stands for one shot.
+
+    Single shots are left as they are, equal keys side by side, where adding up would leave more than `least` of them.
+    """
+    keys, counts = _rising(keys, counts)
+    new = _is_new(keys)
+    if counts is None and np.count_nonzero(new) > least * len(keys):
+        return keys, None
     starts = np.flatnonzero(new)
     if counts is not None:
         return keys[starts], np.add.reduceat(counts, starts)
-    if len(starts) == len(keys):
-        return keys, None
     return keys[starts], np.diff(np.append(starts, len(keys)))
+
+
+def _rising(keys: IntArray, counts: IntArray | None) -> tuple[IntArray, IntArray | None]:
+    if keys.shape[1] == 1 and counts is None:
+        return np.sort(keys[:, 0])[:, None], None  # a sort along the first axis would not use vector registers
+    order = np.argsort(keys[:, 0]) if keys.shape[1] == 1 else np.lexsort(keys.T[::-1])
+    return keys[order], None if counts is None else counts[order]
+
+
+def _is_new(keys: IntArray) -> BoolArray:
+    """Where a key differs from the one before it."""
+    new = np.ones(len(keys), dtype=np.bool_)
+    new[1:] = (keys[1:] != keys[:-1]).any(axis=1) if keys.shape[1] > 1 else keys[1:, 0] != keys[:-1, 0]
+    return new

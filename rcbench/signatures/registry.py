@@ -22,7 +22,7 @@ class Signature:
         low, high: range of the exact quantity (estimates may leave it).
         null: value for a fully mixed state of n qubits, as a function of n; None where it depends on more.
         guard: key of the companion that must exclude its own null where a scrambled value equals a mixed one; else empty.
-        margin: default margin, absolute.
+        margin: default margin, absolute unless margin_relative says that it is a share of the prediction.
         higher_is_better: +1 where more is better, -1 where less is, 0 where neither.
         formula, source, blind: what the card says: the formula, where it was published, what it cannot show.
     """
@@ -36,6 +36,7 @@ class Signature:
     null: str = ""
     guard: str = ""
     margin: float = 0.05
+    margin_relative: bool = False
     higher_is_better: int = 0
     estimator: str = ""
     formula: str
@@ -56,7 +57,8 @@ _ROWS = (
         low=-1.0,
         high=float("inf"),
         null="0",
-        margin=0.1,
+        margin=0.15,
+        margin_relative=True,
         higher_is_better=1,
         estimator="cross-entropy",
         formula="X = D <p(x)> - 1, the mean ideal probability p of the outcomes seen, D = 2^n",
@@ -98,7 +100,8 @@ _ROWS = (
         low=0.0,
         high=1.0,
         null="1/D",
-        margin=0.01,
+        margin=0.15,
+        margin_relative=True,
         estimator="cross-entropy",
         formula="C = sum_x c_x (c_x - 1) / (M (M - 1)) from counts c_x of M shots",
         source="Dalzell, Hunter-Jones, Brandao, PRX Quantum 3, 010333 (2022)",

@@ -1,0 +1,142 @@
+"""Circuits to distributions over their measured bits: ideal, and under the stated error model."""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Callable, Iterator, Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from rcbench.arrays import ComplexArray, FloatArray
+from rcbench.circuits.circuit import Circuit
+from rcbench.engine import tree
+from rcbench.engine.distribution import Distribution
+from rcbench.engine.noise import SOURCES, NoiseModel
+from rcbench.engine.readout import flip, measured
+from rcbench.engine.state import evolve, zero_state
+from rcbench.engine.trajectories import NoisyProgram, Patterns, changed_operators, draw_patterns, noisy_program
+from rcbench.errors import InputError
+from rcbench.randomness import Draw
+
+DOUBLE_QUBITS = 20  # up to here probabilities are kept in double precision
+
+
+def probabilities(state: ComplexArray) -> FloatArray:
+    """(2**n,) squared magnitudes; double precision up to DOUBLE_QUBITS qubits."""
+    real = np.float64 if len(state) <= 2**DOUBLE_QUBITS else np.float32
+    return np.square(state.real, dtype=real) + np.square(state.imag, dtype=real)
+
+
+def content_key(circuit: Circuit) -> str:
+    """A text that is the same for circuits with the same rows."""
+    digest = hashlib.sha256(str(circuit.n_qubits).encode())
+    for array in (circuit.layer, circuit.kind, circuit.qubits, circuit.first):
+        digest.update(np.ascontiguousarray(array, dtype="<i8").tobytes())
+    digest.update(np.ascontiguousarray(circuit.parameters, dtype="<f8").tobytes())
+    return digest.hexdigest()
+
+
+def distributions(
+    circuits: Sequence[Circuit],
+    noise: NoiseModel | None,
+    *,
+    trajectories: int = 200,
+    seed: int = 0,
+    dtype: str = "complex64",
+    memory_limit: int | None = None,
+    threads: int | None = None,
+    progress: Callable[[int, int], None] | None = None,
+) -> Iterator[tuple[int, Distribution, Distribution | None]]:
+    """The distribution of every circuit over its measured bits.
+
+    Args:
+        circuits: any mixture; shared beginnings are evolved once.
+        noise: the error model of the circuits' qubits, or None for ideal distributions only.
+        trajectories: error patterns drawn for each circuit, rounded up to whole batches.
+        seed: of the error patterns; they depend on it and on the circuit's rows alone.
+        dtype, memory_limit, threads: as in `tree.walk`.
+        progress: called with (circuits done, circuits in all) after each.
+    Yields:
+        (index of the circuit, ideal, noisy), in no particular order; noisy is None without a noise model. Classical
+        bit 0 is the most significant. Readout flips are in the noisy one only. Its tilts hold "one_qubit",
+        "two_qubit", "idle" and "readout".
+    Raises:
+        InputError: nothing measured, a reset or a gate after the qubit's measurement, a noise model of another size,
+            or too little memory.
+    """
+    for circuit in circuits:
+        if not circuit.measured_qubits:
+            raise InputError("circuit", "no measurement", "at least one measured qubit")
+    for done, (index, state) in enumerate(tree.walk(circuits, dtype=dtype, memory_limit=memory_limit, threads=threads)):
+        circuit = circuits[index]
+        whole = probabilities(state)
+        ideal = Distribution(len(circuit.measured_qubits), measured(whole, circuit.measured_qubits))
+        noisy = None
+        if noise is not None:
+            noisy = noisy_distribution(circuit, whole, noise, trajectories, seed, dtype, threads)
+        yield index, ideal, noisy
+        if progress is not None:
+            progress(done + 1, len(circuits))
+
+
+def batch_count(n_qubits: int) -> int:
+    """Independent batches of trajectories: 16, or 8 where their distributions are large."""
+    return 16 if n_qubits <= 16 else 8
+
+
+def noisy_distribution(
+    circuit: Circuit,
+    error_free: FloatArray,
+    noise: NoiseModel,
+    trajectories: int,
+    seed: int,
+    dtype: str,
+    threads: int | None,
+) -> Distribution:
+    """The distribution under a noise model; error_free: (2**n,) probabilities of the circuit without an error."""
+    noisy = noisy_program(circuit, noise)
+    qubits = circuit.measured_qubits
+    confusion = noise.confusion(qubits)
+    exact, weight = measured(error_free, qubits), noisy.error_free
+    zero = np.broadcast_to(np.zeros((), dtype=exact.dtype), exact.shape)
+    tilts, batches, mixture = dict.fromkeys((*SOURCES, "readout"), zero), None, exact
+    if len(noisy.places):
+        draw = Draw(seed, "trajectories", content_key(circuit))
+        patterns = draw_patterns(noisy, trajectories, batch_count(circuit.n_qubits), draw)
+        sums, scored = run_patterns(noisy, patterns, dtype, threads)
+        batches = measured(sums, qubits) * (patterns.batches / len(patterns))
+        scored = measured(scored, qubits) / len(patterns)
+        mixture = weight * exact + (1 - weight) * batches.mean(axis=0)
+        for place, source in enumerate(SOURCES):
+            scale = noise.uncertainty.get(source, 0.0)
+            if scale and np.any(noisy.places.source == place):
+                free = weight * noisy.error_free_scores[place]
+                # the exact mean score is 0: what sampling leaves of it is taken out
+                left = free + (1 - weight) * float(patterns.scores[:, place].mean())
+                slope = free * exact + (1 - weight) * scored[place] - left * mixture
+                tilts[source] = scale * flip(slope, confusion)
+        batches = flip(batches, confusion)
+    if noise.uncertainty.get("readout_0to1") or noise.uncertainty.get("readout_1to0"):
+        tilts["readout"] = flip(mixture, noise.confusion(qubits, sigmas=1)) - flip(mixture, confusion)
+    return Distribution(len(qubits), flip(exact, confusion), weight if batches is not None else 1.0, batches, tilts)
+
+
+def run_patterns(
+    noisy: NoisyProgram, patterns: Patterns, dtype: str, threads: int | None
+) -> tuple[FloatArray, FloatArray]:
+    """(batches, 2**n) sums of the final probabilities over each batch, and (sources, 2**n) sums weighted with the scores."""
+    changes = changed_operators(noisy, patterns)
+    n, each = noisy.program.n_qubits, len(patterns) // patterns.batches
+    sums = np.zeros((patterns.batches, 2**n))
+    scored = np.zeros((len(SOURCES), 2**n))
+    for trajectory in range(len(patterns)):
+        program = replace(noisy.program, matrices=noisy.program.matrices.copy())
+        part = slice(changes.start[trajectory], changes.start[trajectory + 1])
+        program.matrices[changes.op[part]] = changes.matrices[part]
+        state = zero_state(n, dtype)
+        evolve(state, program)
+        final = probabilities(state)
+        sums[trajectory // each] += final
+        scored += patterns.scores[trajectory][:, None] * final
+    return sums, scored

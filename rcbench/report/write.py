@@ -1,0 +1,187 @@
+"""Write the report of a compared campaign: HTML, Markdown, one page, tables and figures, into the same folder."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from rcbench.campaign import Experiment
+from rcbench.files import write_text
+from rcbench.report.bottom_line import DISCLAIMER, KEPT_ABOVE, LIMITS, RULE, BottomLine, bottom_lines
+from rcbench.report.campaign_table import experiments_table, facts, margins_table, rule_fixed
+from rcbench.report.comparison_table import (
+    comparison_table,
+    counts,
+    departures,
+    disagreements,
+    fits_table,
+)
+from rcbench.report.data_table import audit_facts, audit_lists, deviations, execution_facts, usage_table
+from rcbench.report.device_table import device_facts, device_table
+from rcbench.report.locate import suspects
+from rcbench.report.printed import fixed, whole
+from rcbench.report.page import inline, render
+from rcbench.report.source import Source, groups, read_source
+from rcbench.report.table import SIGNS, Row, Table, finding_text, table
+from rcbench.report.uncertainty_table import uncertainty_table
+from rcbench.signatures.registry import SIGNATURES, Signature
+
+LAYOUTS = {"report.html": "report.html.jinja", "report.md": "report.md.jinja", "summary.html": "summary.html.jinja"}
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Section:
+    """What the report shows of one experiment."""
+
+    experiment: Experiment
+    about: str
+    counts: dict[str, int]
+    pictures: list[Any]
+    fits: Table | None
+
+
+def write_report(folder: Path | str) -> Path:
+    """Write report.html, report.md, summary.html, tables/ and figures/ into the folder that a comparison left.
+
+    Args:
+        folder: holds campaign.toml, roster.csv, comparison.csv, estimates.csv, predictions.csv, audit.json, provenance.json.
+    Returns:
+        The path of report.html. The same folder gives the same bytes again.
+    Raises:
+        InputError: a file or column is missing, a layout is broken, or the folder cannot be written.
+    """
+    return write_source(read_source(Path(folder)), Path(folder))
+
+
+def write_source(source: Source, folder: Path) -> Path:
+    """The same from tables in memory."""
+    context = report_context(source, folder / "figures")
+    for shown in context["tables"].values():
+        shown.write_csv(folder / "tables")
+        write_text(folder / "tables" / f"{shown.key}.tex", render("table.tex.jinja", {"table": shown}))
+    for name, layout in LAYOUTS.items():
+        write_text(folder / name, render(layout, context))
+    return folder / "report.html"
+
+
+def bottom_line_text(folder: Path | str) -> str:
+    """The bottom line of a compared folder in plain text, as the last lines of a command print it."""
+    lines = []
+    for line in bottom_lines(read_source(Path(folder))):
+        lines += [line.sentence, line.window, line.scope]
+    return "\n".join([*lines, DISCLAIMER])
+
+
+def report_context(source: Source, figures: Path) -> dict[str, Any]:
+    """Everything that the layouts of `reports/` may show; draws the figures into a folder."""
+    lines = bottom_lines(source)
+    pictures, path_tables = _paths(source, lines, figures)
+    sections = [_section(source, experiment, figures) for experiment in source.campaign.experiments]
+    tables = [
+        experiments_table(source), margins_table(source), comparison_table(source), departures(source),
+        usage_table(source), uncertainty_table(source), device_table(source), *path_tables,
+        *(section.fits for section in sections if section.fits is not None),
+    ]  # fmt: skip
+    return {
+        "title": source.campaign.title,
+        "device": source.campaign.device,
+        "provenance": source.provenance,
+        "bottom_lines": lines,
+        "disclaimer": DISCLAIMER,
+        "limits": LIMITS,
+        "rule": RULE,
+        "threshold": KEPT_ABOVE,
+        "counts": counts(source.comparison),
+        "signs": SIGNS,
+        "disagreements": disagreements(source),
+        "suspects": _suspects(source),
+        "rule_fixed": rule_fixed(source),
+        "facts": facts(source),
+        "paths": pictures,
+        "sections": sections,
+        "tables": {shown.key: shown for shown in tables},
+        "audit_facts": audit_facts(source),
+        "audit_lists": audit_lists(source),
+        "execution": execution_facts(source),
+        "deviations": deviations(source),
+        "device_facts": device_facts(source),
+        "cards": cards(source),
+        "versions": dict(source.provenance.get("versions") or {}),
+        "files": _files(source),
+        "inline": inline,
+        "whole": whole,
+        "finding_text": finding_text,
+    }
+
+
+def _paths(source: Source, lines: list[BottomLine], folder: Path) -> tuple[list[Any], list[Table]]:
+    from rcbench.report.figure_path import path_data, path_figure
+
+    pictures, tables = [], []
+    for at, group in enumerate(groups(source)):
+        data = path_data(source, group)
+        if data is None:
+            continue
+        name = "path" if at == 0 else f"path-{at + 1}"
+        pictures.append(path_figure(source, data, KEPT_ABOVE, folder, name))
+        rows = [
+            Row(
+                cells=(
+                    row.family,
+                    f"{row.depth:g}",
+                    f"{fixed(row.spread, 3)} [{fixed(row.spread_low, 3)}, {fixed(row.spread_high, 3)}]",
+                    f"{fixed(row.kept, 3)} [{fixed(row.kept_low, 3)}, {fixed(row.kept_high, 3)}]",
+                )
+            )
+            for row in data.points.itertuples()
+        ]
+        what = "kept" if data.kept_key == "self_fidelity" else "faithful"
+        columns = f"circuits, depth>, spread [interval]>, {what} [interval]>"
+        tables.append(table(name, "The path in numbers", columns, rows, data.points))
+    return pictures, tables
+
+
+def _section(source: Source, experiment: Experiment, folder: Path) -> Section:
+    from rcbench.report.figure_decay import decay_figure
+    from rcbench.report.figure_otoc import otoc_figure
+
+    keys = source.signatures(experiment.name)
+    pictures = [decay_figure(source, experiment, key, folder) for key in keys]
+    pictures.append(otoc_figure(source, experiment, folder))
+    rows = source.comparison[source.comparison["experiment"] == experiment.name]
+    circuits = {
+        "brickwork": "layers of the device's schedule",
+        "product": "no entangling gate, the same one-qubit layers: it cannot spread",
+        "dimers": "the same gate count, but each qubit keeps one partner: the same loss, no spreading",
+    }[experiment.circuits.family]
+    role = f" Control for {experiment.control_for}." if experiment.control_for else ""
+    about = f"{experiment.protocol or 'Predicted only'}, {experiment.circuits.family} ({circuits}), {experiment.circuits.gates}.{role}"
+    return Section(
+        experiment=experiment,
+        about=about,
+        counts=counts(rows),
+        pictures=[picture for picture in pictures if picture is not None],
+        fits=fits_table(source, experiment.name),
+    )
+
+
+def _suspects(source: Source) -> list[str]:
+    return [
+        f"{source.qubit_name(found.coupler[0])}–{source.qubit_name(found.coupler[1])} ({found.experiment}): echo lost "
+        f"beyond the noise model {fixed(found.excess, 4)} ± {fixed(found.std_error, 4)} a gate."
+        for found in suspects(source)
+    ]
+
+
+def cards(source: Source) -> list[Signature]:
+    """The registry's rows of every signature that the comparison or the predictions hold, by axis."""
+    used = set(source.comparison["signature"]) | set(source.predictions["signature"])
+    return [row for key, row in SIGNATURES.items() if key in used]
+
+
+def _files(source: Source) -> list[tuple[str, str]]:
+    """Shots files and their hashes, as the provenance holds them."""
+    inputs = source.provenance.get("inputs")
+    shots = inputs.get("shots") if isinstance(inputs, dict) else None
+    return [(str(name), str(digest)) for name, digest in shots.items()] if isinstance(shots, dict) else []
