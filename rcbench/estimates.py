@@ -56,7 +56,9 @@ def estimate(kit: Kit, shots: Shots, ideal: Ideal) -> pd.DataFrame:
         protocol = kit.protocol(experiment)
         families = [estimator(name) for name in protocol.estimators]
         reads_ideal = any(family.needs_ideal for family in families)
-        for repeat, group in _groups(experiment, roster[experiment.name], returned, ideal if reads_ideal else None):
+        aside = {role.name for role in protocol.roles if role.every_batch}  # calibrations belong to no instance
+        rows_of = [row for row in roster[experiment.name] if row.role not in aside]
+        for repeat, group in _groups(experiment, rows_of, returned, ideal if reads_ideal else None):
             lacking = _lacking(families, group)
             if lacking:
                 dropped.append((experiment.name, group.depth, group.instance, repeat, lacking))

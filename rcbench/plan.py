@@ -1,8 +1,9 @@
 """Precision and cost before the run: what each experiment's shots can resolve, and what it takes of the device's time.
 
-One instance of every experiment is drawn and compiled, and its stated errors are counted gate by gate. The expected signal
-and its standard error follow from closed forms, so that a plan takes seconds; they are good to about the uncertainty of
-the stated rates, and at shallow depth the signals are underestimated, since errors that nothing has spread yet cost less.
+One instance of every experiment is drawn and compiled, and its stated errors are counted gate by gate. The expected
+signal and its standard error follow from closed forms, so that a plan takes seconds; they are good to about the
+uncertainty of the stated rates, and at shallow depth the signals are underestimated, since errors that nothing has
+spread yet cost less.
 """
 
 from __future__ import annotations
@@ -74,7 +75,10 @@ def _reference(f: float, ro: float, n: int, shots: int, instances: int) -> tuple
 
 
 def _otoc(f: float, ro: float, n: int, shots: int, instances: int) -> tuple[float, float]:
-    """The scrambled case, all gates in the cone: (1 + C^2) / R^2 a shot with C near 0. Mi et al., Science 374, 1479 (2021)."""
+    """The scrambled case with all gates in the cone: variance (1 + C^2) / R^2 a shot, C near 0.
+
+    Source: Mi et al., Science 374, 1479 (2021).
+    """
     reference = f * ro ** (2 / n)
     return 0.0, 1 / (max(reference, 1e-3) * math.sqrt(shots * instances))
 
@@ -152,10 +156,10 @@ def _plan_experiment(campaign: Campaign, experiment: Experiment) -> list[dict[st
 
 def _seconds(campaign: Campaign, experiment: Experiment, planned: PlannedCircuit) -> float:
     """Device time of all shots of one circuit, and its share of the overhead of a job."""
-    from rcbench.kit import duration_ns
+    from rcbench.kit.roster import duration_ns
 
     timings, limits = campaign.device.timings, campaign.device.limits
-    shot = duration_ns(planned.circuit, campaign.device) + timings.overhead
+    shot = duration_ns(planned.circuit, timings) + timings.overhead
     return (shot * experiment.shots + timings.job / (limits.circuits_per_job or 1)) * 1e-9
 
 

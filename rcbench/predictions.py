@@ -70,12 +70,12 @@ def runs_of_kit(kit: Kit, experiment: str) -> dict[int, list[PlannedRun]]:
     out: dict[int, list[PlannedRun]] = defaultdict(list)
     seen: set[str] = set()
     for row in kit.rows:
-        if row.experiment != experiment or row.circuit_id in seen:
+        if row.experiment != experiment or row.base_id in seen:
             continue
-        seen.add(row.circuit_id)
+        seen.add(row.base_id)
         out[row.instance].append(
             PlannedRun(
-                circuit_id=row.circuit_id,
+                circuit_id=row.base_id,
                 role=row.role,
                 setting=row.setting,
                 depth=row.depth,

@@ -86,6 +86,9 @@ def scatter(values: FloatArray, errors: FloatArray) -> Component:
 def t_interval(values: FloatArray, errors: FloatArray, confidence: float, *more: Component) -> Interval:
     """Mean of per-instance values with Student's interval, or the shot-noise interval of fewer than MIN_INSTANCES.
 
+    Strongly skewed values need more instances: the raw cross-entropy of four-qubit circuits, whose ideal value itself
+    differs from circuit to circuit, covers 91 % at five instances instead of 95 %.
+
     Args:
         values, errors: (K,) as `scatter` takes them.
         confidence: two-sided level.

@@ -46,7 +46,7 @@ def test_equal_values_fall_back_on_shot_noise():
 
 
 def test_effective_degrees_of_freedom_are_those_of_the_gauge_block_example():
-    """JCGM 100:2008 (GUM), H.1.6: four parts of 25, 9.7, 2.9 and 16.6 nm give u = 32 nm with 16.7 degrees of freedom."""
+    """JCGM 100:2008 (GUM), H.1.6: parts of 25, 9.7, 2.9 and 16.6 nm give u = 32 nm with 16.7 degrees of freedom."""
     found = combine(Component(25, 18), Component(9.7, 25.6), Component(2.9, 50), Component(16.6, 2))
     assert_allclose([found.u, found.dof], [32, 16.7], rtol=0.011)
 

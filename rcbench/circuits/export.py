@@ -4,7 +4,8 @@ OpenQASM. One register q and, where something is measured, one register c; one s
 digit, so that reading them back gives the same numbers. Gates outside the format's standard file are defined at the
 top, by standard gates, up to a global phase: r, iswap, sqrt_iswap, fsim, zz and sxdg, and sx in 2.0 only. The gate u is
 U in OpenQASM 3 and u3 in 2.0. Every barrier row is a barrier line, and so is every place where a gate could slip into
-an earlier layer: between barriers, each gate as early as its qubits are free gives back the layers.
+an earlier layer: between barriers, each gate as early as its qubits are free gives back the layers, where virtual gates
+take no time.
 
 Cirq. One moment a layer; Cirq has no barrier, so an empty moment stands for one. u is PhasedXZGate and r
 PhasedXPowGate, in half turns, so that their angles agree to rounding, and the gates up to a global phase. Where all
@@ -24,7 +25,7 @@ import numpy as np
 
 from rcbench.arrays import BoolArray, IntArray
 from rcbench.circuits.circuit import Circuit
-from rcbench.circuits.gates import CODE, KINDS
+from rcbench.circuits.gates import CODE, KINDS, VIRTUAL
 from rcbench.errors import InputError, suggest
 
 if TYPE_CHECKING:
@@ -32,16 +33,17 @@ if TYPE_CHECKING:
 
 SUFFIX = {"qasm3": ".qasm", "qasm2": ".qasm", "cirq-json": ".json"}
 
+# parameters in alphabetical order: qiskit's OpenQASM 3 reader fills them in that order, not in the order written
 _BODIES = {
     "sx": "a { sdg a; h a; sdg a; }",
     "sxdg": "a { s a; h a; s a; }",
-    "r": "(theta, phi) a { U(theta, phi - pi/2, pi/2 - phi) a; }",
+    "r": "(alpha, beta) a { U(alpha, beta - pi/2, pi/2 - beta) a; }",
     "iswap": "a, b { s a; s b; h a; cx a, b; cx b, a; h b; }",
     # a rotation of |01> and |10> is one controlled by b and turned about X, between two cx
     "sqrt_iswap": "a, b { cx a, b; h a; rz(-pi/4) a; cx b, a; rz(pi/4) a; cx b, a; h a; cx a, b; }",
-    "fsim": "(theta, phi) a, b { cx a, b; h a; rz(theta) a; cx b, a; rz(-theta) a; cx b, a; h a; cx a, b; "
-    "rz(-phi/2) a; rz(-phi/2) b; cx a, b; rz(phi/2) b; cx a, b; }",
-    "zz": "(theta) a, b { cx a, b; rz(theta) b; cx a, b; }",
+    "fsim": "(alpha, beta) a, b { cx a, b; h a; rz(alpha) a; cx b, a; rz(-alpha) a; cx b, a; h a; cx a, b; "
+    "rz(-beta/2) a; rz(-beta/2) b; cx a, b; rz(beta/2) b; cx a, b; }",
+    "zz": "(alpha) a, b { cx a, b; rz(alpha) b; cx a, b; }",
 }
 
 
@@ -109,15 +111,22 @@ def angle_text(values: Sequence[float]) -> list[str]:
 
 
 def early_rows(circuit: Circuit) -> BoolArray:
-    """(rows,) true where a row's qubits are all free in the layer before it, so that it could slip into that layer."""
-    _, layer = np.unique(circuit.layer, return_inverse=True)
-    qubits = np.where((circuit.kind == CODE["measure"])[:, None] & np.array([False, True]), -1, circuit.qubits)
+    """(rows,) true where a row could run in the layer before its own: all its qubits are free there.
+
+    Layers that hold virtual gates only take no time and do not count.
+    """
+    barrier = circuit.kind == CODE["barrier"]
+    timed = barrier | ~VIRTUAL[circuit.kind]
+    _, layer = np.unique(circuit.layer[timed], return_inverse=True)
+    kind, qubits = circuit.kind[timed], circuit.qubits[timed].copy()
+    qubits[kind == CODE["measure"], 1] = -1  # a classical bit
     busy = np.zeros((layer.max(initial=-1) + 2, circuit.n_qubits + 1), dtype=bool)
     busy[layer[:, None] + 1, qubits] = True
-    busy[0] = True  # nothing slips before the start, nor over a barrier
-    busy[layer[circuit.kind == CODE["barrier"]] + 1] = True
-    before = busy[layer[:, None], qubits] & (qubits >= 0)
-    return np.asarray(~before.any(axis=1) & (circuit.kind != CODE["barrier"]))
+    busy[0] = True  # nothing runs before the start, nor slips over a barrier
+    busy[layer[kind == CODE["barrier"]] + 1] = True
+    out = np.zeros(len(circuit), dtype=bool)
+    out[timed] = ~(busy[layer[:, None], qubits] & (qubits >= 0)).any(axis=1)
+    return np.asarray(out & ~barrier)
 
 
 def _qasm(circuit: Circuit, header: list[str], u: str, measure: str) -> str:

@@ -7,10 +7,10 @@ afresh. A two-qubit gate T takes the frame P to T P T^-1. For cz and iswap that 
 other native gates it is a product of one-qubit gates for some Paulis only (the next one-qubit layer undoes it), and the
 frame before such a gate is drawn from these:
 
-    sqrt_iswap, fsim     II XX YY ZZ
-    zz                   II IZ ZI ZZ XX XY YX YY
+    sqrt_iswap, fsim                   II XX YY ZZ
+    zz, fsim where theta = pi/2        II IZ ZI ZZ XX XY YX YY
 
-Where there is no one-qubit layer in which a frame could change, a layer of Paulis of its own is put in, in native gates.
+Where there is no one-qubit layer in which a frame could change, a layer of Paulis is put in, in native gates.
 At the end a random Pauli is left, which is known: it flips the bits of the outcome, or is undone in the last layer.
 
 Why it removes coherent cancellation. An error E that follows T acts on the ideal state as c^-1 E c. Averaged over all
@@ -32,12 +32,14 @@ import numpy as np
 from rcbench.arrays import BoolArray, ComplexArray, IntArray
 from rcbench.circuits.circuit import Circuit, CircuitBuilder
 from rcbench.circuits.gates import CODE, KINDS, N_QUBITS, UNITARY, VIRTUAL, gate_matrix
-from rcbench.circuits.native import add_euler, euler_angles
+from rcbench.circuits.joining import add_layer
+from rcbench.circuits.native import add_pulses, euler_angles, pulses
 from rcbench.errors import InputError
 from rcbench.randomness import Draw
 
 LETTERS = "IXYZ"
 PAULIS: ComplexArray = np.stack([np.eye(2, dtype=np.complex128), *(gate_matrix(name) for name in "xyz")])
+_PAULI_ROWS = PAULIS.conj().reshape(4, 4).T
 FLIPS = np.array([0, 1, 1, 0])  # whether each Pauli turns a bit over
 _LOCAL = 1e-9  # second Schmidt coefficient below which an operator counts as a product
 
@@ -80,7 +82,7 @@ def passage(name: str, parameters: tuple[float, ...] = ()) -> Passage:
 
 
 def product_factors(operator: ComplexArray) -> tuple[ComplexArray, ComplexArray] | None:
-    """The unitaries a and b with (4, 4) operator = a x b up to phase; None where there are none. Paulis come out exact."""
+    """Unitaries a and b with (4, 4) operator = a x b up to phase, Paulis exact; None where there are none."""
     split = operator.reshape(2, 2, 2, 2).transpose(0, 2, 1, 3).reshape(4, 4)
     left, size, right = np.linalg.svd(split)
     if size[1] > _LOCAL * size[0]:
@@ -93,7 +95,7 @@ def _clean(matrix: ComplexArray) -> ComplexArray:
     unitary = matrix * np.sqrt(2)
     overlap = np.abs(np.einsum("pij,ij->p", PAULIS.conj(), unitary)) / 2
     best = int(overlap.argmax())
-    return PAULIS[best] if overlap[best] > 1 - _LOCAL else unitary
+    return np.asarray(PAULIS[best] if overlap[best] > 1 - _LOCAL else unitary)
 
 
 def unseen(circuit: Circuit) -> tuple[str, ...]:
@@ -105,7 +107,7 @@ def unseen(circuit: Circuit) -> tuple[str, ...]:
 
 @dataclass(slots=True)
 class _Item:
-    """A part of a circuit. slab: one-qubit gates, gates (n, 2, 2); fixed: virtual ones kept as they stand, rows given."""
+    """A part of a circuit. slab: one-qubit gates, gates (n, 2, 2); fixed: virtual ones, kept as they stand."""
 
     what: Literal["slab", "fixed", "two", "barrier"]
     rows: IntArray
@@ -115,31 +117,39 @@ class _Item:
 
 def _split(circuit: Circuit) -> list[_Item]:
     """The circuit as layers of one-qubit gates between two-qubit layers and barriers."""
-    single = UNITARY[circuit.kind] & (N_QUBITS[circuit.kind] == 1)
-    other = ~UNITARY[circuit.kind] & (circuit.kind != CODE["barrier"])
+    fence = circuit.kind == CODE["barrier"]
+    double = N_QUBITS[circuit.kind] == 2
+    single = UNITARY[circuit.kind] & ~double
+    other = ~UNITARY[circuit.kind] & ~fence
     if other.any():
         name = KINDS[circuit.kind[np.flatnonzero(other)[0]]].name
         raise InputError("pauli_layers", name, "a circuit of gates only, where Pauli layers go inside")
+    if not len(circuit):
+        return []
     matrices = _one_qubit_matrices(circuit, single)
+    starts = np.flatnonzero(np.diff(circuit.layer, prepend=-1))
+    ends = np.append(starts[1:], len(circuit)).tolist()
+    ones = np.add.reduceat(single, starts, dtype=np.int64).tolist()
+    twos = np.add.reduceat(double, starts, dtype=np.int64).tolist()
+    real = np.logical_or.reduceat(single & ~VIRTUAL[circuit.kind], starts).tolist()
+    qubits = circuit.qubits[:, 0]
     items: list[_Item] = []
-    cuts = np.flatnonzero(np.diff(circuit.layer, prepend=-1, append=-1))
-    for start, stop in zip(cuts[:-1], cuts[1:], strict=True):
-        rows = np.arange(start, stop)
-        if circuit.kind[start] == CODE["barrier"]:
-            items.append(_Item("barrier", rows))
-            continue
-        ones, twos = rows[single[rows]], rows[~single[rows]]
-        if len(ones):
+    for start, end, n_ones, n_twos, pulsed in zip(starts.tolist(), ends, ones, twos, real, strict=True):
+        rows = np.arange(start, end)
+        if n_ones:
+            mine = rows[single[start:end]] if n_twos else rows
             if not items or items[-1].what != "slab":
                 eye = np.broadcast_to(np.eye(2, dtype=np.complex128), (circuit.n_qubits, 2, 2)).copy()
-                items.append(_Item("slab", ones[:0], eye))
-            slab, qubits = items[-1], circuit.qubits[ones, 0]
+                items.append(_Item("slab", rows[:0], eye))
+            slab, where = items[-1], qubits[mine]
             assert slab.gates is not None
-            slab.gates[qubits] = matrices[ones] @ slab.gates[qubits]
-            slab.rows = np.concatenate([slab.rows, ones])
-            slab.real |= not VIRTUAL[circuit.kind[ones]].all()
-        if len(twos):
-            items.append(_Item("two", twos))
+            slab.gates[where] = matrices[mine] @ slab.gates[where]
+            slab.rows = np.concatenate([slab.rows, mine])
+            slab.real |= pulsed
+        if n_twos:
+            items.append(_Item("two", rows[double[start:end]] if n_ones else rows))
+        elif not n_ones:
+            items.append(_Item("barrier", rows))
     return _fold(items)
 
 
@@ -154,7 +164,7 @@ def _one_qubit_matrices(circuit: Circuit, single: BoolArray) -> ComplexArray:
 
 
 def _fold(items: list[_Item]) -> list[_Item]:
-    """Virtual gates go into the one-qubit layer next to them, so that they are not made real by a frame of their own."""
+    """Virtual gates go into the one-qubit layer next to them, so that no frame of their own makes them real."""
     kept: list[_Item] = []
     carried: ComplexArray | None = None
     for place, item in enumerate(items):
@@ -250,7 +260,7 @@ def _draw_frame(circuit: Circuit, following: Sequence[_Item], draw: Draw) -> Int
 
 def _gates(circuit: Circuit, rows: IntArray) -> list[tuple[IntArray, Passage]]:
     """The rows of a two-qubit layer by gate."""
-    if len({int(kind) for kind in circuit.kind[rows]}) == 1 and circuit.first[rows[0]] < 0:
+    if circuit.first[rows[0]] < 0 and (circuit.kind[rows] == circuit.kind[rows[0]]).all():
         return [(rows, passage(KINDS[circuit.kind[rows[0]]].name))]
     groups: dict[tuple[str, tuple[float, ...]], list[int]] = {}
     for row in rows.tolist():
@@ -261,40 +271,42 @@ def _gates(circuit: Circuit, rows: IntArray) -> list[tuple[IntArray, Passage]]:
 def _pass(circuit: Circuit, rows: IntArray, carried: ComplexArray, draw: Draw, emitted: list[_Item]) -> ComplexArray:
     """What the qubits carry after a two-qubit layer; a layer of Paulis is put before it where something cannot pass."""
     index = _pauli_index(carried)
+    gates = [(circuit.qubits[members], gate) for members, gate in _gates(circuit, rows)]
     fresh: dict[int, int] = {}
-    for members, gate in _gates(circuit, rows):
-        for a, b in circuit.qubits[members].tolist():
-            if index[a] < 0 or index[b] < 0 or not gate.known[index[a], index[b]]:
-                choice = gate.allowed[int(draw.integers(len(gate.allowed), 1)[0])]
-                fresh[a], fresh[b] = int(choice[0]), int(choice[1])
+    for pairs, gate in gates:
+        one, two = index[pairs[:, 0]], index[pairs[:, 1]]
+        for a, b in pairs[(one < 0) | (two < 0) | ~gate.known[one, two]].tolist():
+            choice = gate.allowed[int(draw.integers(len(gate.allowed), 1)[0])]
+            fresh[a], fresh[b] = int(choice[0]), int(choice[1])
     if fresh:
         qubits, paulis = list(fresh), list(fresh.values())
-        gates = np.broadcast_to(np.eye(2, dtype=np.complex128), carried.shape).copy()
-        gates[qubits] = PAULIS[paulis] @ _dagger(carried[qubits])
-        emitted.append(_Item("slab", rows[:0], gates))
+        layer = np.broadcast_to(np.eye(2, dtype=np.complex128), carried.shape).copy()
+        layer[qubits] = PAULIS[paulis] @ _dagger(carried[qubits])
+        emitted.append(_Item("slab", rows[:0], layer))
         index[qubits] = paulis
     after = carried.copy()
-    for members, gate in _gates(circuit, rows):
-        pairs = circuit.qubits[members]
+    for pairs, gate in gates:
         after[pairs] = gate.after[index[pairs[:, 0]], index[pairs[:, 1]]]
     return after
 
 
 def _pauli_index(matrices: ComplexArray) -> IntArray:
     """(n,) which Pauli each (n, 2, 2) unitary is up to phase, -1 where it is none."""
-    overlap = np.abs(np.einsum("pij,nij->np", PAULIS.conj(), matrices)) / 2
+    overlap = np.abs(matrices.reshape(-1, 4) @ _PAULI_ROWS) / 2
     best = overlap.argmax(axis=1)
-    return np.where(overlap[np.arange(len(best)), best] > 1 - _LOCAL, best, -1)
+    return np.where(overlap.max(axis=1) > 1 - _LOCAL, best, -1)
 
 
 def _write(circuit: Circuit, items: Sequence[_Item], one_qubit: str) -> Circuit:
-    """The items as native rows; the angles of all one-qubit layers are worked out at once."""
-    slabs = [item.gates for item in items if item.what == "slab"]
-    angles = iter(euler_angles(np.stack([gates for gates in slabs if gates is not None])))
+    """The items as native rows; the pulses of all one-qubit layers are worked out at once."""
+    slabs = np.stack([item.gates for item in items if item.what == "slab" and item.gates is not None])
+    layers = pulses(one_qubit, euler_angles(slabs))
     builder, everyone = CircuitBuilder(circuit.n_qubits), np.arange(circuit.n_qubits)
+    slab = 0
     for item in items:
         if item.what == "slab":
-            add_euler(builder, one_qubit, everyone, next(angles))
+            add_pulses(builder, everyone, [layer[slab] for layer in layers])
+            slab += 1
         elif item.what == "barrier":
             builder.barrier()
         else:
@@ -302,16 +314,6 @@ def _write(circuit: Circuit, items: Sequence[_Item], one_qubit: str) -> Circuit:
                 add_layer(builder, circuit, item.rows[circuit.layer[item.rows] == layer])
                 builder.next_layer()
     return builder.build()
-
-
-def add_layer(builder: CircuitBuilder, circuit: Circuit, rows: IntArray, labels: IntArray | None = None) -> None:
-    """Add gates of one layer of another circuit to the current layer; labels: our label of each of its qubits."""
-    for code in np.unique(circuit.kind[rows]):
-        same = rows[circuit.kind[rows] == code]
-        count = KINDS[code].n_parameters
-        parameters = circuit.parameters[circuit.first[same][:, None] + np.arange(count)] if count else None
-        qubits = circuit.qubits[same] if N_QUBITS[code] == 2 else circuit.qubits[same, 0]
-        builder.add_rows(KINDS[code].name, qubits if labels is None else labels[qubits], parameters)
 
 
 def _dagger(matrices: ComplexArray) -> ComplexArray:

@@ -67,6 +67,8 @@ def read_program(text: str, *, name: str, include_dirs: Sequence[Path] = (), fol
     program = outline(source)
     reader = Reader(program)
     reader.read()
+    if not len(reader.qubits):
+        raise InputError("program", "no qubits", "a program that declares qubits", source.place(0))
     bits = sorted(reader.rows.measured.values())
     return Program(
         circuit=reader.rows.circuit(len(reader.qubits), program.where),

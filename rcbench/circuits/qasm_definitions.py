@@ -15,10 +15,11 @@ from rcbench.circuits.qasm_gates import MAX_COST, MAX_NESTING, Call, DefinedGate
 from rcbench.circuits.qasm_library import DERIVED, NAMES, STANDARD
 from rcbench.errors import InputError
 
-NAME = r"[^\W\d]\w*"
-HEADER = re.compile(rf"\s*gate\s+({NAME})\s*(?:\(([^()]*)\))?\s*([^(){{}}@]*?)\s*")
-CALL = re.compile(rf"\s*({NAME})\s*(?:\((.*)\))?\s*([^()@=>]*?)\s*", re.DOTALL)
-_MODIFIER = re.compile(r"\s*(inv|pow|ctrl|negctrl)\s*(?:\((.*)\))?\s*", re.DOTALL)
+# Quantifiers with a + behind them give nothing back, so that no text makes a pattern slow
+NAME = r"[^\W\d]\w*+"
+HEADER = re.compile(rf"\s*+gate\s++({NAME})\s*+(?:\(([^()]*+)\)\s*+)?([^(){{}}@]*+)")
+CALL = re.compile(rf"\s*+({NAME})\s*+(?:\((.*)\)\s*+)?([^()@=>]*+)", re.DOTALL)
+_MODIFIER = re.compile(r"\s*+(inv|pow|ctrl|negctrl)\s*+(?:\((.*)\)\s*+)?", re.DOTALL)
 _NAME = re.compile(NAME)
 _NO_GATES = frozenset(("for", "while", "if", "measure", "reset", "opaque", "gate", "let", "delay", "box", "return"))
 
@@ -186,7 +187,7 @@ class GateSet:
             here = waiting.pop()
             for word in set(_NAME.findall(self._definitions[here].body)):
                 other = self._order.get(word, here)
-                if other < here and other not in found:
+                if other < here and other not in found and self._definitions[other].name not in self._compiled:
                     found.add(other)
                     waiting.append(other)
         return sorted(found)

@@ -217,7 +217,10 @@ def find_plan(gate: Gate) -> Plan:
         return Plan(RECOGNISE)
     for kind, angles in guesses:
         table = np.array([angles(row) for row in probes.tolist()])
-        if matrices is not None and qasm_matrices.same_up_to_phase(matrices, qasm_matrices.kind_matrices(kind, table)).all():
+        if (
+            matrices is not None
+            and qasm_matrices.same_up_to_phase(matrices, qasm_matrices.kind_matrices(kind, table)).all()
+        ):
             same = KINDS[CODE[kind]].n_parameters == gate.n_parameters and np.array_equal(table, probes)
             return Plan(CODE[kind], None if same else angles)
     return Plan(RECOGNISE)

@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from itertools import pairwise
 
 import numpy as np
 
 from rcbench.arrays import IntArray
+from rcbench.circuits.circuit import Circuit
 from rcbench.circuits.gates import CODE, VIRTUAL
 
 PARTIAL = -4  # code of a row that stands for a barrier on some qubits; no row of the circuit comes of it
@@ -39,9 +41,11 @@ def time_keys(n_qubits: int, rows: Sequence[Sequence[int]], partial: Mapping[int
 
     for place, (code, one, two) in enumerate(rows):
         if code == PARTIAL:
-            together = max((free[qubit] for qubit in partial[place]), default=0)
+            together = max(floor, *(free[qubit] for qubit in partial[place]))
             for qubit in partial[place]:
-                free[qubit] = max(together, floor)
+                free[qubit] = together
+                if qubit in waiting:
+                    settle(waiting.pop(qubit), together)
         elif code == _BARRIER:
             for places in waiting.values():
                 settle(places, top)
@@ -72,3 +76,43 @@ def layers_of(keys: IntArray) -> tuple[IntArray, IntArray]:
     order = np.argsort(keys, kind="stable")
     ordered = keys[order]
     return order, np.cumsum(np.diff(ordered, prepend=ordered[:1]) != 0)
+
+
+def waits(circuit: Circuit) -> dict[int, list[int]]:
+    """Barriers on some qubits that keep the layers of a circuit where gates would otherwise start earlier.
+
+    With them between the statements, `time_keys` gives back the layers of the circuit.
+
+    Returns:
+        The qubits of each such barrier, by the row that it stands before.
+    """
+    out: dict[int, list[int]] = {}
+    virtual = VIRTUAL.tolist()
+    free = [0] * circuit.n_qubits
+    pending: set[int] = set()  # qubits with virtual gates since the last layer that takes time
+    slot, latest = 0, -1  # slot of the layer at hand; a qubit that becomes free right there
+    starts = np.flatnonzero(np.diff(circuit.layer, prepend=-1, append=-1))
+    codes, pairs = circuit.kind.tolist(), circuit.qubits.tolist()
+    for begin, end in pairwise(starts.tolist()):
+        if codes[begin] == CODE["measure"]:
+            break
+        if codes[begin] == _BARRIER:
+            slot, latest = slot + 1, -1
+            free = [slot] * circuit.n_qubits
+            pending.clear()
+            continue
+        acting = [[qubit for qubit in pair if qubit >= 0] for pair in pairs[begin:end]]
+        if virtual[codes[begin]]:
+            pending.update(qubit for qubits in acting for qubit in qubits)
+            continue
+        busy = {qubit for qubits in acting for qubit in qubits}
+        held = {qubit for qubits in acting if max(free[one] for one in qubits) < slot for qubit in qubits}
+        held |= pending - busy
+        if held:
+            out[begin] = sorted(held | ({latest} if latest >= 0 else set()))
+        slot += 1
+        for qubit in busy | held:
+            free[qubit] = slot if qubit in busy else slot - 1
+        latest = acting[0][0]
+        pending.clear()
+    return out

@@ -7,8 +7,10 @@ import numpy as np
 from rcbench.arrays import BoolArray, ComplexArray, FloatArray, IntArray
 from rcbench.circuits.gates import CODE, KINDS, N_PARAMETERS, gate_matrix
 from rcbench.circuits.native import euler_angles, snap
+from rcbench.circuits.qasm_expressions import ExpressionError
 
 TOLERANCE = 1e-9  # far above rounding in a gate's body, far below any angle that a control system sets
+MAX_EXPONENT = 1_000_000
 _EXCHANGE = [0, 2, 1, 3]
 
 
@@ -96,11 +98,19 @@ def controlled(matrices: ComplexArray, on: bool) -> ComplexArray:
 
 
 def power(matrices: ComplexArray, exponents: FloatArray) -> ComplexArray:
-    """(m, d, d) powers of unitaries, the principal ones: eigenphases from -pi (excluded) to pi are multiplied."""
+    """(m, d, d) powers of unitaries, the principal ones: eigenphases from -pi (excluded) to pi are multiplied.
+
+    Raises:
+        ExpressionError: an exponent so large that rounding decides.
+    """
     from scipy.linalg import schur
 
-    out = np.empty_like(matrices)
-    for place, (matrix, exponent) in enumerate(zip(matrices, exponents.tolist(), strict=True)):
+    far = np.flatnonzero(np.abs(exponents) > MAX_EXPONENT)
+    if len(far):
+        raise ExpressionError(str(exponents[far[0]]), f"powers from -{MAX_EXPONENT} to {MAX_EXPONENT}", int(far[0]))
+    stacked = np.broadcast_to(matrices, (len(exponents), *matrices.shape[1:]))
+    out = np.empty_like(stacked)
+    for place, (matrix, exponent) in enumerate(zip(stacked, exponents.tolist(), strict=True)):
         if exponent == int(exponent) and abs(exponent) <= 64:
             out[place] = np.linalg.matrix_power(matrix if exponent >= 0 else matrix.conj().T, abs(int(exponent)))
             continue

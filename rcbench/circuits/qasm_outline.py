@@ -11,10 +11,11 @@ from rcbench.circuits.qasm_expressions import ExpressionError, evaluate
 from rcbench.circuits.qasm_source import Source
 from rcbench.errors import InputError
 
-_WORD = re.compile(rf"\s*({NAME})")
-_CONSTANT = re.compile(rf"\s*const\s+(?:float|angle|int|uint)\b\s*(?:\[[^\]]*\])?\s*({NAME})\s*=\s*(.+?)\s*", re.DOTALL)
-_VERSION = re.compile(r"\s*OPENQASM\s+(\d+)(?:\.(\d+))?\s*;")
-_LITERAL = re.compile(r"\s*\d{1,9}\s*")
+MAX_STATEMENTS = 2_000_000
+_WORD = re.compile(rf"\s*+({NAME})")
+_CONSTANT = re.compile(rf"\s*+const\s++(?:float|angle|int|uint)\b\s*+(?:\[[^\]]*+\]\s*+)?({NAME})\s*+=(.+)", re.DOTALL)
+_VERSION = re.compile(r"\s*+OPENQASM\s++(\d++)(?:\.(\d++))?\s*+;")
+_LITERAL = re.compile(r"\s*+\d{1,9}\s*+")
 
 _DECIDES = "a circuit whose gates depend on outcomes has no one ideal state"
 REFUSED = {
@@ -100,6 +101,8 @@ def outline(source: Source) -> Outline:
     bodies: dict[str, int] = {}
     statements = _without_blocks(source, definitions, bodies).split(";")
     out = Outline(source, version, statements, definitions, bodies)
+    if len(statements) > MAX_STATEMENTS:
+        raise InputError("program", f"{len(statements)} statements", f"at most {MAX_STATEMENTS}", source.place(0))
     if statements[-1].strip():
         error = InputError("statement", statements[-1].strip()[:60], "a statement that ends in ;")
         raise error.at(out.where(len(statements) - 1))

@@ -7,20 +7,18 @@ import re
 from collections.abc import Callable, Sequence
 from functools import lru_cache
 
-from rcbench.circuits.gates import KINDS
-from rcbench.circuits.qasm_definitions import NAME, DefinitionError, gate_set, read_call, split_arguments
+from rcbench.circuits.qasm_definitions import CALL, NAME, DefinitionError, gate_set, read_call, split_arguments
 from rcbench.circuits.qasm_expressions import ExpressionError
-from rcbench.circuits.qasm_gates import Angles, Gate
+from rcbench.circuits.qasm_gates import RECOGNISE, Angles, Gate
 from rcbench.circuits.qasm_library import NAMES
 from rcbench.circuits.qasm_outline import REFUSED, Outline, number
-from rcbench.circuits.qasm_registers import MAX_BITS, MAX_QUBITS, Registers, read_sized, split_operands
+from rcbench.circuits.qasm_registers import MAX_BITS, MAX_QUBITS, Registers, read_sized, some, split_operands
 from rcbench.circuits.qasm_rows import Rows
-from rcbench.errors import InputError, suggest
+from rcbench.errors import InputError
 
-_CALL = re.compile(rf"\s*({NAME})\s*(?:\((.*)\))?\s*([^()@=>]*)", re.DOTALL)
-_WORD = re.compile(rf"\s*({NAME})\b(.*)", re.DOTALL)
-_ASSIGNED = re.compile(r"(.*?)=\s*measure\b(.*)", re.DOTALL)
-_BITS = re.compile(rf"\s*(?:\[([^\[\]]*)\])?\s*({NAME})\s*(?:=(.*))?", re.DOTALL)
+_WORD = re.compile(rf"\s*+({NAME})(.*)", re.DOTALL)
+_ASSIGNED = re.compile(r"([^=]*+)=\s*+measure\b(.*)", re.DOTALL)
+_BITS = re.compile(rf"\s*+(?:\[([^\[\]]*+)\]\s*+)?({NAME})\s*+(?:=(.*))?", re.DOTALL)
 _LABEL = re.compile(r"\$\d+")
 
 
@@ -32,7 +30,7 @@ class Reader:
         self.qubits = Registers("qubit", MAX_QUBITS, program.whole)
         self.bits = Registers("bit", MAX_BITS, program.whole)
         self.rows = Rows()
-        self.opaque: dict[str, str] = {}
+        self.opaque: dict[str, int] = {}  # statement that declares each
         self._taken: dict[int, int] = {}  # qubit measured into each bit
         self.gates = gate_set(
             program.version,
@@ -41,7 +39,7 @@ class Reader:
             tuple(program.constants.items()),
         )
         # what the quick path looks up: gates that are one row each, operands on one or two qubits, argument lists
-        self._direct: dict[str, tuple[int, int, Angles | None, bool]] = {}
+        self._direct: dict[str, tuple[int, int, Angles | None, bool, Gate]] = {}
         self._pairs: dict[str, tuple[int, int]] = {}
         self._numbers: dict[str | None, Sequence[float]] = {None: []}
         self._handlers: dict[str, Callable[[str], None]] = {
@@ -85,19 +83,23 @@ class Reader:
 
     def _all(self) -> None:
         """The quick path for usual gate lines; whatever is not usual goes to `_statement`."""
-        match_call, direct, pairs, numbers, rows = _CALL.fullmatch, self._direct, self._pairs, self._numbers, self.rows
+        match_call, direct, pairs, numbers, rows = CALL.fullmatch, self._direct, self._pairs, self._numbers, self.rows
         add_row, add_first, parameters, measured = rows.rows.append, rows.first.append, rows.parameters, rows.measured
         for place, statement in enumerate(self.program.statements):
             match = match_call(statement)
             if match is not None:
                 name, arguments, operands = match.groups()
-                gate, pair = direct.get(name), pairs.get(operands)
-                if gate is not None and pair is not None and not measured:
-                    code, count, angles, wide = gate
+                known, pair = direct.get(name), pairs.get(operands) or self._pair(operands)
+                if known is not None and pair is not None and not measured:
+                    code, count, angles, wide, gate = known
                     values = numbers.get(arguments)
                     if values is None:
                         values = self._values(arguments)
                     if len(values) == count and (pair[1] >= 0) is wide:
+                        if code < 0:
+                            rows.statement = place
+                            rows.recognise(gate, values, pair)
+                            continue
                         if angles is not None:
                             values = angles(values)
                         add_row((code, *pair))
@@ -109,6 +111,15 @@ class Reader:
                         continue
             rows.statement = place
             self._statement(statement)
+
+    def _pair(self, operands: str) -> tuple[int, int] | None:
+        """One or two different qubits that are written out, the second -1 for one; None for all else."""
+        one, comma, two = operands.partition(",")
+        first, second = self.qubits.index.get(one.strip()), self.qubits.index.get(two.strip()) if comma else -1
+        if first is None or second is None or first == second:
+            return None
+        self._pairs[operands] = (first, second)
+        return first, second
 
     def _values(self, arguments: str) -> Sequence[float]:
         """The numbers of an argument list."""
@@ -171,8 +182,8 @@ class Reader:
     def _remember(self, name: str, gate: Gate) -> None:
         """Let later calls of a gate take the quick path, where they are one row each."""
         plan = gate.plan
-        if plan.code >= 0:
-            self._direct[name] = (plan.code, gate.n_parameters, plan.angles, KINDS[plan.code].n_qubits == 2)
+        if plan.code >= 0 or plan.code == RECOGNISE:
+            self._direct[name] = (plan.code, gate.n_parameters, plan.angles, gate.n_qubits == 2, gate)
 
     def _broadcast(self, gate: Gate, operands: str) -> list[tuple[int, ...]]:
         """The qubits of each call that a statement stands for."""
@@ -188,8 +199,6 @@ class Reader:
         for qubits in calls:
             if len(set(qubits)) != len(qubits):
                 raise InputError(f"gate {gate.name}", operands.strip()[:60], "different qubits")
-        if not any(several for _, several in found) and len(found) in (1, 2):
-            self._pairs[operands] = (calls[0][0], calls[0][1] if len(found) == 2 else -1)
         return calls
 
     # ------------------------------------------------------------------ declarations
@@ -257,14 +266,16 @@ class Reader:
         word = _WORD.fullmatch(rest)
         if word is None:
             raise InputError("opaque", rest.strip()[:60], "opaque name(parameters) qubits;")
-        self.opaque.setdefault(word.group(1), self._where().removesuffix(": "))
+        self.opaque.setdefault(word.group(1), self.rows.statement)
 
     # ------------------------------------------------------------------ what is no gate
 
     def _barrier(self, rest: str) -> None:
-        operands = split_operands(rest)
-        qubits = {qubit for one in operands for qubit in self.qubits.resolve(one)[0]}
-        self.rows.barrier(None if not operands or len(qubits) == len(self.qubits) else sorted(qubits))
+        """A row where it names whole registers and with them all qubits; else it holds back gates and is no row."""
+        found = [self.qubits.resolve(one) for one in split_operands(rest)]
+        qubits = {qubit for elements, _ in found for qubit in elements}
+        whole = not found or (len(qubits) == len(self.qubits) and all(several for _, several in found))
+        self.rows.barrier(None if whole else sorted(qubits))
 
     def _reset(self, rest: str) -> None:
         for qubit in self.qubits.resolve(rest)[0]:
@@ -292,10 +303,10 @@ class Reader:
         """Raise the error about a gate that nothing defines, with all others of its sort in the program."""
         names = {name: None}
         for statement in self.program.statements[self.rows.statement :]:
-            match = _CALL.fullmatch(statement.rpartition("@")[2])
+            match = CALL.fullmatch(statement.rpartition("@")[2])
             if match and not (match.group(1) in self.gates or match.group(1) in self._handlers):
                 names.setdefault(match.group(1))
-        self._fail_undefined([one for one in names if one not in REFUSED], self._where())
+        self._fail_undefined([one for one in names if one == name or one not in REFUSED], self._where())
 
     def _fail_undefined(self, names: list[str], where: str) -> None:
         listed = ", ".join(names[:20]) + (", ..." if len(names) > 20 else "")
@@ -305,13 +316,14 @@ class Reader:
             raise InputError("include", ", ".join(one.name for one in missing), allowed, missing[0].where)
         first = names[0]
         if first in self.opaque:
-            allowed = f"gates with a definition: it is opaque, its matrix unknown ({self.opaque[first]})"
+            declared = self.program.where(self.opaque[first]).removesuffix(": ")
+            allowed = f"gates with a definition: it is opaque, its matrix unknown ({declared})"
             raise InputError("gate", first, allowed, where)
         home = [file for file in ("qelib1.inc", "stdgates.inc") if first in NAMES[file]]
         more = f"; nowhere defined: {listed}" if len(names) > 1 else ""
         if home and not set(home) & self.program.source.libraries:
             raise InputError("gate", first, f'gates that are defined: include "{home[0]}" has it{more}', where)
-        allowed = suggest(first, self.gates.names) if len(names) == 1 else ", ".join(self.gates.names)
+        allowed = some(self.gates.names, first)
         raise InputError("gate", first, f"gates that are defined{more}; there are {allowed}", where)
 
     def _fail_in_definition(self, error: DefinitionError) -> None:

@@ -2,21 +2,33 @@
 
 from __future__ import annotations
 
+import difflib
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 
 from rcbench.errors import InputError, suggest
 
 MAX_QUBITS = 10_000
 MAX_BITS = 100_000
-_OPERAND = re.compile(r"\s*([^\W\d]\w*|\$\d+)\s*(?:\[([^\[\]]*)\])?\s*")
-_SIZED = re.compile(r"\s*([^\W\d]\w*)\s*(?:\[([^\[\]]*)\])?\s*")
-_COMMA = re.compile(r",(?![^\[]*\])")  # none inside brackets
+_OPERAND = re.compile(r"\s*+([^\W\d]\w*+|\$\d++)\s*+(?:\[([^\[\]]*+)\]\s*+)?")
+_SIZED = re.compile(r"\s*+([^\W\d]\w*+)\s*+(?:\[([^\[\]]*+)\]\s*+)?")
+_WITH_SETS = re.compile(r"(?:[^,\[]|\[[^\]]*+\]?)++")  # up to a comma outside brackets
 
 
 def split_operands(text: str) -> list[str]:
     """The operands of a statement."""
-    return _COMMA.split(text) if text.strip() else []
+    if not text.strip():
+        return []
+    return _WITH_SETS.findall(text) if "{" in text else text.split(",")
+
+
+def some(names: Iterable[str], like: str) -> str:
+    """Names for a message: those like the one that was found come first, and not all where there are many."""
+    known = list(names)
+    if len(known) <= 50:
+        return suggest(like, known)
+    close = difflib.get_close_matches(like, known[:5000], n=3)
+    return ", ".join([*close, *known[: 50 - len(close)], "..."])
 
 
 class Registers:
@@ -31,6 +43,7 @@ class Registers:
     def __init__(self, word: str, limit: int, whole: Callable[[str], int]) -> None:
         self.word, self._limit, self._whole = word, limit, whole
         self.names: list[str] = []  # of each element, as `q[0]`
+        self.index: dict[str, int] = {}  # each element by that name
         self._registers: dict[str, tuple[list[int], bool]] = {}  # its elements; true where it may be indexed
 
     def __contains__(self, name: str) -> bool:
@@ -51,7 +64,9 @@ class Registers:
         if len(self.names) + count > self._limit:
             raise InputError(name, count, f"at most {self._limit} {self.word}s in one program")
         start = len(self.names)
-        self.names += [name] if size is None else [f"{name}[{index}]" for index in range(count)]
+        added = [name] if size is None else [f"{name}[{index}]" for index in range(count)]
+        self.names += added
+        self.index.update(zip(added, range(start, start + count), strict=True))
         self.alias(name, list(range(start, start + count)), size is not None)
 
     def alias(self, name: str, elements: list[int], indexed: bool = True) -> None:
@@ -76,10 +91,11 @@ class Registers:
         """
         match = _OPERAND.fullmatch(text)
         if match is None:
-            raise InputError("operand", text.strip()[:60], f"a {self.word} as q[0], or a register")
+            missing = " (a ; seems to be missing)" if "\n" in text.strip() else ""
+            raise InputError("operand", text.strip()[:60], f"a {self.word} as q[0], or a register{missing}")
         name, index = match.groups()
         if name not in self._registers:
-            allowed = suggest(name, self._registers) if self._registers else f"a {self.word} register declared before"
+            allowed = some(self._registers, name) if self._registers else f"a {self.word} register declared before"
             raise InputError(f"{self.word} register", name, allowed)
         elements, indexed = self._registers[name]
         if index is None:

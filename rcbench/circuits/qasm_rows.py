@@ -78,12 +78,7 @@ class Rows:
         if plan.code >= 0:
             self.add(plan.code, qubits, plan.angles(values) if plan.angles else values)
         elif plan.code == RECOGNISE:
-            group = self._groups.setdefault(gate.name, _Group(gate))
-            place = group.known.setdefault(tuple(values), len(group.known))
-            if place == len(group.statements):
-                group.statements.append(self.statement)
-            group.rows.append((len(self.rows), place))
-            self.add(RECOGNISE, qubits)
+            self.recognise(gate, values, qubits)
         elif plan.code == EXPAND:
             known = dict(zip(plan.names, values, strict=True))
             for call in plan.body:
@@ -92,6 +87,17 @@ class Rows:
                     [expression.value(known) for expression in call.parameters],
                     [qubits[place] for place in call.places],
                 )
+
+    def recognise(self, gate: Gate, values: Sequence[float], qubits: Sequence[int]) -> None:
+        """One row whose kind and angles are worked out at the end, with those of all calls of the same gate."""
+        group = self._groups.get(gate.name)
+        if group is None:
+            group = self._groups[gate.name] = _Group(gate)
+        place = group.known.setdefault(tuple(values), len(group.known))
+        if place == len(group.statements):
+            group.statements.append(self.statement)
+        group.rows.append((len(self.rows), place))
+        self.add(RECOGNISE, qubits)
 
     def barrier(self, qubits: Sequence[int] | None) -> None:
         """A barrier on some qubits, or on all."""

@@ -107,7 +107,7 @@ class _Splicer:
         )
 
     def add(self, text: str, code: str, name: str, whole: str, begin: int) -> None:
-        if not text:
+        if not text and self.pieces:
             return
         self.pieces.append(Piece(self.length, name, whole, begin))
         self.texts.append(text)

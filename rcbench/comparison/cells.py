@@ -116,10 +116,7 @@ def _read_predictions(frame: pd.DataFrame) -> dict[tuple[str, Key], dict[str, Pr
     out: dict[tuple[str, Key], dict[str, Predicted]] = defaultdict(dict)
     for (experiment, key, model), by_instance in entries.items():
         rows = {i: np.mean(found, axis=0) for i, found in by_instance.items()}
-        errors = {
-            i: float(np.sqrt(np.sum(np.square([e for _, e, _ in found])))) / len(found)
-            for i, found in by_instance.items()
-        }
+        errors = {i: math.hypot(*(error for _, error, _ in found)) / len(found) for i, found in by_instance.items()}
         # rates are common to all instances, so the mean keeps their uncertainty; without its row, an upper bound
         u_model = whole.get((experiment, key, model), float(np.mean([row[2] for row in rows.values()])))
         values = {i: float(row[0]) for i, row in rows.items()}
@@ -152,8 +149,8 @@ def _average(entries: list[_Entry]) -> tuple[float, float]:
     kept = [(value, error) for value, error, _ in entries if not math.isnan(value)]
     if not kept:
         return math.nan, math.nan
-    pairs = np.array(kept)
-    return float(pairs[:, 0].mean()), float(np.sqrt((pairs[:, 1] ** 2).sum())) / len(pairs)
+    count = len(kept)
+    return math.fsum(value for value, _ in kept) / count, math.hypot(*(error for _, error in kept)) / count
 
 
 def stack(cells: Sequence[Cell]) -> tuple[list[int], Table]:

@@ -83,6 +83,8 @@ class ExperimentRows:
 
     def _notes(self, cell: Cell) -> list[str]:
         notes = [self.warning] if self.warning else []
+        if cell.used and cell.key.signature == "otoc" and self.terms.against == "ideal":
+            notes.append("once scrambled, a normalised OTOC is larger than the ideal one")
         if cell.used and cell.refused:
             notes.append(f"{len(cell.refused)} returned instances gave no value")
         gone = len(self.returned[cell.key.depth]) - len(cell.used) - len(cell.refused)

@@ -1,4 +1,4 @@
-"""The one decorator for compiled loops: no interpreter lock, results kept on disk wherever a folder can be written."""
+"""The decorators for compiled loops: no interpreter lock, results kept on disk wherever a folder can be written."""
 
 from __future__ import annotations
 
@@ -11,6 +11,8 @@ from typing import Any, TypeVar, cast
 import numba
 
 F = TypeVar("F", bound=Callable[..., Any])
+# no relaxed arithmetic: results must not depend on what was compiled together or came from the disk
+_OPTIONS = {"nogil": True, "error_model": "numpy", "no_cfunc_wrapper": True}
 
 
 def kernel(function: F) -> F:
@@ -19,12 +21,16 @@ def kernel(function: F) -> F:
     A package folder that cannot be written falls back to the user's cache folder (numba does that), then to a
     temporary folder, then to compiling anew in each process: numba alone would fail at import in the last two.
     """
-    options = {"nogil": True, "fastmath": True, "error_model": "numpy"}
     try:
-        return cast(F, numba.njit(cache=True, **options)(function))
+        return cast(F, numba.njit(cache=True, **_OPTIONS)(function))
     except RuntimeError:
         numba.config.CACHE_DIR = str(Path(tempfile.gettempdir()) / f"rcbench-compiled-{os.getuid()}")
     try:
-        return cast(F, numba.njit(cache=True, **options)(function))
+        return cast(F, numba.njit(cache=True, **_OPTIONS)(function))
     except (RuntimeError, OSError):
-        return cast(F, numba.njit(**options)(function))
+        return cast(F, numba.njit(**_OPTIONS)(function))
+
+
+def part(function: F) -> F:
+    """The same for a piece that only compiled code calls: it needs no face towards Python and no file of its own."""
+    return cast(F, numba.njit(no_cpython_wrapper=True, **_OPTIONS)(function))

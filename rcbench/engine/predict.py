@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Callable, Iterator, Sequence
-from dataclasses import replace
 
 import numpy as np
 
@@ -12,19 +11,17 @@ from rcbench.arrays import ComplexArray, FloatArray
 from rcbench.circuits.circuit import Circuit
 from rcbench.engine import tree
 from rcbench.engine.distribution import Distribution
+from rcbench.engine.mixture import BLOCK_QUBITS, probability_type, run_patterns
 from rcbench.engine.noise import SOURCES, NoiseModel
 from rcbench.engine.readout import flip, measured
-from rcbench.engine.state import evolve, zero_state
-from rcbench.engine.trajectories import NoisyProgram, Patterns, changed_operators, draw_patterns, noisy_program
+from rcbench.engine.threads import Pool
+from rcbench.engine.trajectories import draw_patterns, noisy_program
 from rcbench.errors import InputError
 from rcbench.randomness import Draw
 
-DOUBLE_QUBITS = 20  # up to here probabilities are kept in double precision
-
-
 def probabilities(state: ComplexArray) -> FloatArray:
-    """(2**n,) squared magnitudes; double precision up to DOUBLE_QUBITS qubits."""
-    real = np.float64 if len(state) <= 2**DOUBLE_QUBITS else np.float32
+    """(2**n,) squared magnitudes."""
+    real = probability_type(len(state).bit_length() - 1)
     return np.square(state.real, dtype=real) + np.square(state.imag, dtype=real)
 
 
@@ -95,7 +92,8 @@ def noisy_distribution(
     threads: int | None,
 ) -> Distribution:
     """The distribution under a noise model; error_free: (2**n,) probabilities of the circuit without an error."""
-    noisy = noisy_program(circuit, noise)
+    one_block = circuit.n_qubits if circuit.n_qubits <= BLOCK_QUBITS else None
+    noisy = noisy_program(circuit, noise, dtype, one_block)
     qubits = circuit.measured_qubits
     confusion = noise.confusion(qubits)
     exact, weight = measured(error_free, qubits), noisy.error_free
@@ -104,9 +102,10 @@ def noisy_distribution(
     if len(noisy.places):
         draw = Draw(seed, "trajectories", content_key(circuit))
         patterns = draw_patterns(noisy, trajectories, batch_count(circuit.n_qubits), draw)
-        sums, scored = run_patterns(noisy, patterns, dtype, threads)
-        batches = measured(sums, qubits) * (patterns.batches / len(patterns))
-        scored = measured(scored, qubits) / len(patterns)
+        with Pool(threads) as pool:
+            sums = run_patterns(noisy, patterns, dtype, pool)
+        batches = measured(sums.by_batch, qubits) * (patterns.batches / len(patterns))
+        scored = measured(sums.scored, qubits) / len(patterns)
         mixture = weight * exact + (1 - weight) * batches.mean(axis=0)
         for place, source in enumerate(SOURCES):
             scale = noise.uncertainty.get(source, 0.0)
@@ -120,23 +119,3 @@ def noisy_distribution(
     if noise.uncertainty.get("readout_0to1") or noise.uncertainty.get("readout_1to0"):
         tilts["readout"] = flip(mixture, noise.confusion(qubits, sigmas=1)) - flip(mixture, confusion)
     return Distribution(len(qubits), flip(exact, confusion), weight if batches is not None else 1.0, batches, tilts)
-
-
-def run_patterns(
-    noisy: NoisyProgram, patterns: Patterns, dtype: str, threads: int | None
-) -> tuple[FloatArray, FloatArray]:
-    """(batches, 2**n) sums of the final probabilities over each batch, and (sources, 2**n) sums weighted with the scores."""
-    changes = changed_operators(noisy, patterns)
-    n, each = noisy.program.n_qubits, len(patterns) // patterns.batches
-    sums = np.zeros((patterns.batches, 2**n))
-    scored = np.zeros((len(SOURCES), 2**n))
-    for trajectory in range(len(patterns)):
-        program = replace(noisy.program, matrices=noisy.program.matrices.copy())
-        part = slice(changes.start[trajectory], changes.start[trajectory + 1])
-        program.matrices[changes.op[part]] = changes.matrices[part]
-        state = zero_state(n, dtype)
-        evolve(state, program)
-        final = probabilities(state)
-        sums[trajectory // each] += final
-        scored += patterns.scores[trajectory][:, None] * final
-    return sums, scored

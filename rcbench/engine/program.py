@@ -11,10 +11,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rcbench.arrays import ComplexArray, IntArray
+from rcbench.arrays import BoolArray, ComplexArray, IntArray
 from rcbench.circuits.circuit import Circuit
 from rcbench.circuits.gates import CODE, KINDS, N_QUBITS
-from rcbench.engine.compiled import kernel
+from rcbench.engine.compiled import kernel, part
 from rcbench.errors import InputError
 
 
@@ -28,6 +28,7 @@ class GateRows:
         kind: (m,) index into `gates.KINDS`.
         qubits: (m, 2) int32 qubits of each gate, the second -1 for one-qubit gates.
         matrices: (m, 4, 4) complex128; a one-qubit gate fills [:2, :2].
+        held: (m,) true where a one-qubit gate must join the operator after it, not the one before.
     """
 
     n_qubits: int
@@ -35,6 +36,7 @@ class GateRows:
     kind: IntArray
     qubits: IntArray
     matrices: ComplexArray
+    held: BoolArray
 
     def __len__(self) -> int:
         return len(self.layer)
@@ -76,7 +78,7 @@ def gate_rows(circuit: Circuit, start: int = 0, stop: int | None = None) -> Gate
         matrices[here, :side, :side] = gate.matrices(circuit.parameters[columns])
     qubits = np.ascontiguousarray(circuit.qubits[rows], dtype=np.int32)
     qubits[N_QUBITS[kinds] == 1, 1] = -1
-    return GateRows(circuit.n_qubits, circuit.layer[rows], kinds, qubits, matrices)
+    return GateRows(circuit.n_qubits, circuit.layer[rows], kinds, qubits, matrices, np.zeros(len(rows), dtype=bool))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -98,71 +100,66 @@ class Program:
     def __len__(self) -> int:
         return len(self.qubits)
 
-    @property
-    def one_qubit(self) -> IntArray:
-        """(k,) places of the one-qubit operators."""
-        return np.flatnonzero(self.qubits[:, 1] < 0)
+    def reordered(self, order: IntArray) -> Program:
+        """The same operators in another order that leaves those on a common qubit as they are."""
+        place = np.empty(len(order), dtype=np.int64)
+        place[order] = np.arange(len(order))
+        return Program(self.n_qubits, self.qubits[order], self.matrices[order], place[self.op_of_row])
 
 
 def fuse(rows: GateRows) -> Program:
     """The program of a stretch of gates."""
-    count, qubits, matrices, op_of_row = _fuse(rows.n_qubits, rows.qubits, rows.matrices)
+    count, qubits, matrices, op_of_row = _fuse(rows.n_qubits, rows.qubits, rows.matrices, rows.held)
     return Program(rows.n_qubits, qubits[:count], matrices[:count], op_of_row)
 
 
-@kernel
-def multiply(left, right, size):  # type: ignore[no-untyped-def]
+@part
+def _multiply(left, right, size):  # type: ignore[no-untyped-def]
     """left @ right of the leading (size, size) corners, into `right`."""
-    out = np.zeros((4, 4), dtype=np.complex128)
-    for i in range(size):
-        for j in range(size):
-            total = 0j
-            for k in range(size):
-                total += left[i, k] * right[k, j]
-            out[i, j] = total
-    right[:, :] = out
+    column = (right[0, 0], right[0, 0], right[0, 0], right[0, 0])
+    for j in range(size):
+        if size == 2:
+            column = (right[0, j], right[1, j], 0j, 0j)
+        else:
+            column = (right[0, j], right[1, j], right[2, j], right[3, j])
+        for i in range(size):
+            total = left[i, 0] * column[0] + left[i, 1] * column[1]
+            if size == 4:
+                total += left[i, 2] * column[2] + left[i, 3] * column[3]
+            right[i, j] = total
 
 
-@kernel
-def embed(gate, second):  # type: ignore[no-untyped-def]
-    """A one-qubit gate as a (4, 4) matrix on the first (more significant) or the second qubit of a pair."""
-    out = np.zeros((4, 4), dtype=np.complex128)
-    for i in range(2):
-        for j in range(2):
-            for k in range(2):
-                if second:
-                    out[2 * k + i, 2 * k + j] = gate[i, j]
-                else:
-                    out[2 * i + k, 2 * j + k] = gate[i, j]
-    return out
+@part
+def _multiply_one(gate, operator, stride):  # type: ignore[no-untyped-def]
+    """A one-qubit gate times a (4, 4) operator, into the operator; stride 2 is the first qubit, 1 the second."""
+    for j in range(4):
+        for k in range(2):
+            i = k * (3 - stride)
+            x, y = operator[i, j], operator[i + stride, j]
+            operator[i, j] = gate[0, 0] * x + gate[0, 1] * y
+            operator[i + stride, j] = gate[1, 0] * x + gate[1, 1] * y
 
 
-@kernel
-def exchange(gate):  # type: ignore[no-untyped-def]
-    """The (4, 4) matrix with the two qubits in the other order."""
-    order = (0, 2, 1, 3)
-    out = np.empty((4, 4), dtype=np.complex128)
-    for i in range(4):
-        for j in range(4):
-            out[i, j] = gate[order[i], order[j]]
-    return out
-
-
-@kernel
+@part
 def apply_row(operator, first, second, gate, a, b):  # type: ignore[no-untyped-def]
     """Multiply an operator on qubits first < second (or on `first` alone) by one gate on (a, b) from the left."""
     if second < 0:
-        multiply(gate, operator, 2)
+        _multiply(gate, operator, 2)
     elif b < 0:
-        multiply(embed(gate, a == second), operator, 4)
+        _multiply_one(gate, operator, 1 if a == second else 2)
     elif a > b:
-        multiply(exchange(gate), operator, 4)
+        # the gate's first qubit is the operator's second: exchange rows and columns |01> and |10> of the gate
+        other = np.empty((4, 4), dtype=np.complex128)
+        for i in range(4):
+            for j in range(4):
+                other[(i & 1) << 1 | i >> 1, (j & 1) << 1 | j >> 1] = gate[i, j]
+        _multiply(other, operator, 4)
     else:
-        multiply(gate, operator, 4)
+        _multiply(gate, operator, 4)
 
 
 @kernel
-def _fuse(n_qubits, qubits, gates):  # type: ignore[no-untyped-def]
+def _fuse(n_qubits, qubits, gates, held):  # type: ignore[no-untyped-def]
     rows = len(qubits)
     op_qubits = np.full((rows, 2), -1, dtype=np.int32)
     matrices = np.zeros((rows, 4, 4), dtype=np.complex128)
@@ -173,25 +170,30 @@ def _fuse(n_qubits, qubits, gates):  # type: ignore[no-untyped-def]
     for row in range(rows):
         a, b = qubits[row, 0], qubits[row, 1]
         here = last[a]
-        if here >= 0 and (b < 0 or here == last[b]):
+        joins = here >= 0 and (b < 0 or here == last[b])
+        if joins and held[row] and op_qubits[here, 1] >= 0:
+            joins = False
+        if joins:
             apply_row(matrices[here], op_qubits[here, 0], op_qubits[here, 1], gates[row], a, b)
             op_of_row[row] = here
             continue
         new = count
         count += 1
         op_of_row[row] = new
+        for i in range(4):
+            matrices[new, i, i] = 1
         if b < 0:
             op_qubits[new, 0] = a
-            matrices[new] = gates[row]
+            matrices[new, 2, 2] = matrices[new, 3, 3] = 0
+            apply_row(matrices[new], a, -1, gates[row], a, -1)
             last[a] = new
             continue
         low, high = min(a, b), max(a, b)
         op_qubits[new, 0], op_qubits[new, 1] = low, high
-        matrices[new] = np.eye(4)
         for qubit in (low, high):
             before = last[qubit]
             if before >= 0 and op_qubits[before, 1] < 0:
-                multiply(embed(matrices[before], qubit == high), matrices[new], 4)
+                apply_row(matrices[new], low, high, matrices[before], qubit, -1)
                 absorbed[before] = new
             last[qubit] = new
         apply_row(matrices[new], low, high, gates[row], a, b)
@@ -201,12 +203,12 @@ def _fuse(n_qubits, qubits, gates):  # type: ignore[no-untyped-def]
     for op in range(count):
         if absorbed[op] < 0:
             place[op] = kept
-            op_qubits[kept] = op_qubits[op]
-            matrices[kept] = matrices[op]
+            op_qubits[kept, 0], op_qubits[kept, 1] = op_qubits[op, 0], op_qubits[op, 1]
+            for i in range(4):
+                for j in range(4):
+                    matrices[kept, i, j] = matrices[op, i, j]
             kept += 1
     for row in range(rows):
         op = op_of_row[row]
-        if absorbed[op] >= 0:
-            op = absorbed[op]
-        op_of_row[row] = place[op]
+        op_of_row[row] = place[absorbed[op] if absorbed[op] >= 0 else op]
     return kept, op_qubits, matrices, op_of_row

@@ -2,28 +2,27 @@
 
 from __future__ import annotations
 
-import numpy as np
-
 from rcbench.arrays import ComplexArray
 from rcbench.circuits.circuit import Circuit
 from rcbench.engine import memory
+from rcbench.engine.blocks import aligned, apply_plan, plan
+from rcbench.engine.operators import encode
 from rcbench.engine.program import Program, check_order, fuse, gate_rows
-from rcbench.engine.reference import apply_reference
+from rcbench.engine.threads import Pool
 
 
 def zero_state(n_qubits: int, dtype: str = "complex64") -> ComplexArray:
     """(2**n,) the state |0...0>."""
-    state = np.zeros(2**n_qubits, dtype=memory.state_dtype(dtype))
+    state: ComplexArray = aligned(2**n_qubits, memory.state_dtype(dtype))
+    state[:] = 0
     state[0] = 1
     return state
 
 
-def evolve(state: ComplexArray, program: Program) -> None:
+def evolve(state: ComplexArray, program: Program, pool: Pool) -> None:
     """Apply a program to a state, in place."""
-    for pair, matrix in zip(program.qubits.tolist(), program.matrices, strict=True):
-        qubits = pair[:1] if pair[1] < 0 else pair
-        gate = matrix[: 2 ** len(qubits), : 2 ** len(qubits)].astype(state.dtype)
-        state[:] = apply_reference(state[None], gate, qubits)[0]
+    if len(program):
+        apply_plan(state, plan(encode(program, state.dtype)), pool)
 
 
 def final_state(
@@ -44,5 +43,6 @@ def final_state(
     check_order(circuit)
     memory.require(memory.bytes_needed(circuit.n_qubits, dtype), memory_limit, f"a state of {circuit.n_qubits} qubits")
     state = zero_state(circuit.n_qubits, dtype)
-    evolve(state, fuse(gate_rows(circuit)))
+    with Pool(threads) as pool:
+        evolve(state, fuse(gate_rows(circuit)), pool)
     return state

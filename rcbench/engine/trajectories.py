@@ -14,8 +14,10 @@ import numpy as np
 from rcbench.arrays import ComplexArray, FloatArray, IntArray
 from rcbench.circuits.circuit import Circuit
 from rcbench.circuits.gates import CODE
-from rcbench.engine.compiled import kernel
+from rcbench.engine.blocks import Plan, plan
+from rcbench.engine.compiled import kernel, part
 from rcbench.engine.noise import SOURCES, ErrorPlaces, NoiseModel, error_places
+from rcbench.engine.operators import encode
 from rcbench.engine.program import GateRows, Program, apply_row, fuse, gate_rows
 from rcbench.errors import InputError
 from rcbench.randomness import Draw
@@ -26,7 +28,8 @@ class NoisyProgram:
     """A circuit's program with its error places.
 
     Args:
-        rows, program: the gates and the operators that hold them.
+        rows, program: the gates and the operators that hold them, in the order of the sweeps.
+        sweeps: the program as the kernels run it.
         places: sorted by the operator they fall into.
         op: (m,) that operator.
         hazard: (m + 1,) minus the log of the probability that no error strikes before each place.
@@ -34,6 +37,7 @@ class NoisyProgram:
 
     rows: GateRows
     program: Program
+    sweeps: Plan
     places: ErrorPlaces
     op: IntArray
     hazard: FloatArray
@@ -50,19 +54,21 @@ class NoisyProgram:
         return -np.bincount(self.places.source, weights, minlength=len(SOURCES))
 
 
-def noisy_program(circuit: Circuit, noise: NoiseModel) -> NoisyProgram:
-    """The program of a circuit with its error places under a noise model."""
+def noisy_program(circuit: Circuit, noise: NoiseModel, dtype: str, block_bits: int | None = None) -> NoisyProgram:
+    """The program of a circuit with its error places under a noise model; block_bits as in `blocks.plan`."""
     if noise.n_qubits != circuit.n_qubits:
         raise InputError("noise", f"{noise.n_qubits} qubits", f"the circuit's {circuit.n_qubits} qubits")
     rows = _touch_all(gate_rows(circuit))
     program = fuse(rows)
+    sweeps = plan(encode(program, np.dtype(dtype)), block_bits)
+    program = program.reordered(sweeps.order)
     places = error_places(rows, noise)
     first_op = _first_ops(rows, program)
     op = np.where(places.row >= 0, program.op_of_row[places.row], first_op[places.qubits[:, 0]])
     order = np.lexsort((places.row, op))
     places = places.take(order)
     hazard = np.concatenate([[0.0], np.cumsum(-np.log1p(-places.probability))])
-    return NoisyProgram(rows, program, places, op[order], hazard)
+    return NoisyProgram(rows, program, sweeps, places, op[order], hazard)
 
 
 def _touch_all(rows: GateRows) -> GateRows:
@@ -78,6 +84,7 @@ def _touch_all(rows: GateRows) -> GateRows:
         np.concatenate([np.full(count, CODE["z"]), rows.kind]),  # virtual: takes no time and makes no error
         np.concatenate([pairs, rows.qubits]),
         np.concatenate([identity, rows.matrices]),
+        np.concatenate([np.zeros(count, dtype=bool), rows.held]),
     )
 
 
@@ -194,7 +201,7 @@ _PAULIS = np.zeros((4, 4, 4), dtype=np.complex128)
 _PAULIS[:, :2, :2] = [[[1, 0], [0, 1]], [[0, 1], [1, 0]], [[0, -1j], [1j, 0]], [[1, 0], [0, -1]]]
 
 
-@kernel
+@part
 def _strike(matrix, first, second, qubits, pauli):  # type: ignore[no-untyped-def]
     if qubits[1] < 0:
         apply_row(matrix, first, second, _PAULIS[pauli], qubits[0], -1)

@@ -16,8 +16,10 @@ from rcbench.arrays import ComplexArray, IntArray
 from rcbench.circuits.circuit import Circuit
 from rcbench.circuits.gates import N_PARAMETERS
 from rcbench.engine import memory
+from rcbench.engine.blocks import aligned
 from rcbench.engine.program import check_order, fuse, gate_rows
 from rcbench.engine.state import evolve, zero_state
+from rcbench.engine.threads import Pool
 
 
 @dataclass(slots=True, eq=False)
@@ -121,13 +123,15 @@ def walk(
         root = build_tree([circuits[index] for index in members])
         needed = memory.bytes_needed(n_qubits, dtype, states=root.states)
         memory.require(needed, memory_limit, f"{root.states} states of {n_qubits} qubits")
-        waiting = [(root, zero_state(n_qubits, dtype), False)]
-        while waiting:
-            node, state, others_wait = waiting.pop()
-            if others_wait:
-                state = state.copy()
-            evolve(state, fuse(gate_rows(circuits[members[node.source]], node.start, node.stop)))
-            for index in node.ends:
-                yield members[index], state
-            # the first branch is taken up last and needs no copy
-            waiting += [(child, state, place > 0) for place, child in enumerate(node.branches.values())]
+        with Pool(threads) as pool:
+            waiting = [(root, zero_state(n_qubits, dtype), False)]
+            while waiting:
+                node, state, others_wait = waiting.pop()
+                if others_wait:
+                    state, original = aligned(len(state), state.dtype), state
+                    state[:] = original
+                evolve(state, fuse(gate_rows(circuits[members[node.source]], node.start, node.stop)), pool)
+                for index in node.ends:
+                    yield members[index], state
+                # the first branch is taken up last and needs no copy
+                waiting += [(child, state, place > 0) for place, child in enumerate(node.branches.values())]

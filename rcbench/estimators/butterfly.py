@@ -2,7 +2,8 @@
 
 A run whose `params` name a `butterfly` site is a butterfly run; one that names none is the reference. Prepared is a
 +1 state of Z at every probe, so that C = <Z> after U, the butterfly W, and the inverse of U. A row of `otoc` is
-labelled `butterfly=5;probe=2;W=X;V=Z`: W the Pauli of the butterfly, V = Z the one measured at the probe.
+labelled `butterfly=5;probe=2;W=X;V=Z`: W the Pauli of the butterfly, V the one measured at the probe. Whatever else
+the `params` hold, such as an input, is the same in a butterfly run and in its reference.
 """
 
 from __future__ import annotations
@@ -20,10 +21,8 @@ LEAST_SIGNAL = 5.0
 
 
 def missing(group: Group) -> str:
-    """What the group lacks: a reference run for each butterfly run, and a butterfly run."""
-    if not any(not is_butterfly(run) for run in group.runs):
-        return "the reference echo"
-    return "" if any(is_butterfly(run) for run in group.runs) else "a butterfly run"
+    """What the group lacks that all its values need: the reference run."""
+    return "the reference echo" if all(is_butterfly(run) for run in group.runs) else ""
 
 
 def is_butterfly(run: Run) -> bool:
@@ -49,13 +48,13 @@ def apply(group: Group) -> list[Measured]:
     for run in references:
         for bit, qubit in enumerate(run.measured_qubits):
             echo = _probe(run, bit)
-            echoes[_input(run), qubit] = echo
+            echoes[_common(run), qubit] = echo
             found.append(_row("reference_echo", write_setting({"probe": qubit}), echo, run))
     for run in group.runs:
         if not is_butterfly(run):
             continue
         for bit, qubit in enumerate(run.measured_qubits):
-            reference = echoes.get((_input(run), qubit))
+            reference = echoes.get((_common(run), qubit))
             if reference is not None:
                 value = normalise(_probe(run, bit), reference)
                 found.append(_row("otoc", label(run, qubit), value, run))
@@ -64,8 +63,8 @@ def apply(group: Group) -> list[Measured]:
 
 def label(run: Run, probe: int) -> str:
     """The region of one butterfly and one probe."""
-    pauli = run.params.get("pauli", "X")
-    return write_setting({"butterfly": run.params["butterfly"], "probe": probe, "W": pauli, "V": "Z"})
+    w, v = run.params.get("pauli", "X"), run.params.get("measured", "Z")
+    return write_setting({"butterfly": run.params["butterfly"], "probe": probe, "W": w, "V": v})
 
 
 def normalise(butterfly: Value, reference: Value) -> Value:
@@ -83,9 +82,9 @@ def _probe(run: Run, bit: int) -> Value:
     return Value(sign * value.value, value.std_error)
 
 
-def _input(run: Run) -> str:
-    """What a butterfly run and its reference have in common beside the circuit: the input, where there are several."""
-    return str(run.params.get("input", ""))
+def _common(run: Run) -> str:
+    """What a butterfly run and its reference have in common beside the circuit, as text to compare."""
+    return repr(sorted((key, value) for key, value in run.params.items() if key not in ("butterfly", "pauli")))
 
 
 def _row(key: str, region: str, value: Value, run: Run) -> Measured:

@@ -1,17 +1,17 @@
 """The order in which a kit is run: which circuits share a batch (a job), and where each stands in it.
 
 Everything that one instance needs stands in one batch, so that drift between jobs does not come between a circuit and
-what it is compared with: all roles, settings and depths of an instance, of every experiment that shares its circuits, and
-of the controls of these. Another repeat of an instance is another such group, free to stand in another batch. Groups
-come in a random order and fill batches of at most `limits.circuits_per_job`; a group that is larger than a batch is cut
-between depths. In a batch the circuits run in a random order. All of it is drawn from the campaign's seed.
+what it is compared with: all roles, settings and depths of an instance, of every experiment that shares its circuits,
+and of the controls of these. Another repeat of an instance is another such group, free to stand in another batch.
+Groups come in a random order and fill batches of at most `limits.circuits_per_job`; a group that is larger than a batch
+is cut between depths. In a batch the circuits run in a random order. All of it is drawn from the campaign's seed.
 
 Besides, every batch holds
 
 - the circuits of roles that are for every batch, such as calibration;
-- an anchor of each experiment: its first circuit, shallowest depth of instance 0, run again as a further repeat, so that
-  batches can be told apart. Anchors take at most a tenth of a batch, the experiments in the order of the campaign, and
-  there are none in batches of fewer than ten circuits.
+- an anchor of each experiment: its first circuit (shallowest depth, instance 0), run again as a further repeat, so
+  that batches can be told apart. Anchors take at most a tenth of a batch, experiments in the order of the campaign;
+  batches of fewer than ten circuits have none.
 """
 
 from __future__ import annotations

@@ -104,7 +104,8 @@ def read_roster(path: Path) -> tuple[RosterRow, ...]:
         try:
             rows.append(_row(cells))
         except (ValueError, KeyError, TypeError) as error:
-            raise InputError("row", ",".join(cells), f"a row as rcbench wrote it ({error})", f"{path.name}:{reader.line_num}: ") from None
+            where = f"{path.name}:{reader.line_num}: "
+            raise InputError("row", ",".join(cells), f"a row as rcbench wrote it ({error})", where) from None
     return tuple(rows)
 
 

@@ -1,4 +1,4 @@
-"""Where the circuits of a kit lie: a file each in `circuits`, or, where they are very many, numbered zip archives there."""
+"""Where the circuits of a kit lie: a file each in `circuits`, or numbered zip archives there where they are many."""
 
 from __future__ import annotations
 

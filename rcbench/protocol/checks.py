@@ -1,4 +1,4 @@
-"""What a protocol file must fulfil as a whole: every name is known, steps stand in order, a target is really certain."""
+"""What a protocol file must fulfil as a whole: names are known, steps stand in order, a target is really certain."""
 
 from __future__ import annotations
 
@@ -147,7 +147,7 @@ _RANK = {Prepare: 0, Apply: 1, Perturb: 1, Rotate: 1, Measure: 2}
 
 
 def _check_loop(
-    check: _Check, path: tuple[Key, ...], key: str, value: str, role: Role, allowed: Iterable[str] | None = None
+    check: _Check, path: tuple[Key, ...], key: str, value: str, role: Role, allowed: tuple[str, ...] | None = None
 ) -> None:
     """A "$NAME" must be a loop of the role, and its values, where they are written down, what the step takes."""
     loops = {loop.name: loop for loop in role.for_each}

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 from rcbench.campaign import Experiment
 from rcbench.device import Device, Pair
@@ -24,8 +25,8 @@ def place(protocol: Protocol, experiment: Experiment, device: Device) -> Placeme
     """Give each register its qubits and check that the couplers host it.
 
     Raises:
-        InputError: all that does not fit at once: missing or misplaced sites, too few qubits, shares that do not come out
-            even, couplers that are lacking (named by device qubits).
+        InputError: what does not fit: missing or misplaced sites, too few qubits, shares that do not come out even,
+            couplers that are lacking (all at once, named by device qubits).
     """
     errors: list[InputError] = []
     where = f"experiment {experiment.name!r} with protocol {protocol.name!r}: "
@@ -59,7 +60,7 @@ def place(protocol: Protocol, experiment: Experiment, device: Device) -> Placeme
 
 
 def _take(protocol: Protocol, experiment: Experiment, where: str) -> dict[str, tuple[int, ...]]:
-    """The registers that take qubits of their own: sites first, then numbers, shares and the rest in the file's order."""
+    """The registers that take qubits of their own: those at sites first, then the others in the order of the file."""
     takers = [register for register in protocol.registers.values() if register.take is not None]
     free = list(range(experiment.n_qubits))
     chosen: dict[str, tuple[int, ...]] = {}
@@ -181,7 +182,7 @@ def _circuit_lacks(
     pieces = _pieces(own, set(device.couplers))
     if len(pieces) > 1 and experiment.circuits.family == "brickwork":
         parts = " and ".join(write_regions(piece) for piece in pieces)
-        joins = ", ".join(f"{max(a)}-{min(b)}" for a, b in zip(pieces, pieces[1:], strict=False))
+        joins = ", ".join(f"{max(a)}-{min(b)}" for a, b in pairwise(pieces))
         yield f"no couplers between {parts}", f"qubits that are all connected: couplers such as {joins} are lacking"
 
 

@@ -36,7 +36,8 @@ A protocol file is TOML. Unknown keys and names are errors. In outline:
     every_batch = true         one circuit a setting, no instances or depths, run again in every batch
     steps = [                  one step a line; a register or a list of them; prepare first, measure last
         { prepare = "system" },                                 |0...0>
-        { prepare = "system", state = "01" },                   a pattern, repeated; or zero one plus minus plus-i minus-i
+        { prepare = "system", state = "01" },                   a pattern, repeated, or one of zero one plus minus
+                                                                plus-i minus-i
         { prepare = "system", draw = "frame" },                 a random product state, or random bits
         { prepare = "a", bell_with = "b" },                     Bell pairs (|00> + |11>) / sqrt(2)
         { apply = "system", form = "U" },                       U | inverse | conjugate | transpose
@@ -76,24 +77,16 @@ from rcbench.protocol.checks import check_protocol
 from rcbench.protocol.language import (
     DRAW_KINDS,
     FITS,
-    FORMS,
-    PAULI_NAMES,
-    STATES,
     TARGETS,
-    Apply,
     Loop,
-    Measure,
     MeasuredSignature,
     NamedDraw,
-    Perturb,
-    Prepare,
     Protocol,
     Register,
     Role,
-    Rotate,
     SiteList,
-    Step,
 )
+from rcbench.protocol.reading_steps import read_names, read_steps
 from rcbench.signatures.registry import SIGNATURES
 from rcbench.tomlfile import Section, TomlFile, read_toml
 
@@ -101,7 +94,6 @@ NAME = re.compile(r"[A-Za-z][A-Za-z0-9_-]{0,39}")
 _NAME_WORDS = "a letter, then letters, digits, '-' and '_', at most 40"
 _COUPLING = re.compile(r"circuit|(?:pairwise|every) with [A-Za-z][A-Za-z0-9_-]*")
 _TAKES = ("all", "share", "rest")
-_VERBS = ("prepare", "apply", "perturb", "rotate", "measure")
 
 
 def shipped_protocols() -> list[str]:
@@ -197,14 +189,6 @@ def _tables(top: Section, key: str) -> list[Section]:
     return out
 
 
-def _names(section: Section, key: str, default: Any = ...) -> tuple[str, ...]:
-    """A name or a list of names."""
-    value = section.raw(key)
-    if isinstance(value, str):
-        return (value,)
-    return section.texts(key, default) or ()
-
-
 def _example(top: Section) -> str:
     section = top.section("example")
     if section is None:
@@ -233,14 +217,14 @@ def _register(section: Section) -> Register:
     taken = isinstance(take, str) and (take in _TAKES or take.startswith("sites."))
     if take is not None and not taken and not (type(take) is int and take >= 1):
         section.error("take", take, '"all", "share", "rest", "sites.NAME", or a number of qubits, 1 or more')
-    coupling = _names(section, "coupling", ())
+    coupling = read_names(section, "coupling", ())
     for part in coupling:
         if not _COUPLING.fullmatch(part):
             section.error("coupling", part, '"circuit", "pairwise with NAME", "every with NAME"')
     made = Register(
         name=str(section.path[-1]),
         take=take,
-        join=_names(section, "join", ()),
+        join=read_names(section, "join", ()),
         part_of=section.text("part_of", ""),
         sites=section.text("sites", ""),
         same_as=section.text("same_as", ""),
@@ -282,7 +266,7 @@ def _role(section: Section) -> Role:
     made = Role(
         name=name,
         for_each=tuple(_loops(section)),
-        steps=tuple(_steps(section)),
+        steps=tuple(read_steps(section)),
         target=section.choice("target", TARGETS, ""),
         params=_params(section),
         every_batch=section.flag("every_batch", False),
@@ -318,65 +302,3 @@ def _params(section: Section) -> dict[str, object]:
             table.error(key, value, "a text, a number, or a list of them")
         out[key] = value
     return out
-
-
-def _steps(section: Section) -> Iterable[Step]:
-    parts = section.sections("steps")
-    if not parts:
-        section.error("steps", "nothing", "one or more steps")
-    for part in parts:
-        verbs = [verb for verb in _VERBS if part.has(verb)]
-        if len(verbs) != 1:
-            key = next(iter(part.data), "steps")
-            part.error(verbs[1] if verbs else key, verbs or list(part.data), f"one of {', '.join(_VERBS)} a step")
-            continue
-        made = _STEP[verbs[0]](part)
-        part.close()
-        yield made
-
-
-def _prepare(part: Section) -> Prepare:
-    given = [key for key in ("state", "draw", "bell_with") if part.has(key)]
-    if len(given) > 1:
-        part.error(given[1], part.raw(given[1]), "one of state, draw and bell_with")
-    state = part.text("state", "zero")
-    if isinstance(state, str) and not (state in STATES or state.startswith("$") or re.fullmatch("[01]+", state)):
-        part.error("state", state, f'{suggest(state, STATES)}, a pattern of 0 and 1, or "$LOOP"')
-    return Prepare(_names(part, "prepare"), state, part.text("draw", ""), part.text("bell_with", ""))
-
-
-def _apply(part: Section) -> Apply:
-    registers, forms = _names(part, "apply"), _names(part, "form", ("U",))
-    for form in forms:
-        if form not in FORMS:
-            part.error("form", form, suggest(form, FORMS))
-    if len(forms) != len(registers):
-        part.error("form", list(forms), f"one form a register, {len(registers)}")
-    return Apply(registers, forms, part.text("pauli_layers", ""))
-
-
-def _perturb(part: Section) -> Perturb:
-    pauli = part.text("perturb") or ""
-    if pauli not in PAULI_NAMES and not pauli.startswith("$"):
-        part.error("perturb", pauli, 'X, Y, Z or "$LOOP"')
-    angle = part.number("angle", None)
-    controlled_by = part.text("controlled_by", "")
-    if angle is not None and controlled_by:
-        part.error("angle", angle, "no angle with controlled_by: only Paulis are controlled")
-    return Perturb(pauli, part.text("at") or "", angle, controlled_by)
-
-
-def _rotate(part: Section) -> Rotate:
-    draw, basis = part.text("draw", ""), part.text("basis", "")
-    if bool(draw) == bool(basis):
-        part.error("rotate", part.raw("rotate"), "with one of draw and basis")
-    if basis and basis not in PAULI_NAMES and not basis.startswith("$"):
-        part.error("basis", basis, 'X, Y, Z or "$LOOP"')
-    return Rotate(_names(part, "rotate"), draw, basis, part.flag("inverse", False))
-
-
-def _measure(part: Section) -> Measure:
-    return Measure(_names(part, "measure"), part.text("bell_with", ""))
-
-
-_STEP = {"prepare": _prepare, "apply": _apply, "perturb": _perturb, "rotate": _rotate, "measure": _measure}

@@ -16,8 +16,8 @@ from rcbench.circuits.cliffords import CLIFFORD1
 from rcbench.circuits.compile import add_two_qubit
 from rcbench.circuits.ensembles import haar_unitaries
 from rcbench.circuits.families import served
-from rcbench.circuits.frames import FLIPS, LETTERS, PAULIS, add_layer, randomised, unseen
-from rcbench.circuits.gates import CODE, N_QUBITS
+from rcbench.circuits.frames import FLIPS, LETTERS, PAULIS, randomised, unseen
+from rcbench.circuits.joining import joined, relabelled, side_by_side
 from rcbench.device import Device
 from rcbench.errors import InputError
 from rcbench.protocol.language import (
@@ -64,7 +64,7 @@ class Setting:
 
 @dataclass(frozen=True, slots=True)
 class Written:
-    """A circuit with its measurement, the outcome that is certain (empty where there is none), and facts for the roster."""
+    """A circuit with its measurement, the outcome that is certain or empty, and what the roster says about it."""
 
     circuit: Circuit
     target: str
@@ -88,6 +88,7 @@ class _Writer:
     """
 
     setting: Setting
+    pieces: list[Circuit] = field(default_factory=list)
     builder: CircuitBuilder = field(init=False)
     frame: IntArray = field(init=False)
     bits: IntArray = field(init=False)
@@ -164,10 +165,7 @@ class _Writer:
         if not step.pauli_layers:
             self.undo_frame([label for _, labels in circuits for label in labels.tolist()])
         self.flush()
-        if len(circuits) == 1:
-            self.append(*circuits[0])
-        else:
-            self.side_by_side(circuits)
+        self.append(circuits)
         self.barrier()
 
     def perturb(self, step: Perturb) -> None:
@@ -210,7 +208,8 @@ class _Writer:
         self.flush()
         self.builder.measure(self.measured)
         declared = {key: self.filled(value) for key, value in self.setting.role.params.items()}
-        return Written(self.builder.build(), target, self.params | declared)
+        self.pieces.append(self.builder.build())
+        return Written(joined(self.pieces), target, self.params | declared)
 
     # what the steps are made of
 
@@ -284,9 +283,14 @@ class _Writer:
             self.builder.barrier()
             self.after_barrier = True
 
-    def append(self, circuit: Circuit, labels: IntArray) -> None:
-        self.builder.append(circuit, labels.tolist())
-        self.after_barrier = self.after_barrier and not len(circuit)
+    def append(self, circuits: Sequence[tuple[Circuit, IntArray]]) -> None:
+        """Circuits on registers, side by side where there are several."""
+        n = len(self.setting.qubits)
+        alone = len(circuits) == 1
+        added = relabelled(*circuits[0], n) if alone else side_by_side(circuits, n, self.setting.device.limits)
+        self.pieces += [self.builder.build(), added]
+        self.builder = CircuitBuilder(n)
+        self.after_barrier = self.after_barrier and not len(added)
 
     def pairs(self, pairs: Any, gate: ComplexArray) -> None:
         """The same two-qubit gate on pairs of qubits, in native gates, under the frames that they carry."""
@@ -300,50 +304,6 @@ class _Writer:
         self.after_barrier = False
         self.barrier()
 
-    def side_by_side(self, circuits: Sequence[tuple[Circuit, IntArray]]) -> None:
-        """Circuits on different qubits at the same time: block by block, one-qubit and two-qubit layers together."""
-        blocks = [_blocks(circuit) for circuit, _ in circuits]
-        for index in range(max(len(parts) for parts in blocks)):
-            self.barrier()
-            queues = [
-                (circuit, labels, list(parts[index]) if index < len(parts) else [])
-                for (circuit, labels), parts in zip(circuits, blocks, strict=True)
-            ]
-            while any(queue for _, _, queue in queues):
-                self.write_together(queues)
-
-    def write_together(self, queues: Sequence[tuple[Circuit, IntArray, list[IntArray]]]) -> None:
-        """The next layer: one-qubit layers first, so that the two-qubit layers of all circuits meet."""
-        heads = [(circuit, labels, queue) for circuit, labels, queue in queues if queue]
-        singles = [head for head in heads if not _is_two_qubit(head[0], head[2][0])]
-        for circuit, labels, queue in singles or heads:
-            if not singles and not self.may_run_together(circuit, labels, queue[0]):
-                self.builder.next_layer()
-            add_layer(self.builder, circuit, queue.pop(0), labels)
-        self.builder.next_layer()
-        self.after_barrier = False
-
-    def may_run_together(self, circuit: Circuit, labels: IntArray, rows: IntArray) -> bool:
-        """Whether the device may run these gates beside those of another register: not where it has such limits."""
-        limits = self.setting.device.limits
-        return limits.parallel_gates is None and not limits.exclusive
-
-
-def _blocks(circuit: Circuit) -> list[list[IntArray]]:
-    """The rows of each layer, between barriers."""
-    blocks: list[list[IntArray]] = [[]]
-    cuts = np.flatnonzero(np.diff(circuit.layer)) + 1
-    for rows in np.split(np.arange(len(circuit)), cuts):
-        if len(rows) and circuit.kind[rows[0]] == CODE["barrier"]:
-            blocks.append([])
-        elif len(rows):
-            blocks[-1].append(rows)
-    return blocks
-
-
-def _is_two_qubit(circuit: Circuit, rows: IntArray) -> bool:
-    return bool((N_QUBITS[circuit.kind[rows]] == 2).any())
-
 
 @lru_cache(maxsize=64)
 def _entangler(served_pairs: tuple[tuple[str, str], ...], device_name: str) -> str:
@@ -355,7 +315,7 @@ def _entangler(served_pairs: tuple[tuple[str, str], ...], device_name: str) -> s
 
 
 def entangler(device: Device) -> str:
-    """The native gate that Bell pairs and controlled Paulis are made of: one that needs a single gate, where there is."""
+    """The native gate that Bell pairs and controlled Paulis are made of; one that makes a CZ alone, if there is."""
     return _entangler(tuple(served(device)), device.name)
 
 

@@ -22,7 +22,7 @@ def experiments_table(source: Source) -> Table:
                     experiment.protocol or "predicted only",
                     f"{experiment.circuits.family}, {experiment.circuits.gates}",
                     _qubits(source, experiment),
-                    ", ".join(str(depth) for depth in experiment.depths),
+                    _depths(experiment),
                     str(experiment.instances),
                     whole(experiment.shots),
                     whole(len(roster)),
@@ -35,25 +35,35 @@ def experiments_table(source: Source) -> Table:
     return table("experiments", "Experiments as planned", columns, rows)
 
 
+def _depths(experiment: Experiment) -> str:
+    depths = experiment.depths
+    step = depths[1] - depths[0] if len(depths) > 1 else 0
+    if len(depths) > 3 and depths == tuple(range(depths[0], depths[-1] + 1, step)):
+        return f"{depths[0]} to {depths[-1]} in steps of {step}"
+    return ", ".join(str(depth) for depth in depths)
+
+
 def _qubits(source: Source, experiment: Experiment) -> str:
     names = [source.qubit_name(qubit) for qubit in experiment.qubits]
-    shown = names if len(names) <= 12 else [*names[:5], "…", *names[-2:]]
-    return f"{len(names)}: {' '.join(shown)}"
+    return f"{len(names)}: {' '.join(names)}" if len(names) <= 3 else f"{len(names)}: {names[0]} … {names[-1]}"
 
 
 def margins_table(source: Source) -> Table:
-    """The margins in force, by experiment and signature, as the comparison used them."""
+    """The margins in force, as the comparison used them; experiments with the same one stand together."""
     frame = source.comparison
-    rows = []
+    same: dict[tuple[str, ...], list[str]] = {}
     for experiment in source.campaign.experiments:
         for key in source.signatures(experiment.name):
             used = frame[(frame["experiment"] == experiment.name) & (frame["signature"] == key)]["margin"].dropna()
             margin = experiment.margins.get(key)
-            stated = "default" if margin is None else f"{margin.value:g} {'relative' if margin.relative else 'absolute'}"
+            stated = (
+                "default" if margin is None else f"{margin.value:g} {'relative' if margin.relative else 'absolute'}"
+            )
             low, high = (used.min(), used.max()) if len(used) else (None, None)
             shown = number(low, 2) if low == high else f"{number(low, 2)} to {number(high, 2)}"
-            rows.append((experiment.name, key, stated, shown, experiment.against.replace("-", " ")))
-    return table("margins", "Margins", "experiment, signature, as stated, as used>, tested against", rows)
+            same.setdefault((key, stated, shown, experiment.against.replace("-", " ")), []).append(experiment.name)
+    rows = [(*margin, ", ".join(names)) for margin, names in same.items()]
+    return table("margins", "Margins", "signature, as stated, as used>, tested against, experiments", rows)
 
 
 def facts(source: Source) -> list[tuple[str, str]]:
@@ -63,7 +73,10 @@ def facts(source: Source) -> list[tuple[str, str]]:
     return [
         ("Campaign", campaign.title),
         ("Device", f"{device.name}, {device.layout} of {device.n_qubits} qubits{invented}"),
-        ("Native gates", f"{', '.join(gate.name for gate in device.two_qubit) or MISSING}; one-qubit {device.one_qubit}"),
+        (
+            "Native gates",
+            f"{', '.join(gate.name for gate in device.two_qubit) or MISSING}; one-qubit {device.one_qubit}",
+        ),
         ("Seed", str(campaign.seed)),
         ("Intervals and tests", f"{percent(campaign.confidence)} confidence; decision by {campaign.rule}"),
         ("Kit hash", source.fact("kit_hash", "kit")),
@@ -86,7 +99,10 @@ def rule_fixed(source: Source) -> tuple[str, str]:
         if order is not None:
             words = "before" if order else "after"
             stand = "Fixed before the data" if order else "Not fixed before the data"
-            return stand, f"by the stated dates, kit {kit} was built {words} the first shot; the data quote no kit hash."
+            return (
+                stand,
+                f"by the stated dates, kit {kit} was built {words} the first shot; the data quote no kit hash.",
+            )
     return "Not shown", f"margins and rule are part of the hash of kit {kit}, but the data do not quote it."
 
 

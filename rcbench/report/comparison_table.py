@@ -2,33 +2,22 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import replace
 
 import numpy as np
 import pandas as pd
 
+from rcbench.campaign import Experiment
 from rcbench.regions import read_setting
-from rcbench.report.printed import MISSING, decimals_for, fixed, interval, number, ranges, whole
+from rcbench.report.printed import MISSING, decimals_for, depths_text, fixed, interval, number, small_power, whole
 from rcbench.report.source import Source
 from rcbench.report.table import Row, Table, finding_text, table
 from rcbench.signatures.registry import signature
 from rcbench.tables import FINDINGS
 
 MOST_DEPARTURES = 60
-_COLUMNS = (
-    "signature, depth>, instances>, measured [interval]>, ideal>, noise model>, difference [interval]>, margin>, finding"
-)
+_COLUMNS = "depth>, instances>, measured [interval]>, ideal>, noise model>, difference [interval]>, finding"
 _WORST_FIRST = ("departs", "undecided", "not-tested", "agrees")
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Disagreement:
-    """Rows of one signature of one experiment that depart. qubits: device qubits that their regions name."""
-
-    experiment: str
-    signature: str
-    text: str
-    qubits: tuple[int, ...]
 
 
 def counts(frame: pd.DataFrame) -> dict[str, int]:
@@ -37,15 +26,12 @@ def counts(frame: pd.DataFrame) -> dict[str, int]:
 
 
 def comparison_table(source: Source) -> Table:
-    """One line a signature and depth; where it has several regions, their mean, their largest difference and their counts."""
+    """A block a signature, a line a depth; where it has several regions, their mean, largest difference and counts."""
     rows: list[Row] = []
     for experiment in source.campaign.experiments:
-        head = _head(source, experiment.name)
         for key in source.signatures(experiment.name):
             part = source.compared(experiment.name, key)
-            for _, same in part.groupby("depth", dropna=False):
-                rows.append(_line(key, same, head))
-                head = ""
+            rows += _block(experiment, key, part[part["depth"].notna()])
     return table("comparison", "Measured against both predictions", _COLUMNS, rows, source.comparison)
 
 
@@ -55,58 +41,78 @@ def fits_table(source: Source, name: str) -> Table | None:
     rows = frame[(frame["experiment"] == name) & frame["depth"].isna()]
     if rows.empty:
         return None
-    lines = [_line(str(key), same, "") for key, same in rows.groupby("signature", sort=False)]
-    lines = [Row(cells=(line.cells[0], *line.cells[2:]), mark=line.mark) for line in lines]
-    return table(f"fits-{name}", "Fits over all depths", _COLUMNS.replace(" depth>,", ""), lines, rows)
+    lines: list[Row] = []
+    for key, same in rows.groupby("signature", sort=False):
+        lines += _block(source.campaign.experiment(name), str(key), same)
+    lines = [replace(line, cells=line.cells[1:]) for line in lines]
+    return table(f"fits-{name}", "Fits over all depths", _COLUMNS.removeprefix("depth>, "), lines, rows)
 
 
-def _head(source: Source, name: str) -> str:
-    experiment = source.campaign.experiment(name)
-    role = f", control for {experiment.control_for}" if experiment.control_for else ""
-    return f"{name} ({experiment.circuits.family}{role}; tested against the {experiment.against.replace('-', ' ')})"
+def _block(experiment: Experiment, key: str, rows: pd.DataFrame) -> list[Row]:
+    """The lines of one signature; what they have in common stands in the head, small values as multiples of a power of ten."""
+    if rows.empty:
+        return []
+    row = signature(key)
+    size = rows[["measured", "ideal", "noise_model"]].abs().max(axis=None)
+    power = small_power(float(size))
+    scale = 10.0**power
+    digits = decimals_for((rows["std_error"] * scale).median())
+    low, high = rows["margin"].min() * scale, rows["margin"].max() * scale
+    margin = number(low, 2) if low == high else f"{number(low, 2)} to {number(high, 2)}"
+    parts = [
+        f"{experiment.name}: {row.title}",
+        f"{row.axis} axis",
+        f"control for {experiment.control_for}" if experiment.control_for else "",
+        f"against the {experiment.against.replace('-', ' ')}",
+        f"margin {margin}",
+        f"in {row.unit}" if row.unit else "",
+        f"numbers in units of {10.0**-power:.{power}f}" if power else "",
+    ]
+    head = "; ".join(part for part in parts if part)
+    lines = [_line(same, scale, digits) for _, same in rows.groupby("depth", dropna=False)]
+    return [replace(lines[0], head=head), *lines[1:]]
 
 
-def _line(key: str, rows: pd.DataFrame, head: str) -> Row:
+def _line(rows: pd.DataFrame, scale: float, digits: int) -> Row:
     first, several = rows.iloc[0], len(rows) > 1
-    mean = rows[["measured", "ideal", "noise_model"]].mean()
-    digits = decimals_for(rows["std_error"].median())
-    widest = rows.loc[rows["difference"].abs().idxmax()] if rows["difference"].notna().any() else first
-    used = int(np.nan_to_num(rows["instances"].min()))
-    planned = int(np.nan_to_num(first["instances_planned"]))
+    used, planned = _count(rows["instances"].min()), _count(first["instances_planned"])
+    mean = rows[["measured", "ideal", "noise_model"]].mean() * scale
     if several:
         by = counts(rows)
         mark = next(name for name in _WORST_FIRST if by[name])
-        said = "; ".join(f"{count} {finding_text(name)}" for name, count in by.items() if count)
-        measured = f"{fixed(mean['measured'], digits)} (mean)"
-        difference = f"{fixed(widest['difference'], digits)} (largest)"
+        said = f"{len(rows)} regions: " + "; ".join(
+            f"{count} {finding_text(name)}" for name, count in by.items() if count
+        )
+        widest = rows["difference"].abs().idxmax() if rows["difference"].notna().any() else rows.index[0]
+        measured = _with(fixed(mean["measured"], digits), "mean")
+        difference = _with(fixed(rows.loc[widest, "difference"] * scale, digits), "largest")
     else:
         mark = str(first["finding"])
-        note = f" ({first['note']})" if first["note"] else ""
-        said = finding_text(mark, str(first["direction"])) + note
-        measured = f"{fixed(first['measured'], digits)} {interval(first['ci_low'], first['ci_high'], digits)}"
-        bounds = interval(first["diff_ci_low"], first["diff_ci_high"], digits)
-        difference = f"{fixed(first['difference'], digits)} {bounds}"
-    row = signature(key)
-    unit = f" / {row.unit}" if row.unit else ""
+        said = finding_text(mark, str(first["direction"])) + (f": {first['note']}" if first["note"] else "")
+        ends = first[["ci_low", "ci_high", "diff_ci_low", "diff_ci_high"]].astype(float) * scale
+        measured = _with(fixed(mean["measured"], digits), interval(ends["ci_low"], ends["ci_high"], digits))
+        bounds = interval(ends["diff_ci_low"], ends["diff_ci_high"], digits)
+        difference = _with(fixed(first["difference"] * scale, digits), bounds)
     return Row(
-        head=head,
         mark=mark,
         cells=(
-            f"{row.title}{unit}, {row.axis}" + (f", {len(rows)} regions" if several else ""),
             f"{first['depth']:g}" if np.isfinite(first["depth"]) else MISSING,
             str(used) if used == planned else f"{used} of {planned}",
-            _tidy(measured),
+            measured,
             fixed(mean["ideal"], digits),
             fixed(mean["noise_model"], digits),
-            _tidy(difference),
-            number(rows["margin"].min(), 2),
+            difference,
             said,
         ),
     )
 
 
-def _tidy(text: str) -> str:
-    return MISSING if text.startswith(MISSING) else text
+def _count(value: float) -> int:
+    return int(value) if np.isfinite(value) else 0
+
+
+def _with(value: str, more: str) -> str:
+    return value if MISSING in (value, more) else f"{value} {more}"
 
 
 def departures(source: Source) -> Table:
@@ -133,7 +139,9 @@ def departures(source: Source) -> Table:
         for _, row in rows.head(MOST_DEPARTURES).iterrows()
     ]
     left = len(rows) - len(lines)
-    title = "Single regions that depart" + (f" (the {MOST_DEPARTURES} largest; {left} more in comparison.csv)" if left else "")
+    title = "Single regions that depart" + (
+        f" (the {MOST_DEPARTURES} largest; {left} more in comparison.csv)" if left else ""
+    )
     columns = "experiment, signature, region, depth>, measured>, noise model>, difference>, u>, finding"
     return table("departures", title, columns, lines, rows)
 
@@ -151,35 +159,37 @@ def region_text(source: Source, experiment: str, region: str) -> str:
     return ", ".join(parts)
 
 
-def disagreements(source: Source) -> list[Disagreement]:
-    """What departs, one statement a signature of an experiment, controls included."""
-    found = []
+def disagreements(source: Source) -> Table:
+    """What departs, one line a signature of an experiment, controls included."""
+    lines: list[Row] = []
     for experiment in source.campaign.experiments:
         for key in source.signatures(experiment.name):
             rows = source.compared(experiment.name, key)
-            off = rows[rows["finding"] == "departs"]
-            if len(off):
-                found.append(_disagreement(source, experiment.name, key, rows, off))
-    return found
+            if (rows["finding"] == "departs").any():
+                lines.append(_disagreement(source, experiment, key, rows))
+    columns = "experiment, signature, rows>, where, strongest difference ± u>, at, finding"
+    return table("disagreements", "Departures from the prediction tested against", columns, lines)
 
 
-def _disagreement(source: Source, name: str, key: str, rows: pd.DataFrame, off: pd.DataFrame) -> Disagreement:
-    experiment = source.campaign.experiment(name)
+def _disagreement(source: Source, experiment: Experiment, key: str, rows: pd.DataFrame) -> Row:
+    off = rows[rows["finding"] == "departs"]
     tested = int((rows["finding"] != "not-tested").sum())
-    depths = [int(depth) for depth in off["depth"].dropna()]
-    at = f" at depth {ranges(depths)}" if depths else ""
+    depths = off["depth"].dropna()
     worst = off.loc[(off["difference"] / off["u_combined"]).abs().idxmax()]
-    where = f", {region_text(source, name, worst['region'])}" if worst["region"] else ""
-    where += f" at depth {worst['depth']:g}" if np.isfinite(worst["depth"]) else ""
-    said = "/".join(sorted({text for text in off["direction"] if text}))
     digits = decimals_for(worst["u_combined"])
-    qubits: set[int] = set()
-    for region in off["region"]:
-        setting = read_setting(region) if "=" in region else {}
-        qubits |= {experiment.qubits[int(setting["probe"])]} if setting.get("probe", "").isdigit() else set()
-    text = (
-        f"{signature(key).title} departs from the {experiment.against.replace('-', ' ')}{at}"
-        f"{f' ({said})' if said else ''}: {whole(len(off))} of {whole(tested)} rows tested; "
-        f"strongest {fixed(worst['difference'], digits)} ± {fixed(worst['u_combined'], digits)} (u){where}."
+    at = [
+        f"depth {worst['depth']:g}" if np.isfinite(worst["depth"]) else "",
+        region_text(source, experiment.name, worst["region"]),
+    ]
+    return Row(
+        mark="departs",
+        cells=(
+            experiment.name,
+            signature(key).title,
+            f"{whole(len(off))} of {whole(tested)}",
+            depths_text(depths, experiment.depths) if len(depths) else "fit over all depths",
+            f"{fixed(worst['difference'], digits)} ± {fixed(worst['u_combined'], digits)}",
+            ", ".join(part for part in at if part) or MISSING,
+            finding_text("departs", "/".join(sorted({text for text in off["direction"] if text}))),
+        ),
     )
-    return Disagreement(experiment=name, signature=key, text=text, qubits=tuple(sorted(qubits)))

@@ -6,13 +6,13 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
-import pandas as pd
 from scipy.special import ndtri, stdtrit
 
 from rcbench.arrays import FloatArray
 from rcbench.report.source import Source
 
 FEWEST = 5  # below this many instances their scatter gives no interval
+MOST_MISSING = 0.2
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -84,19 +84,14 @@ def compared_curve(source: Source, experiment: str, signature: str) -> Curve:
 
 
 def by_instance(source: Source, experiment: str, signature: str, depth: float) -> tuple[FloatArray, FloatArray]:
-    """(value, std_error), each (instances, regions), repeats averaged; instances that lack a region are left out."""
+    """(value, std_error), each (instances, regions), repeats averaged; NaN where an instance gave no value."""
     rows = source.estimated(experiment, signature)
-    rows = rows[rows["depth"] == depth]
+    rows = rows[(rows["depth"] == depth) & rows["value"].notna()]
     if rows.empty:
         return np.zeros((0, 0)), np.zeros((0, 0))
-    square = rows.assign(variance=rows["std_error"] ** 2).groupby(["instance", "region"])
-    table = pd.DataFrame({
-        "value": square["value"].mean(),
-        "std_error": np.sqrt(square["variance"].sum()) / square["variance"].size(),
-    })  # fmt: skip
-    value = table["value"].unstack("region")
-    value = value.dropna()
-    error = table["std_error"].unstack("region").loc[value.index]
+    same = rows.assign(variance=rows["std_error"] ** 2).groupby(["instance", "region"])
+    value = same["value"].mean().unstack("region")
+    error = (np.sqrt(same["variance"].sum()) / same["variance"].size()).unstack("region")
     return value.to_numpy(dtype=np.float64), error.to_numpy(dtype=np.float64)
 
 
@@ -108,28 +103,32 @@ def mean_over_regions(
     The distance is |mean over instances - from_value|, averaged over regions. Its error is the jackknife over whole
     instances (Efron and Stein, Ann. Stat. 9, 586 (1981)) with Student's t, since the regions of one instance share
     circuits and shots. With fewer than FEWEST instances there is no scatter to use; the band is then the shot noise,
-    added over regions as if it were common to all.
+    added over regions as if it were common to all. A depth at which some region lacks more than MOST_MISSING of its
+    instances is left out: the ones that remain are a selection.
 
     Returns:
         The curve, and whether its band rests on the scatter between instances at every depth.
     """
     points: list[tuple[float, float, float, float]] = []
     from_scatter = True
+    confidence = source.campaign.confidence
     for depth in sorted(source.estimated(experiment, signature)["depth"].dropna().unique()):
         value, error = by_instance(source, experiment, signature, depth)
-        count = len(value)
-        if count == 0:
+        there = np.isfinite(value)
+        if value.size == 0 or there.mean(axis=0).min() < 1 - MOST_MISSING:
             continue
-        centre = _mean_distance(value.mean(axis=0), from_value)
-        if count >= FEWEST:
-            left_out = (value.sum(axis=0) - value) / (count - 1)
+        total, number = np.nansum(value, axis=0), there.sum(axis=0)
+        centre = _mean_distance(total / number, from_value)
+        count = len(value)
+        if number.min() >= FEWEST:
+            left_out = (total - np.nan_to_num(value)) / (number - there)
             each = np.array([_mean_distance(row, from_value) for row in left_out])
             spread = math.sqrt((count - 1) / count * float(((each - each.mean()) ** 2).sum()))
-            half = float(stdtrit(count - 1, 0.5 + source.campaign.confidence / 2)) * spread
+            half = float(stdtrit(count - 1, 0.5 + confidence / 2)) * spread
         else:
             from_scatter = False
-            shot = np.sqrt((error**2).sum(axis=0)) / count
-            half = float(ndtri(0.5 + source.campaign.confidence / 2)) * float(shot.mean())
+            shot = np.sqrt(np.nansum(error**2, axis=0)) / number
+            half = float(ndtri(0.5 + confidence / 2)) * float(shot.mean())
         points.append((depth, centre, centre - half, centre + half))
     return curve(*(list(column) for column in zip(*points, strict=True)) if points else ([], [], [], [])), from_scatter
 

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from rcbench.report.printed import MISSING, duration, ranges, whole
+from rcbench.report.printed import MISSING, depths_text, duration, whole
 from rcbench.report.source import NOT_STATED, Source
 from rcbench.report.table import Row, Table, finding_text, table
 
@@ -41,9 +41,7 @@ def usage_table(source: Source) -> Table:
                 )
             )
         )
-    columns = (
-        "experiment, circuits asked>, shots asked>, instances x depths planned>, returned>, used>, depths with fewer than planned"
-    )
+    columns = "experiment, circuits asked>, shots asked>, instances x depths planned>, returned>, used>, depths with fewer than planned"
     return table("data", "Asked, returned and used", columns, rows)
 
 
@@ -103,19 +101,20 @@ def deviations(source: Source) -> list[str]:
             ("used", rows[rows["instances"] < rows["instances_returned"]]),
         ):
             if len(short):
-                depths = ranges([int(depth) for depth in short["depth"]])
+                at = depths_text(short["depth"], experiment.depths)
                 source_of = "planned" if what == "returned" else "returned"
-                found.append(f"{experiment.name}: fewer instances {what} than {source_of} at depth {depths}.")
+                found.append(f"{experiment.name}: fewer instances {what} than {source_of} at {at}.")
         for kind, part in rows.groupby("interval_kind"):
             if "shot" in str(kind):
-                depths = ranges([int(depth) for depth in part["depth"]])
-                found.append(f"{experiment.name}: intervals at depth {depths} are of the kind {kind!r}.")
-    return found + _notes(frame)
+                at = depths_text(part["depth"], experiment.depths)
+                found.append(f"{experiment.name}: intervals at {at} are of the kind {kind!r}.")
+    return found + _notes(source)
 
 
-def _notes(frame: pd.DataFrame) -> list[str]:
+def _notes(source: Source) -> list[str]:
     """Why rows have no finding of their own; notes that differ in numbers only count as one. What more data would
     settle is said in the comparison table."""
+    frame = source.comparison
     rows = frame[[note != "" and not note.startswith("would be settled") for note in frame["note"]]]
     alike = rows["note"].astype(str).str.replace(_NUMBER, "#", regex=True)
     found = []
@@ -123,9 +122,11 @@ def _notes(frame: pd.DataFrame) -> list[str]:
         count = len(same)
         note = same["note"].iloc[0]
         as_in = " (as in one of them)" if same["note"].nunique() > 1 else ""
-        depths = [int(depth) for depth in same["depth"].dropna()]
-        at = f" at depth {ranges(depths)}" if depths else ""
-        found.append(f"{name}: {whole(count)} {'row' if count == 1 else 'rows'} {finding_text(finding)}{at}: {note}{as_in}.")
+        depths = same["depth"].dropna()
+        at = f" at {depths_text(depths, source.campaign.experiment(name).depths)}" if len(depths) else ""
+        found.append(
+            f"{name}: {whole(count)} {'row' if count == 1 else 'rows'} {finding_text(finding)}{at}: {note}{as_in}."
+        )
     return found
 
 

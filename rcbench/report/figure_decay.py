@@ -14,9 +14,13 @@ from matplotlib.lines import Line2D
 from rcbench.campaign import Experiment
 from rcbench.report import figures as look
 from rcbench.report.curves import mean_over_regions
+from rcbench.report.printed import number, small_power
 from rcbench.report.source import Source
 from rcbench.signatures.registry import signature
 
+_SCALED = (
+    "measured", "ci_low", "ci_high", "ideal", "noise_model", "null_value", "difference", "diff_ci_low", "diff_ci_high", "margin",
+)  # fmt: skip
 MOST_POINTS = 500  # in the instance panel; beyond, regions are averaged
 
 
@@ -27,66 +31,78 @@ def decay_figure(source: Source, experiment: Experiment, key: str, folder: Path)
     if rows["measured"].isna().all():
         return None
     title = signature(key).title
+    power = small_power(float(rows[["measured", "noise_model", "ideal"]].abs().max(axis=None)))
+    scale = 10.0**power
+    words = _words(source, experiment, key, rows)
+    rows = rows.assign(**{column: rows[column] * scale for column in _SCALED})
     # a depth with no data still gets its place, and a mark
     with look.style():
-        figure = Figure(figsize=(look.WIDE, 3.3), layout="constrained")
-        grid = figure.add_gridspec(2, 2, width_ratios=(1.6, 1), height_ratios=(2.0, 1))
+        figure = Figure(figsize=(look.WIDE, 3.3))
+        # places fixed by hand: to have them found takes longer than to draw
+        grid = figure.add_gridspec(
+            2, 2, left=0.115, right=0.9, bottom=0.135, top=0.915, wspace=0.3, hspace=0.28, width_ratios=(1.55, 1),
+            height_ratios=(2.1, 1),
+        )  # fmt: skip
         top = figure.add_subplot(grid[0, 0])
         below = figure.add_subplot(grid[1, 0], sharex=top)
         side = figure.add_subplot(grid[:, 1])
-        _curves(top, source, experiment, key, rows)
-        _residuals(below, source, experiment, rows)
-        _instances(side, source, experiment, key)
+        _curves(top, source, experiment, key, rows, scale)
+        _residuals(below, experiment, rows)
+        _instances(side, source, experiment, key, scale)
         regions = rows["region"].nunique()
-        name = textwrap.fill(title, 22)
+        name = textwrap.fill(title, 22) + (f" / {10.0**-power:.{power}f}" if power else "")
         top.set_ylabel(name if regions == 1 else f"{name}\nmean of {regions} regions")
         top.tick_params(labelbottom=False)
         below.set_xlabel("depth (layers of two-qubit gates, one way)")
-        figure.align_ylabels([top, below])
+        top.yaxis.set_label_coords(-0.14, 0.5)
+        below.yaxis.set_label_coords(-0.14, 0.5)
         handles, labels = top.get_legend_handles_labels()
         order = sorted(range(len(labels)), key=lambda at: labels[at] != "measured")
         figure.legend(
-            [handles[at] for at in order], [labels[at] for at in order], loc="outside upper left", ncols=6,
-            columnspacing=1.4, handlelength=2.6, borderaxespad=0.1,
+            [handles[at] for at in order], [labels[at] for at in order], loc="upper left", ncols=6,
+            bbox_to_anchor=(0.0, 1.0), columnspacing=1.4, handlelength=2.6, borderaxespad=0.1,
         )  # fmt: skip
-        return look.finish(figure, folder, f"{experiment.name}-{key}", *_words(source, experiment, key, rows))
+        return look.finish(figure, folder, f"{experiment.name}-{key}", *words)
 
 
 def _words(source: Source, experiment: Experiment, key: str, rows: pd.DataFrame) -> tuple[str, str]:
     title, against = signature(key).title, experiment.against.replace("-", " ")
     counts = rows["finding"].value_counts()
-    said = ", ".join(f"{counts[name]} {name}" for name in look.FINDING_MARKERS if name in counts)
+    said = ", ".join(f"{name.replace('-', ' ')} {counts[name]}" for name in look.FINDING_MARKERS if name in counts)
     level = f"{100 * source.campaign.confidence:g} %"
     caption = (
         f"{title} of {experiment.name}. Top: measured with {level} intervals, ideal, and noise model with twice the "
         f"standard uncertainty of the stated rates. Below: measured minus {against}, paired by circuit, with the margin. "
-        f"Right: measured against {against}, one point an instance. Rows: {said}."
+        f"Right: measured against {against}, one point an instance. Findings: {said}."
     )
     by_depth = rows.groupby("depth")[["measured", "noise_model"]].mean()
     points = "; ".join(
-        f"depth {depth:g}: {row['measured']:.3f}"
-        + (f" against {row['noise_model']:.3f}" if np.isfinite(row["noise_model"]) else "")
+        f"depth {depth:g}: {number(row['measured'])}"
+        + (f" against {number(row['noise_model'])}" if np.isfinite(row["noise_model"]) else "")
         for depth, row in by_depth.iterrows()
         if np.isfinite(row["measured"])
     )
     return caption, f"{title} against depth, measured against noise model. {points}."
 
 
-def _curves(axes: Axes, source: Source, experiment: Experiment, key: str, rows: pd.DataFrame) -> None:
+def _curves(axes: Axes, source: Source, experiment: Experiment, key: str, rows: pd.DataFrame, scale: float) -> None:
     mean = rows.groupby("depth")[["measured", "ci_low", "ci_high", "ideal", "noise_model", "null_value"]].mean()
     if rows["region"].nunique() > 1:
         points, _ = mean_over_regions(source, experiment.name, key)
         mean = mean.drop(columns=["measured", "ci_low", "ci_high"]).join(
             pd.DataFrame(
-                {"measured": points.value, "ci_low": points.low, "ci_high": points.high}, index=points.depth
+                {"measured": points.value * scale, "ci_low": points.low * scale, "ci_high": points.high * scale},
+                index=points.depth,
             ).rename_axis("depth"),
             how="left",
         )
         spread = rows.groupby("depth")["measured"].agg(["min", "max"])
-        axes.vlines(spread.index, spread["min"], spread["max"], color="#BDBDBD", linewidth=4, zorder=1, label="all regions")
+        axes.vlines(
+            spread.index, spread["min"], spread["max"], color="#BDBDBD", linewidth=4, zorder=1, label="all regions"
+        )
     depth = mean.index.to_numpy(dtype=float)
     log = _is_decay(key, mean)
-    band = 2 * _rate_uncertainty(source, experiment, key, depth)
+    band = 2 * scale * _rate_uncertainty(source, experiment, key, depth)
     low = mean["noise_model"].to_numpy() - band
     if log:
         low = np.maximum(low, look.log_axis(axes, mean[["measured", "noise_model", "ideal", "ci_high"]]))
@@ -126,11 +142,18 @@ def _rate_uncertainty(source: Source, experiment: Experiment, key: str, depth: n
     return by_depth.reindex(depth).fillna(0.0).to_numpy(dtype=float)
 
 
-def _residuals(axes: Axes, source: Source, experiment: Experiment, rows: pd.DataFrame) -> None:
+def _residuals(axes: Axes, experiment: Experiment, rows: pd.DataFrame) -> None:
     margin = rows.groupby("depth")["margin"].min().dropna()
     if len(margin):
         axes.fill_between(
-            margin.index, -margin, margin, facecolor="#F0F0F0", edgecolor="#A8A8A8", hatch="////", linewidth=0.5, zorder=0
+            margin.index,
+            -margin,
+            margin,
+            facecolor="#F0F0F0",
+            edgecolor="#A8A8A8",
+            hatch="////",
+            linewidth=0.5,
+            zorder=0,
         )
     axes.axhline(0, color=look.BLACK, linewidth=0.8, zorder=1)
     several = rows["region"].nunique() > 1
@@ -174,8 +197,9 @@ def instance_pairs(source: Source, experiment: Experiment, key: str) -> pd.DataF
     return pairs
 
 
-def _instances(axes: Axes, source: Source, experiment: Experiment, key: str) -> None:
+def _instances(axes: Axes, source: Source, experiment: Experiment, key: str, scale: float) -> None:
     pairs = instance_pairs(source, experiment, key)
+    pairs[["value", "predicted"]] *= scale
     axes.set_xlabel(f"predicted ({experiment.against.replace('-', ' ')})")
     axes.set_ylabel("measured")
     if pairs.empty:

@@ -11,11 +11,15 @@ import pandas as pd
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
+from rcbench.arrays import FloatArray
 from rcbench.campaign import Experiment
+from rcbench.circuits.schedule import dimer_layers
+from rcbench.randomness import Draw
+from rcbench.regions import read_setting
 from rcbench.report import figures as look
 from rcbench.report.curves import Curve, compared_curve, curve
 from rcbench.report.source import Group, Source
-from rcbench.report.spreading import anticoncentration, spread_curve
+from rcbench.report.spreading import anticoncentration, scrambled_value, spread_curve
 
 FAMILIES = ("brickwork", "product", "dimers")
 KEPT_KEYS = {"self_fidelity": "kept", "xeb_fidelity": "faithful, a bound from below"}
@@ -25,15 +29,18 @@ KEPT_KEYS = {"self_fidelity": "kept", "xeb_fidelity": "faithful, a bound from be
 class PathData:
     """The path of one group.
 
-    points: columns family, depth, spread, spread_low, spread_high, kept, kept_low, kept_high, axis. kept_key: the
-    signature on the upright axis. measured: whether spread was measured by OTOC; else computed from the circuits.
-    model: columns depth, spread, kept of the noise model, empty where it cannot be drawn. absent: why a control is missing.
+    points: columns family, depth, spread, spread_low, spread_high, kept, kept_low, kept_high, constructed (a control
+    without OTOCs, at the most that its circuits could spread). kept_key: the signature on the upright axis. measured:
+    whether spread was measured by OTOC; else computed from the circuits.
+    model: columns depth, spread, kept of the noise model; ideal: spread of the ideal circuits; both
+    empty where they cannot be drawn. absent: why a control is missing.
     """
 
     points: pd.DataFrame
     kept_key: str
     measured: bool
     model: pd.DataFrame
+    ideal: FloatArray
     absent: tuple[str, ...]
 
 
@@ -52,7 +59,11 @@ def path_data(source: Source, group: Group) -> PathData | None:
         return None
     frames, absent = [], []
     for family in families:
-        frame = _join(spread[family], kept[family])
+        bound = None
+        if measured and family != "brickwork" and len(spread[family]) == 0 and len(kept[family]):
+            bound = spread_bound(source, group, family)
+            spread[family] = _constant(kept[family], bound)
+        frame = _join(spread[family], kept[family]).assign(constructed=bound is not None)
         if frame.empty:
             what = "spread" if len(spread[family]) == 0 else "kept" if len(kept[family]) == 0 else "a common depth"
             absent.append(f"{family} has no place here: no data on {what}.")
@@ -60,7 +71,8 @@ def path_data(source: Source, group: Group) -> PathData | None:
     points = pd.concat(frames, ignore_index=True)
     if not (points["family"] == "brickwork").any():
         return None
-    return PathData(points, key, measured, _model_path(source, group, key) if measured else pd.DataFrame(), tuple(absent))
+    model, ideal = _model_path(source, group, key) if measured else (pd.DataFrame(), np.zeros(0))
+    return PathData(points, key, measured, model, ideal, tuple(absent))
 
 
 def _spread_of(source: Source, members: tuple[Experiment, ...]) -> Curve:
@@ -73,7 +85,9 @@ def _computed_spread(source: Source, members: tuple[Experiment, ...]) -> Curve:
     for experiment in members:
         points = anticoncentration(source, experiment)
         if len(points):
-            ratio = [np.minimum(1 / np.maximum(1 + edge, 1e-9), 1.0) for edge in (points.value, points.high, points.low)]
+            ratio = [
+                np.minimum(1 / np.maximum(1 + edge, 1e-9), 1.0) for edge in (points.value, points.high, points.low)
+            ]
             return Curve(points.depth, *ratio)
     return curve([], [], [], [])
 
@@ -81,6 +95,32 @@ def _computed_spread(source: Source, members: tuple[Experiment, ...]) -> Curve:
 def _kept_of(source: Source, members: tuple[Experiment, ...], key: str) -> Curve:
     found = [compared_curve(source, experiment.name, key) for experiment in members if _has(source, experiment, key)]
     return found[0] if found else curve([], [], [], [])
+
+
+def spread_bound(source: Source, group: Group, family: str) -> float:
+    """The most that a control can spread: the share of (butterfly, probe) pairs whose OTOC its circuits can change.
+
+    Without entangling gates that is a probe on the butterfly itself; with fixed partners, also one on its partner.
+    """
+    for experiment in group.experiments:
+        regions = source.compared(experiment.name, "otoc")["region"].unique()
+        pairs = [
+            (setting["butterfly"], setting["probe"]) for setting in map(read_setting, regions) if "probe" in setting
+        ]
+        if not pairs:
+            continue
+        partner: dict[str, str] = {}
+        if family == "dimers":
+            device, depth = source.campaign.device, max(experiment.depths)
+            for layer in dimer_layers(device, experiment.qubits, depth, Draw(source.campaign.seed, "partners")):
+                partner |= {str(a): str(b) for a, b in layer} | {str(b): str(a) for a, b in layer}
+        return sum(probe in (site, partner.get(site)) for site, probe in pairs) / len(pairs)
+    return 0.0
+
+
+def _constant(kept: Curve, bound: float) -> Curve:
+    there = np.full(len(kept), bound)
+    return Curve(kept.depth, there, np.zeros(len(kept)), there)
 
 
 def _has(source: Source, experiment: Experiment, key: str) -> bool:
@@ -96,17 +136,21 @@ def _join(spread: Curve, kept: Curve) -> pd.DataFrame:
     return frame(spread, "spread").merge(frame(kept, "kept"), on="depth", how="inner")
 
 
-def _model_path(source: Source, group: Group, key: str) -> pd.DataFrame:
-    """The noise model's own path, from the averaged predictions."""
-    spread = kept = pd.Series(dtype=float)
+def _model_path(source: Source, group: Group, key: str) -> tuple[pd.DataFrame, FloatArray]:
+    """The noise model's own path and the spread of the ideal circuits, by depth, from the averaged predictions."""
+    spread, kept = [], []
     for experiment in group.experiments:
-        otoc = source.predicted(experiment.name, "otoc", "noise-model")
-        if len(otoc) and spread.empty:
-            spread = 1 - otoc["value"].abs().groupby(otoc["depth"]).mean()
+        spread += [
+            1 - (rows["value"] - scrambled_value(experiment.n_qubits)).abs().groupby(rows["depth"]).mean()
+            for model in ("noise-model", "ideal")
+            if len(rows := source.predicted(experiment.name, "otoc", model))
+        ]
         fidelity = source.predicted(experiment.name, key, "noise-model")
-        if len(fidelity) and kept.empty:
-            kept = fidelity.groupby("depth")["value"].mean()
-    return pd.DataFrame({"spread": spread, "kept": kept}).dropna().rename_axis("depth").reset_index()
+        kept += [fidelity.groupby("depth")["value"].mean()] if len(fidelity) else []
+    if len(spread) < 2 or not kept:
+        return pd.DataFrame(), np.zeros(0)
+    path = pd.DataFrame({"spread": spread[0], "kept": kept[0]}).dropna().rename_axis("depth").reset_index()
+    return path, spread[1].to_numpy(dtype=float)
 
 
 def path_figure(source: Source, data: PathData, threshold: float, folder: Path, name: str) -> look.Picture:
@@ -118,6 +162,8 @@ def path_figure(source: Source, data: PathData, threshold: float, folder: Path, 
         axes.axhline(0, color=look.GREY, linewidth=0.6)
         if len(data.model):
             axes.plot(data.model["spread"], data.model["kept"], label="noise model", zorder=2, **look.NOISE_MODEL)
+        if len(data.ideal):
+            axes.plot(data.ideal, np.ones(len(data.ideal)), label="ideal", zorder=2, **look.IDEAL)
         for family in FAMILIES:
             part = data.points[data.points["family"] == family].sort_values("depth")
             if len(part):
@@ -130,23 +176,51 @@ def path_figure(source: Source, data: PathData, threshold: float, folder: Path, 
         axes.set_xlim(min(-0.06, float(data.points["spread"].min()) - 0.06), 1.12)
         top = max(1.08, float(data.points["kept"].max()) + 0.08)
         axes.set_ylim(min(-0.05, float(data.points["kept_low"].min()) - 0.02), top)
-        axes.annotate("not spread, kept", (0.005, 0.985), xycoords="axes fraction", va="top", color=look.GREY, style="italic")
-        axes.annotate("spread and kept", (0.995, 0.985), xycoords="axes fraction", va="top", ha="right", color=look.GREY, style="italic")
-        axes.annotate("spread, lost", (0.995, 0.015), xycoords="axes fraction", ha="right", color=look.GREY, style="italic")
+        axes.annotate(
+            "not spread, kept", (0.005, 0.985), xycoords="axes fraction", va="top", color=look.GREY, style="italic"
+        )
+        axes.annotate(
+            "spread and kept",
+            (0.995, 0.985),
+            xycoords="axes fraction",
+            va="top",
+            ha="right",
+            color=look.GREY,
+            style="italic",
+        )
+        axes.annotate(
+            "spread, lost", (0.995, 0.015), xycoords="axes fraction", ha="right", color=look.GREY, style="italic"
+        )
         axes.annotate("not spread, lost", (0.005, 0.015), xycoords="axes fraction", color=look.GREY, style="italic")
         axes.annotate(f"p = {threshold:g}", (1.115, threshold), va="bottom", ha="right", color=look.GREY, fontsize=8)
-        axes.legend(loc="lower left", bbox_to_anchor=(0, 1.0), ncols=4, borderaxespad=0.2)
+        handles, labels = axes.get_legend_handles_labels()
+        order = sorted(range(len(labels)), key=lambda at: (labels[at] != "measured", "control" in labels[at]))
+        figure.legend(
+            [handles[at] for at in order],
+            [labels[at] for at in order],
+            loc="outside upper left",
+            ncols=3,
+            borderaxespad=0.2,
+        )
         return look.finish(figure, folder, name, *_words(data))
 
 
 def _trail(axes: Axes, part: pd.DataFrame, family: str) -> None:
-    kind: dict[str, Any] = {"color": look.BLACK, "marker": "o"} if family == "brickwork" else dict(look.CONTROLS[family])
+    kind: dict[str, Any] = (
+        {"color": look.BLACK, "marker": "o"} if family == "brickwork" else dict(look.CONTROLS[family])
+    )
     errors = [
-        np.abs(np.vstack([part[key] - part[f"{key}_low"], part[f"{key}_high"] - part[key]])) for key in ("spread", "kept")
+        np.abs(np.vstack([part[key] - part[f"{key}_low"], part[f"{key}_high"] - part[key]]))
+        for key in ("spread", "kept")
     ]
     label = "measured" if family == "brickwork" else f"control: {family}"
+    if part["constructed"].any():
+        label += " (spread at most, by construction)"
+    constructed = bool(part["constructed"].any())
+    if constructed:
+        kind["markerfacecolor"] = "white"
     axes.errorbar(
-        part["spread"], part["kept"], xerr=errors[0], yerr=errors[1], linestyle="-" if family == "brickwork" else ":",
+        part["spread"], part["kept"], xerr=None if constructed else errors[0], yerr=errors[1], linestyle="-" if family == "brickwork" else ":",
         linewidth=1.0, elinewidth=0.8, capsize=2, label=label, zorder=4, markersize=5.5, **kind,
     )  # fmt: skip
     for at, row in enumerate(part.itertuples()):
@@ -157,7 +231,7 @@ def _trail(axes: Axes, part: pd.DataFrame, family: str) -> None:
         axes.annotate(
             f"{row.depth:g}", (row.spread, row.kept), xytext=offset, textcoords="offset points", fontsize=8,
             ha="right" if family == "brickwork" else "left", va="top" if family == "brickwork" else "center",
-            color=kind["color"], weight="bold" if family == "brickwork" else "normal",
+            weight="bold" if family == "brickwork" else "normal",
         )  # fmt: skip
 
 
@@ -174,4 +248,6 @@ def _words(data: PathData) -> tuple[str, str]:
         what += " No OTOC was measured: spread is computed from the circuits, so the device moves a point down only."
     if data.kept_key != "self_fidelity":
         what += " The upright axis is the cross-entropy fidelity, which bounds what is kept from below."
+    if data.points["constructed"].any():
+        what += " Open markers: no OTOC was measured, so the control stands at the most that its circuits can spread."
     return " ".join([what, *data.absent]), "Spread against kept. " + "; ".join(parts) + "."

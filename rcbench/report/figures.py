@@ -18,6 +18,8 @@ import numpy as np
 import pandas as pd
 import seaborn as sns
 from matplotlib.axes import Axes
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.backends.backend_svg import FigureCanvasSVG
 from matplotlib.figure import Figure
 from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 
@@ -115,13 +117,15 @@ def log_axis(axes: Axes, values: pd.DataFrame) -> float:
 def finish(figure: Figure, folder: Path, name: str, caption: str, alt: str) -> Picture:
     """Write a figure as SVG and PNG without dates or versions, and give it for the page."""
     sns.despine(figure)
-    figure.draw_without_rendering()  # lays it out once
-    figure.set_layout_engine("none")  # and not again for each file
-    drawn = io.BytesIO()
-    figure.savefig(drawn, format="svg", metadata={"Date": None, "Creator": None})
+    engine = figure.get_layout_engine()
+    if engine is not None:
+        engine.execute(figure)  # once; savefig would lay it out and draw it again for each file
+        figure.set_layout_engine("none")
+    drawn, painted = io.BytesIO(), io.BytesIO()
+    FigureCanvasSVG(figure).print_svg(drawn, metadata={"Date": None, "Creator": None})
     write_bytes(folder / f"{name}.svg", drawn.getvalue())
-    painted = io.BytesIO()
-    figure.savefig(painted, format="png", dpi=DPI, metadata={"Software": None})
+    figure.set_dpi(DPI)
+    FigureCanvasAgg(figure).print_png(painted, metadata={"Software": None})
     write_bytes(folder / f"{name}.png", painted.getvalue())
     text = _COMMENTS.sub("", _PREAMBLE.sub("", drawn.getvalue().decode("utf-8"), count=1))
     return Picture(name, _SIZE.sub(r"\1", text, count=2), caption, alt)

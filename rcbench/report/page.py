@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import re
 from collections.abc import Mapping
-from pathlib import Path
 from typing import Any
 
 import jinja2
@@ -81,8 +80,3 @@ def _finalize(escape: Any) -> Any:
 def inline(svg: str) -> Markup:
     """A figure's own SVG, which needs no escaping: matplotlib has escaped its text."""
     return Markup(svg)
-
-
-def layouts() -> Path:
-    """The folder of layouts."""
-    return shipped("reports")

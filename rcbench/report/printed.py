@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 
 MISSING = "–"
 MINUS = "−"
@@ -55,6 +56,13 @@ def whole(value: object) -> str:
     return f"{round(float(value)):,}".replace(",", "\u202f").replace("-", MINUS)  # type: ignore[arg-type]
 
 
+def small_power(largest: object) -> int:
+    """The power of ten, a multiple of three, in which quantities no larger than `largest` are shown; 0 from 0.05 up."""
+    if not is_number(largest) or not 0 < float(largest) < 0.05:  # type: ignore[arg-type]
+        return 0
+    return 3 * math.ceil(-math.log10(float(largest)) / 3)  # type: ignore[arg-type]
+
+
 def duration(seconds: object) -> str:
     """A time in the unit that suits it."""
     if not is_number(seconds):
@@ -71,12 +79,21 @@ def percent(level: float) -> str:
     return f"{100 * level:g} %"
 
 
-def ranges(values: list[int]) -> str:
-    """Whole numbers as ranges where they are neighbours in steps of one: ``2, 4, 6-9``."""
+def depths_text(depths: Iterable[float], tested: Iterable[float]) -> str:
+    """Depths as runs of neighbours among those tested: ``depth 2``, ``depths 4 to 10 and 16``."""
+    order = sorted(set(tested) | set(depths))
+    places = sorted({order.index(depth) for depth in depths})
     runs: list[list[int]] = []
-    for value in sorted(set(values)):
-        if runs and value == runs[-1][-1] + 1:
-            runs[-1].append(value)
+    for place in places:
+        if runs and place == runs[-1][-1] + 1:
+            runs[-1].append(place)
         else:
-            runs.append([value])
-    return ", ".join(str(r[0]) if len(r) == 1 else f"{r[0]}, {r[1]}" if len(r) == 2 else f"{r[0]}–{r[-1]}" for r in runs)
+            runs.append([place])
+    parts: list[str] = []
+    for run in runs:
+        if len(run) < 3:
+            parts += [f"{order[place]:g}" for place in run]
+        else:
+            parts.append(f"{order[run[0]]:g} to {order[run[-1]]:g}")
+    listed = parts[0] if len(parts) == 1 else f"{', '.join(parts[:-1])} and {parts[-1]}" if parts else MISSING
+    return f"depth{'s' if len(places) > 1 else ''} {listed}"

@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Mapping
+from collections.abc import Hashable, Mapping
 from dataclasses import dataclass, field
+from functools import cached_property
 from pathlib import Path
 from typing import Any
 
@@ -23,7 +24,7 @@ _TEXT = frozenset({
 NOT_STATED = "not stated"
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, kw_only=True)
 class Source:
     """A compared campaign: the resolved campaign, its tables, the audit of the shots and where all came from."""
 
@@ -35,24 +36,33 @@ class Source:
     audit: Mapping[str, Any] = field(default_factory=dict)
     provenance: Mapping[str, Any] = field(default_factory=dict)
 
+    # the tables are split once: a report asks for each signature of each experiment many times
+    @cached_property
+    def _compared(self) -> dict[Hashable, pd.DataFrame]:
+        rows = self.comparison.sort_values(["depth", "region"], kind="stable")
+        return dict(iter(rows.groupby(["experiment", "signature"])))
+
+    @cached_property
+    def _estimated(self) -> dict[Hashable, pd.DataFrame]:
+        return dict(iter(self.estimates.groupby(["experiment", "signature"])))
+
+    @cached_property
+    def _predicted(self) -> dict[Hashable, pd.DataFrame]:
+        rows = self.predictions.sort_values(["depth", "region"], kind="stable")
+        rows = rows.assign(single=rows["instance"].notna())
+        return dict(iter(rows.groupby(["experiment", "signature", "model", "single"])))
+
     def compared(self, experiment: str, signature: str) -> pd.DataFrame:
         """The comparison rows of one signature of one experiment, by depth and region."""
-        frame = self.comparison
-        rows = frame[(frame["experiment"] == experiment) & (frame["signature"] == signature)]
-        return rows.sort_values(["depth", "region"], kind="stable")
+        return self._compared.get((experiment, signature), self.comparison.iloc[:0])
 
     def estimated(self, experiment: str, signature: str) -> pd.DataFrame:
         """The estimates of one signature of one experiment, one row an instance, region, depth and repeat."""
-        frame = self.estimates
-        return frame[(frame["experiment"] == experiment) & (frame["signature"] == signature)]
+        return self._estimated.get((experiment, signature), self.estimates.iloc[:0])
 
     def predicted(self, experiment: str, signature: str, model: str, *, by_instance: bool = False) -> pd.DataFrame:
-        """The predictions of one model, of single instances or averaged over them."""
-        frame = self.predictions
-        rows = frame[
-            (frame["experiment"] == experiment) & (frame["signature"] == signature) & (frame["model"] == model)
-        ]
-        return rows[rows["instance"].notna() == by_instance].sort_values(["depth", "region"], kind="stable")
+        """The predictions of one model, of single instances or averaged over them, by depth and region."""
+        return self._predicted.get((experiment, signature, model, by_instance), self.predictions.iloc[:0])
 
     def signatures(self, experiment: str) -> list[str]:
         """The signatures that the comparison holds for an experiment, in the order of its rows."""

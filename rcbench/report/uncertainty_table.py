@@ -69,7 +69,9 @@ def between_runs(estimates: pd.DataFrame) -> float:
     keys = ["depth", "instance", "region"]
     rows = estimates.dropna(subset=["value"])
     groups = rows.assign(shot=rows["std_error"] ** 2).groupby(keys)
-    table = pd.DataFrame({"count": groups["value"].size(), "variance": groups["value"].var(ddof=1), "shot": groups["shot"].mean()})
+    table = pd.DataFrame(
+        {"count": groups["value"].size(), "variance": groups["value"].var(ddof=1), "shot": groups["shot"].mean()}
+    )
     table = table[table["count"] > 1]
     if table.empty:
         return math.nan

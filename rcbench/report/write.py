@@ -8,7 +8,7 @@ from typing import Any
 
 from rcbench.campaign import Experiment
 from rcbench.files import write_text
-from rcbench.report.bottom_line import DISCLAIMER, KEPT_ABOVE, LIMITS, RULE, BottomLine, bottom_lines
+from rcbench.report.bottom_line import BottomLine, bottom_lines
 from rcbench.report.campaign_table import experiments_table, facts, margins_table, rule_fixed
 from rcbench.report.comparison_table import (
     comparison_table,
@@ -22,6 +22,7 @@ from rcbench.report.device_table import device_facts, device_table
 from rcbench.report.locate import suspects
 from rcbench.report.printed import fixed, whole
 from rcbench.report.page import inline, render
+from rcbench.report.rule import DISCLAIMER, KEPT_ABOVE, LIMITS, RULE
 from rcbench.report.source import Source, groups, read_source
 from rcbench.report.table import SIGNS, Row, Table, finding_text, table
 from rcbench.report.uncertainty_table import uncertainty_table
@@ -79,7 +80,7 @@ def report_context(source: Source, figures: Path) -> dict[str, Any]:
     pictures, path_tables = _paths(source, lines, figures)
     sections = [_section(source, experiment, figures) for experiment in source.campaign.experiments]
     tables = [
-        experiments_table(source), margins_table(source), comparison_table(source), departures(source),
+        disagreements(source), experiments_table(source), margins_table(source), comparison_table(source), departures(source),
         usage_table(source), uncertainty_table(source), device_table(source), *path_tables,
         *(section.fits for section in sections if section.fits is not None),
     ]  # fmt: skip
@@ -94,7 +95,6 @@ def report_context(source: Source, figures: Path) -> dict[str, Any]:
         "threshold": KEPT_ABOVE,
         "counts": counts(source.comparison),
         "signs": SIGNS,
-        "disagreements": disagreements(source),
         "suspects": _suspects(source),
         "rule_fixed": rule_fixed(source),
         "facts": facts(source),

@@ -97,7 +97,8 @@ def _dictionary(column: Any) -> tuple[list[str], IntArray]:
     if not hasattr(column, "dictionary"):
         column = _plain_text(column).dictionary_encode()
     words: dict[str, int] = {}
-    places = [words.setdefault(str(_plain(v) or "").strip(), len(words)) for v in column.dictionary.to_pylist()]
+    values = [_plain(value) for value in column.dictionary.to_pylist()]
+    places = [words.setdefault("" if v is None else str(v).strip(), len(words)) for v in values]
     if column.null_count:
         places.append(words.setdefault("", len(words)))
         column = column.indices.fill_null(len(places) - 1)

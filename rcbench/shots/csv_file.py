@@ -17,7 +17,7 @@ from rcbench.arrays import IntArray
 from rcbench.errors import suggest
 from rcbench.shots.columns import COLUMNS, arrow_batch
 from rcbench.shots.records import BadRow, Batch, Irregular, Place, Text, times_utc, whole_counts, whole_repeats
-from rcbench.shots.sources import Source
+from rcbench.shots.sources import BROKEN, Source, one_line
 
 BLOCK = 1 << 20
 LONGEST_LINE = 1 << 20
@@ -83,7 +83,7 @@ def _fast(source: Source, names: list[str]) -> Iterator[Batch]:
             for table in reader:
                 columns = {name: table.column(name) for name in used}
                 yield arrow_batch(columns, strip=True, place=None)
-    except (pa.ArrowException, OSError, EOFError) as error:
+    except (pa.ArrowException, *BROKEN) as error:
         raise Irregular(str(error)) from None
 
 
@@ -97,8 +97,8 @@ def _lines(source: Source) -> Iterator[tuple[int, str]]:
                 if len(line) >= LONGEST_LINE:
                     raise source.error("line", f"more than {LONGEST_LINE} characters", "a shorter line", number)
                 yield number, line.rstrip("\n")
-        except (OSError, EOFError) as error:
-            raise source.error("compression", str(error), "a whole gzip file", number + 1) from None
+        except BROKEN as error:
+            raise source.error("compression", one_line(error), "a whole gzip file", number + 1) from None
 
 
 def _fields(line: str) -> list[str] | None:

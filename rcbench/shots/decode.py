@@ -38,6 +38,10 @@ class Reading:
         """The bit order in words."""
         return self.bit_order or "register map"
 
+    def fits(self, n_bits: int) -> bool:
+        """Whether circuits of n_bits classical bits can be read: a register map is of one number of bits."""
+        return self.bits is None or max(self.bits) + 1 == n_bits
+
     def n_characters(self, n_bits: int) -> int:
         """Characters that the bitstring of a circuit of n_bits classical bits has."""
         return n_bits if self.bits is None else len(self.bits)
@@ -46,8 +50,6 @@ class Reading:
         """Position of the character of each classical bit."""
         if self.bits is None:
             return slice(None) if self.bit_order == "q0-first" else slice(None, None, -1)
-        if sorted(b for b in self.bits if b >= 0) != list(range(n_bits)):
-            raise InputError("bits", list(self.bits), f"each classical bit 0 to {n_bits - 1} of the circuit once")
         return np.array([self.bits.index(bit) for bit in range(n_bits)], dtype=np.int64)
 
     def alphabet(self) -> str:

@@ -37,7 +37,7 @@ def of_completeness(frame: pd.DataFrame, shots: Shots) -> list[Problem]:
     for experiment, runs in frame.groupby("experiment", sort=False):
         for state, words, hint in (
             ("missing", "did not come back", _REBUILD),
-            ("short", "came back with fewer shots than asked for; they are used with the shots they have", ""),
+            ("short", "came back with fewer shots than asked for; they are used as they are", ""),
         ):
             ids = runs.loc[runs["state"] == state, "circuit_id"]
             if len(ids):

@@ -160,7 +160,9 @@ class _Rows:
         """Sums must stay exact in every table."""
         count = self.batch.count
         if count is not None:
-            self.part.shots += int(np.where(self.good, count, 0).astype(np.float64).sum())
+            good = np.where(self.good, count, 0)
+            rough = float(good.sum(dtype=np.float64))  # the whole sum may pass the end of int64
+            self.part.shots += int(good.sum()) if rough < 2**62 else int(rough)
             if self.part.shots > MAX_COUNT:
                 raise InputError("count", self.part.shots, f"at most {MAX_COUNT} shots in one file")
 
@@ -210,6 +212,10 @@ class _Rows:
 
     def _add(self, run: IntArray, which: BoolArray, n_bits: int) -> None:
         """Decode the rows of circuits of n_bits and add them to the tally."""
+        if not self.reading.fits(n_bits):
+            allowed = f"the register map of shots.toml; it is not for circuits of {n_bits} classical bits"
+            self._reject(which, "bitstring", allowed)
+            return
         width = self.reading.n_characters(n_bits)
         lengths = self.bits.lengths()
         allowed = f"{width} characters, {self.reading.alphabet()}"

@@ -12,7 +12,7 @@ from functools import cached_property
 import numpy as np
 
 from rcbench.shots.records import Batch, Place, Text, joined, whole_counts
-from rcbench.shots.sources import Source
+from rcbench.shots.sources import BROKEN, Source, one_line
 
 LARGEST = 1 << 28
 _SHAPE = "{circuit_id: {bitstring: count}}"
@@ -120,8 +120,8 @@ def _text(source: Source) -> str:
     try:
         with source.open() as file:
             data = file.read(LARGEST + 1)
-    except (OSError, EOFError) as error:
-        raise source.error("compression", str(error), "a whole gzip file") from None
+    except BROKEN as error:
+        raise source.error("compression", one_line(error), "a whole gzip file") from None
     if len(data) > LARGEST:
         raise source.error("size", f"more than {LARGEST >> 20} MiB", "a smaller JSON file, or CSV or Parquet")
     try:

@@ -2,18 +2,22 @@
 
 from __future__ import annotations
 
+import lzma
+import struct
 import zipfile
-import zlib
 from collections.abc import Iterator
 from typing import IO, Any
 
 import numpy as np
 
+from rcbench.errors import InputError
 from rcbench.shots.decode import ZERO
 from rcbench.shots.records import Batch, Place, Text, joined
-from rcbench.shots.sources import Source
+from rcbench.shots.sources import BROKEN, Source, one_line
 
 CELLS = 1 << 22
+# a damaged archive can name any way of compression, and give any of their errors
+_DAMAGED = (zipfile.BadZipFile, RuntimeError, ValueError, MemoryError, struct.error, lzma.LZMAError, *BROKEN)
 WIDEST = 1 << 16
 ILLEGAL = 127  # unprintable, so it cannot be a declared symbol
 _LARGEST_VALUE = 9  # one character: 0, 1 and the declared symbols 2 to 9
@@ -38,8 +42,10 @@ def _array_batches(source: Source) -> Iterator[Batch]:
             for name in names:
                 with archive.open(name) as member:
                     yield from _array(source, name.removesuffix(".npy"), member)
-    except (zipfile.BadZipFile, zlib.error, OSError, EOFError, NotImplementedError, RuntimeError) as error:
-        raise source.error("content", str(error), "a whole NPZ file, as numpy.savez writes it") from None
+    except InputError:
+        raise
+    except _DAMAGED as error:
+        raise source.error("content", one_line(error), "a whole NPZ file, as numpy.savez writes it") from None
 
 
 def _array(source: Source, circuit_id: str, member: IO[bytes]) -> Iterator[Batch]:
@@ -83,7 +89,7 @@ def _read_header(source: Source, circuit_id: str, member: IO[bytes]) -> tuple[tu
         read = {(1, 0): npy.read_array_header_1_0, (2, 0): npy.read_array_header_2_0}[version]
         return read(member)
     except (ValueError, KeyError, SyntaxError, RecursionError, MemoryError, TypeError) as error:
-        raise source.error(f"array {circuit_id!r}", str(error), "an array as numpy.savez writes it") from None
+        raise source.error(f"array {circuit_id!r}", one_line(error), "an array as numpy.savez writes it") from None
 
 
 def _batch(name: str, circuit_id: str, characters: Any, first: int) -> Batch:

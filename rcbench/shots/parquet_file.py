@@ -5,9 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import Any
 
+from rcbench.errors import InputError
 from rcbench.shots.columns import COLUMNS, arrow_batch
 from rcbench.shots.records import Batch, Place
-from rcbench.shots.sources import Source
+from rcbench.shots.sources import Source, one_line
 
 ROWS = 100_000
 
@@ -22,16 +23,20 @@ def batches(source: Source, exact: bool) -> Iterator[Batch]:
     import pyarrow.parquet as pq
 
     try:
-        # read as dictionaries: a circuit_id stands in thousands of rows
-        with pq.ParquetFile(str(source.path), read_dictionary=["circuit_id", "batch"]) as file:
-            used = _columns(source, file.schema_arrow)
+        with pq.ParquetFile(str(source.path)) as file:
+            used, footer = _columns(source, file.schema_arrow), file.metadata
+        # as a dictionary: a circuit_id stands in thousands of rows
+        with pq.ParquetFile(str(source.path), metadata=footer, read_dictionary=["circuit_id"]) as file:
             first = 1
             for table in file.iter_batches(batch_size=ROWS, columns=used):
+                table.validate(full=True)  # damaged pages can hold positions outside their dictionary
                 columns = {name: table.column(name) for name in used}
                 yield arrow_batch(columns, strip=False, place=_place(source.name, first))
                 first += table.num_rows
-    except (pa.ArrowException, OSError) as error:
-        raise source.error("content", str(error), "a whole Parquet file") from None
+    except InputError:
+        raise
+    except (pa.ArrowException, OSError, ValueError, KeyError, MemoryError) as error:  # a damaged footer can give any
+        raise source.error("content", one_line(error), "a whole Parquet file") from None
 
 
 def _place(name: str, first: int) -> Any:
@@ -59,8 +64,8 @@ def _columns(source: Source, schema: Any) -> list[str]:
     for name in ("circuit_id", "bitstring"):
         if name not in names:
             raise source.error("columns", ",".join(names), f"the column {name}: {', '.join(COLUMNS)}")
-    for name in ("circuit_id", "bitstring", "batch"):
-        if name in names and not is_text(schema.field(name).type):
+    for name in ("circuit_id", "bitstring"):
+        if not is_text(schema.field(name).type):
             raise source.error(name, str(schema.field(name).type), "a column of text: a number loses leading zeros")
     if others := [name for name in names if name not in COLUMNS]:
         source.notes.append(f"{source.name}: columns not read: {', '.join(map(repr, others))}")

@@ -80,6 +80,10 @@ class _Reading:
     def __init__(self, kit: Roster, declared: Declared, *, keep_all: bool) -> None:
         self.declared, self.keep_all = declared, keep_all
         self.runs = Runs(kit)
+        if not any(map(declared.reading.fits, self.runs.n_bits.tolist())):
+            n_bits = sorted(set(self.runs.n_bits.tolist()))
+            allowed = f"a map of every classical bit; circuits of this kit have {', '.join(map(str, n_bits))} bits"
+            raise InputError("bits", list(declared.reading.bits or ()), allowed, f"{SHOTS_FILE}: ")
         self.intake = Intake(self.runs, declared.reading, keep_all=keep_all)
         self.total = Part(Tally(self.runs.max_bits))
         self.files: list[ShotFile] = []

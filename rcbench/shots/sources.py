@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import gzip
 import hashlib
+import zlib
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import BinaryIO, cast
@@ -13,6 +14,7 @@ from rcbench.shots.declarations import EXECUTION_FILE, SHOTS_FILE
 
 FORMATS = {".csv": "csv_file", ".json": "json_file", ".npz": "npz_file", ".parquet": "parquet_file"}
 ENDINGS = ".csv, .csv.gz, .json, .json.gz, .npz, .parquet"
+BROKEN = (OSError, EOFError, zlib.error)  # what reading a damaged archive raises
 _PEEK = 1 << 16
 _MAGIC = {b"PAR1": "Parquet", b"PK\x03\x04": "a zip archive or NPZ", b"\x1f\x8b": "gzip", b"\x89HDF": "HDF5"}
 
@@ -63,8 +65,8 @@ class Source:
         try:
             with self.open() as file:
                 head = file.read(_PEEK)
-        except (OSError, EOFError) as error:
-            raise self.error("compression", str(error), "a whole gzip file") from None
+        except BROKEN as error:
+            raise self.error("compression", one_line(error), "a whole gzip file") from None
         allowed = f"text in UTF-8 ({ENDINGS} are read by their endings)"
         for magic, kind in _MAGIC.items():
             if head.startswith(magic):
@@ -76,6 +78,11 @@ class Source:
         if not head.strip():
             raise self.error("content", "an empty file", allowed)
         return head
+
+
+def one_line(error: BaseException) -> str:
+    """What a library says about a file, on one line."""
+    return " ".join(str(error).split())
 
 
 def list_sources(path: Path, skip_bad: Path | None) -> tuple[list[Source], list[str]]:

@@ -39,7 +39,7 @@ NAMED += [cirq.FSimGate(HALF, np.pi / 6), cirq.CZ**0.25, cirq.SWAP**0.5, cirq.XX
 
 
 def special_gates() -> np.ndarray:
-    """Named gates, and local gates around interactions at and close to every corner, edge and wall of the Weyl chamber."""
+    """Named gates; interactions at and close to every corner, edge and wall of the Weyl chamber, in local gates."""
     grid = np.array(list(np.ndindex(5, 5, 5))) * (np.pi / 8) - np.pi / 4
     points = np.concatenate([grid, grid * [1.1, 0.3, 0], grid * [0.9, 0.6, 0.3], grid * [0.9, 0.45, 0.45]])
     shifts = np.random.default_rng(4).normal(size=points.shape)
@@ -95,7 +95,7 @@ def test_sqrt_iswap_counts_equal_those_of_cirq():
 
 def test_two_sqrt_iswaps_serve_79_percent_of_haar_gates():
     """Huang et al., arXiv:2105.06074; 4 sigma of a binomial count."""
-    n = 20_000
+    n = 5_000
     count = decompose(unitary_group.rvs(4, size=n, random_state=6), "sqrt-iswap").count
     assert set(count.tolist()) == {2, 3}
     assert abs(np.mean(count == 2) - 0.79) < 4 * np.sqrt(0.79 * 0.21 / n) + 0.005  # published to two digits
@@ -200,8 +200,15 @@ def test_native_gates_that_do_not_serve_every_unitary_are_refused(native, parame
         decompose(GATES["haar"][:1], native, parameters)
 
 
+@pytest.mark.parametrize(("native", "parameters"), NATIVES)
+def test_matrices_with_eight_digits_are_decomposed_as_well_as_they_are_unitary(native, parameters):
+    wanted = np.round(np.concatenate([GATES["haar"][:50], GATES["special"][:200]]), 9)
+    found = rebuilt(decompose(wanted, native, parameters), parameters)
+    assert max(phase_distance(one, two) for one, two in zip(found, wanted, strict=True)) < 1e-7
+
+
 def test_matrices_that_are_not_unitary_are_refused():
-    with pytest.raises(InputError, match="unitaries: found 'a matrix 0.2 from unitary'"):
+    with pytest.raises(InputError, match=r"unitaries: found 'a matrix 0\.2 from unitary'"):
         decompose(np.eye(4)[None] * np.sqrt(1.2), "cz")
     with pytest.raises(InputError, match=r"unitaries: found \(4, 4\); allowed: an array of shape \(gates, 4, 4\)"):
         decompose(np.eye(4), "cz")

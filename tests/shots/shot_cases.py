@@ -7,7 +7,6 @@ from pathlib import Path
 from types import SimpleNamespace
 
 import numpy as np
-import pytest
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -50,7 +49,6 @@ def write(path: Path, content: str | bytes) -> Path:
     return path
 
 
-@pytest.fixture
 def two_circuits() -> FakeKit:
     """Circuit a measures four qubits, circuit b three."""
     return make_kit(Row(circuit_id="a", shots=4), Row(circuit_id="b", shots=3, measured_qubits=(0, 1, 2)))
