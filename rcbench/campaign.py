@@ -19,6 +19,7 @@ from rcbench.signatures.registry import signature
 from rcbench.tomlfile import Section, read_toml
 
 FAMILIES = ("brickwork", "product", "dimers")
+ADOPTED = "adopted"  # circuits that were not drawn but imported, by `rcbench adopt`
 TWO_QUBIT = ("haar", "clifford", "cz", "iswap", "sqrt-iswap", "fsim", "zz")
 ONE_QUBIT = ("none", "haar", "quarter-turns", "azimuth", "clifford")
 REFERENCES = ("ideal", "noise-model")
@@ -32,7 +33,8 @@ class Circuits:
     """The circuit family of an experiment.
 
     family: brickwork (layers of the device's schedule), product (no entangling gate, the same one-qubit layers) or
-    dimers (the same two-qubit gates, count and duration, but every qubit keeps one fixed partner).
+    dimers (the same two-qubit gates, count and duration, but every qubit keeps one fixed partner). ADOPTED stands for
+    imported circuits, of which the other fields say nothing.
     two_qubit: one of TWO_QUBIT. one_qubit: the layer before each two-qubit layer and after the last, one of
     ONE_QUBIT; `none` only with haar or clifford two-qubit gates, which hold one-qubit gates of their own.
     """
@@ -44,7 +46,7 @@ class Circuits:
 
     def __post_init__(self) -> None:
         for key, value, allowed in (
-            ("family", self.family, FAMILIES),
+            ("family", self.family, (*FAMILIES, ADOPTED)),
             ("two_qubit", self.two_qubit, TWO_QUBIT),
             ("one_qubit", self.one_qubit, ONE_QUBIT),
         ):
@@ -56,7 +58,7 @@ class Circuits:
     @property
     def gates(self) -> str:
         """The gate set in one word, as the roster holds it."""
-        return f"{self.two_qubit}+{self.one_qubit}"
+        return "imported" if self.family == ADOPTED else f"{self.two_qubit}+{self.one_qubit}"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -264,7 +266,9 @@ def _read_experiment(section: Section, device: Device, before: list[Experiment],
     section.close()
     if protocol is not None:
         facts["protocol"], keys = _find_protocol(section, protocol, folder)
-        facts["margins"] = {key: _default_margin(key) for key in keys if not _no_margin(key)} | stated
+        # a margin of adopted circuits is always the user's own: what they are for is not known
+        adopted = circuits is not None and circuits.family == ADOPTED
+        facts["margins"] = {key: _default_margin(key) for key in keys if not _no_margin(key) and not adopted} | stated
     else:
         facts["signatures"], facts["margins"] = signatures, stated
         for key in signatures:
@@ -274,7 +278,7 @@ def _read_experiment(section: Section, device: Device, before: list[Experiment],
                 section.error("signatures", key, error.allowed)
     if len(section.errors) > errors_before or circuits is None:
         return None
-    if facts["against"] == "noise-model" and device.errors is None:
+    if facts["against"] == "noise-model" and device.errors is None and circuits.family != ADOPTED:
         section.error("against", "noise-model", "ideal, since the device states no errors")
     try:
         return Experiment(circuits=circuits, qubits=qubits, patch=patch, **facts)
@@ -333,10 +337,12 @@ def _read_qubits(section: Section, device: Device, source: Experiment | None) ->
 def _read_circuits(section: Section, like: Circuits | None, device: Device) -> Circuits | None:
     default = like or Circuits()
     facts: dict[str, Any] = {
-        "family": section.choice("family", FAMILIES, default.family),
+        "family": section.choice("family", (*FAMILIES, ADOPTED), default.family),
         "two_qubit": section.choice("two_qubit", TWO_QUBIT, default.two_qubit),
         "angle": section.number("angle", default.angle),
     }
+    if facts["family"] == ADOPTED:
+        return Circuits(family=ADOPTED)
     plain = "none" if facts["two_qubit"] in ("haar", "clifford") else "quarter-turns"
     facts["one_qubit"] = section.choice("one_qubit", ONE_QUBIT, like.one_qubit if like else plain)
     if facts["two_qubit"] not in ("haar", "clifford"):
@@ -436,7 +442,9 @@ def _experiment_table(experiment: Experiment) -> dict[str, Any]:
     else:
         table["signatures"] = list(experiment.signatures)
     circuits = experiment.circuits
-    table |= {"family": circuits.family, "two_qubit": circuits.two_qubit, "one_qubit": circuits.one_qubit}
+    table["family"] = circuits.family
+    if circuits.family != ADOPTED:
+        table |= {"two_qubit": circuits.two_qubit, "one_qubit": circuits.one_qubit}
     if circuits.angle is not None:
         table["angle"] = circuits.angle
     table |= {

@@ -41,10 +41,12 @@ class IdealProbabilities:
             for runs in runs_of_kit(kit, experiment.name).values()
             for run in runs
         }
+        self._base = {row.circuit_id: row.base_id for row in kit.rows}
         self._held: dict[str, FloatArray] = {}
 
     def __call__(self, circuit_id: str) -> FloatArray | None:
-        """(2**n,) probabilities of a circuit's outcomes."""
+        """(2**n,) probabilities of a circuit's outcomes; a repeat has those of the circuit it repeats."""
+        circuit_id = self._base[circuit_id]
         if circuit_id not in self._held:
             from rcbench.engine.predict import distributions
 
@@ -90,12 +92,11 @@ def compare(
     from rcbench.comparison import compare_frames, estimate
     from rcbench.kit import read_kit
     from rcbench.shots.audit import check_shots
-    from rcbench.shots.reader import read_shots
+    from rcbench.shots.reader import bad_rows_csv, read_shots
 
     out, options = Path(out), options or Options()
     source = read_kit(Path(kit))
-    set_aside = out / "bad-rows.csv" if skip_bad else None
-    measured = read_shots(Path(shots), source, bit_order=bit_order, skip_bad=set_aside)
+    measured = read_shots(Path(shots), source, bit_order=bit_order, skip_bad=skip_bad)
     inputs = {
         "kit": source.hash,
         "shots": {name: digest for name, digest, _ in measured.files},
@@ -108,6 +109,8 @@ def compare(
     with output_folder(out, "compare", inputs) as folder:
         if folder.complete:
             return _compared(_read_comparison(out), audit.needs_attention)
+        if measured.bad_rows:
+            write_text(out / "bad-rows.csv", bad_rows_csv(measured.bad_rows))
         predicted = _predictions(source, out, predictions, options, progress)
         write_csv(out / "predictions.csv", predicted, PREDICTIONS)
         write_parquet(out / "predictions.parquet", predicted, PREDICTIONS)

@@ -4,7 +4,6 @@ import numpy as np
 import pytest
 from campaigns import SIZE, N, compared, draw_shots, draw_truth, experiment, kit_of, predict
 
-from rcbench.campaign import Margin
 from rcbench.estimators.decay import fit
 
 CAMPAIGNS = 1000
@@ -120,7 +119,7 @@ def off_by_the_margin(hidden):
 def test_a_true_difference_equal_to_the_margin_agrees_in_at_most_6_percent(instances):
     """Nominal 5 % each, 1,000 campaigns. The rate of loss is the same in all circuits, so that its mean is exact."""
     rng = np.random.default_rng(200 + instances)
-    kit = campaign(instances, {key: Margin(value=value) for key, value in MARGINS.items()}, shots=1000)
+    kit = campaign(instances, MARGINS, shots=1000)
     wanted = {("sampling", "xeb_fidelity", "", depth) for depth in DEPTHS}
     wanted |= {("echo", "echo_return", "", depth) for depth in DEPTHS}
     false = dict.fromkeys([*sorted(wanted), ("echo", "layer_loss", "", None), ("otoc", "otoc", OTOC, 2)], 0)
@@ -144,7 +143,7 @@ def test_uniform_random_bitstrings_never_agree(instances):
     rng = np.random.default_rng(300 + instances)
     more = {"xeb_linear": 0.1, "self_fidelity": 0.1, "collision_probability": 0.01, "spam": 0.1, "reference_echo": 0.1}
     margins = MARGINS | more | {"polarization": 0.05}
-    kit = campaign(instances, {key: Margin(value=value) for key, value in margins.items()})
+    kit = campaign(instances, margins)
     findings: dict[str, int] = {}
     for _ in range(300):
         drawn = draw_truth(kit, rng, lambda row: 0.0)
@@ -167,7 +166,7 @@ def test_uniform_random_bitstrings_never_agree(instances):
 def test_a_perfect_paired_device_with_wide_circuit_scatter_agrees():
     """Ten circuits with fidelities from 0.2 to 1, whose scatter is five times the margin; 200 campaigns."""
     rng = np.random.default_rng(400)
-    kit = campaign(10, {"xeb_fidelity": Margin(value=0.05)}, shots=10_000)
+    kit = campaign(10, {"xeb_fidelity": 0.05}, shots=10_000)
     kit.rows = [row for row in kit.rows if row.experiment == "sampling"]
     found = []
     for _ in range(200):

@@ -18,7 +18,7 @@ from __future__ import annotations
 import numpy as np
 
 from rcbench.arrays import FloatArray
-from rcbench.campaign import Experiment
+from rcbench.campaign import ADOPTED, FAMILIES, Experiment
 from rcbench.circuits import compile as compiler
 from rcbench.circuits import native
 from rcbench.circuits.circuit import Circuit, CircuitBuilder
@@ -74,6 +74,8 @@ def check(experiment: Experiment, device: Device) -> None:
     """
     circuits, qubits = experiment.circuits, experiment.qubits
     name, angle = circuits.two_qubit, circuits.angle
+    if circuits.family == ADOPTED:
+        raise InputError("family", ADOPTED, f"{', '.join(FAMILIES)}; adopted circuits come from `rcbench adopt` only")
     if angle is not None and name != "zz":
         raise InputError("angle", angle, f"no angle; only zz takes one, not {name}")
     couplers = couplers_among(device, qubits)

@@ -116,7 +116,10 @@ class Registers:
         """A set {a, b, ...} or a range a:b or a:step:b, both ends included, as OpenQASM 3 has them."""
         index = index.strip()
         if index.startswith("{"):
-            return [self._element(text, one, elements) for one in index.strip("{}").split(",")]
+            found = [self._element(text, one, elements) for one in index.strip("{}").split(",")]
+            if len(set(found)) != len(found):
+                raise InputError("operand", text.strip()[:60], f"each {self.word} once")
+            return found
         parts = index.split(":")
         step = self._whole(parts[1]) if len(parts) == 3 else 1
         if len(parts) > 3 or step == 0:

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import threading
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
@@ -19,7 +20,7 @@ from rcbench.engine.lanes import LANES, lanes, load, load_pairs, store, store_pa
 from rcbench.engine.operators import COSTS, Operators
 from rcbench.engine.threads import Pool
 
-BLOCK_BYTES = 2**17  # half of a small second-level cache
+BLOCK_BYTES = 2**18  # a part of the second-level cache of one core
 RUN_BYTES = 2**8  # four cache lines: enough for the prefetcher
 TASKS = 64  # blocks of a sweep are handed to threads in at most so many portions
 
@@ -51,64 +52,74 @@ class Plan:
         operators: in the order of the sweeps, high and low as positions inside a block.
         order: (m,) place of each operator in the program.
         start: (sweeps + 1,) where the operators of each sweep begin. active: (sweeps,) bit masks.
+        stretch: (stretches + 1,) the sweep that each stretch of the program begins with.
     """
 
     operators: Operators
     order: IntArray
     start: IntArray
     active: IntArray
+    stretch: IntArray
 
 
-def plan(operators: Operators, block_bits: int | None = None) -> Plan:
-    """Cut a program into sweeps; operators on different qubits may change places. block_bits: what fits the cache."""
+def plan(operators: Operators, stretches: IntArray, block_bits: int | None = None) -> Plan:
+    """Cut a program into sweeps; operators of one stretch that act on different qubits may change places.
+
+    stretches: where each stretch of the program begins, and the end. block_bits: what fits the cache.
+    """
     n = operators.n_qubits
     item = operators.numbers.itemsize
     block_bits = block_bits or (BLOCK_BYTES // (2 * item)).bit_length() - 1
     run_bits = (RUN_BYTES // (2 * item)).bit_length() - 1
-    masks = (np.int64(1) << operators.high) | (np.int64(1) << operators.low)
     if n <= block_bits:
-        start, active = np.array([0, len(masks)]), np.array([2**n - 1])
-        return Plan(operators, np.arange(len(masks)), start, active)
-    order, start, active = _sweeps(masks, COSTS[operators.kind], n, block_bits, run_bits)
+        count = len(stretches) - 1
+        return Plan(operators, np.arange(len(operators)), stretches, np.full(count, 2**n - 1), np.arange(count + 1))
+    masks = (np.int64(1) << operators.high) | (np.int64(1) << operators.low)
+    parts = [
+        _sweeps(masks[first:last], COSTS[operators.kind[first:last]], n, block_bits, run_bits)
+        for first, last in pairwise(stretches.tolist())
+    ]
+    order = np.concatenate([part[0] + first for part, first in zip(parts, stretches, strict=False)])
+    start = np.concatenate(
+        [*(part[1][:-1] + first for part, first in zip(parts, stretches, strict=False)), stretches[-1:]]
+    )
+    active = np.concatenate([part[2] for part in parts])
     high, low = _inside(operators.high[order], operators.low[order], start, active)
-    return Plan(Operators(n, operators.kind[order], high, low, operators.numbers[order]), order, start, active)
+    inside = Operators(n, operators.kind[order], high, low, operators.numbers[order])
+    return Plan(inside, order, start, active, np.cumsum([0, *(len(part[2]) for part in parts)]))
 
 
-def apply_plan(state: ComplexArray, sweeps: Plan, pool: Pool, begin: int = 0) -> None:
-    """Apply a planned program from one of its sweeps on to a state, in place.
+def apply_plan(state: ComplexArray, sweeps: Plan, pool: Pool, begin: int = 0, end: int | None = None) -> None:
+    """Apply a planned program, or its sweeps from begin up to end, to a state in place.
 
     A state of fewer amplitudes than a register is padded.
     """
     operators = sweeps.operators
     real = operators.numbers.dtype
-    view = state.view(real)
+    n, view, target = operators.n_qubits, state.view(real), state.view(real)
     if len(state) < LANES[real.name]:
-        padded = np.zeros(2 * LANES[real.name], dtype=real)
-        padded[: len(view)] = view
-        bits = LANES[real.name].bit_length() - 1
-        _run_sweep(padded, bits, sweeps.start, 0, 2**bits - 1, 0, 1, operators)
-        view[:] = padded[: len(view)]
-        return
-    for sweep in range(begin, len(sweeps.active)):
-        active = int(sweeps.active[sweep])
-        blocks = 2 ** (operators.n_qubits - active.bit_count())
+        n, view = LANES[real.name].bit_length() - 1, np.zeros(2 * LANES[real.name], dtype=real)
+        view[: len(target)] = target
+    for sweep in range(begin, len(sweeps.active) if end is None else end):
+        active = max(int(sweeps.active[sweep]), LANES[real.name] - 1)
+        blocks = 2 ** (n - active.bit_count())
         portions = min(blocks, TASKS)
 
-        def task(portion: int, sweep: int = sweep, active: int = active, blocks: int = blocks, portions: int = portions) -> None:
+        def task(
+            portion: int, sweep: int = sweep, active: int = active, blocks: int = blocks, portions: int = portions
+        ) -> None:
             first, last = blocks * portion // portions, blocks * (portion + 1) // portions
-            _run_sweep(view, operators.n_qubits, sweeps.start, sweep, active, first, last, operators)
+            _sweep(
+                view, n, active, first, last, sweeps.start[sweep], sweeps.start[sweep + 1],
+                operators.kind, operators.high, operators.low, operators.numbers, own_block(active.bit_count(), real),
+            )  # fmt: skip
 
-        pool.run(task, range(portions))
-
-
-def _run_sweep(
-    view: FloatArray, n: int, start: IntArray, sweep: int, active: int, first: int, last: int, operators: Operators
-) -> None:
-    block = own_block(active.bit_count(), view.dtype)
-    _sweep(
-        view, n, active, first, last, start[sweep], start[sweep + 1],
-        operators.kind, operators.high, operators.low, operators.numbers, block,
-    )  # fmt: skip
+        if portions == 1:
+            task(0)
+        else:
+            pool.run(task, range(portions))
+    if view is not target and len(view) > len(target):
+        target[:] = view[: len(target)]
 
 
 @part

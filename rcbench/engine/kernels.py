@@ -41,8 +41,18 @@ def _make_dense_mixed(bit: int) -> Any:
     def dense_mixed(block, bits, high, c):  # type: ignore[no-untyped-def]
         step, far = 2 * lanes(block), 2 << high
         # the lane's own amplitude, then that of the lane with the other bit, for each of the two chunks
-        own00, other00, own01, other01 = choose(c, 0, 5, bit), choose(c, 1, 4, bit), choose(c, 2, 7, bit), choose(c, 3, 6, bit)
-        own10, other10, own11, other11 = choose(c, 8, 13, bit), choose(c, 9, 12, bit), choose(c, 10, 15, bit), choose(c, 11, 14, bit)
+        own00, other00, own01, other01 = (
+            choose(c, 0, 5, bit),
+            choose(c, 1, 4, bit),
+            choose(c, 2, 7, bit),
+            choose(c, 3, 6, bit),
+        )
+        own10, other10, own11, other11 = (
+            choose(c, 8, 13, bit),
+            choose(c, 9, 12, bit),
+            choose(c, 10, 15, bit),
+            choose(c, 11, 14, bit),
+        )
         for top in range(0, 2 << bits, 2 * far):
             for i0 in range(top, top + far, step):
                 x0, x1 = load(block, i0), load(block, i0 + far)

@@ -174,7 +174,9 @@ def entry(typing: Any, numbers: Any, place: Any) -> Any:
 
     def generate(context: Any, builder: Any, signature: Any, args: Any) -> Any:
         memory = _Memory(context, builder, numbers, args[0])
-        return memory.spread_complex(_integers(context, builder, signature, args, range(1, 2)), [0] * memory.register.count)
+        return memory.spread_complex(
+            _integers(context, builder, signature, args, range(1, 2)), [0] * memory.register.count
+        )
 
     return Amplitudes(numbers.dtype)(numbers, place), generate
 
@@ -234,7 +236,9 @@ def _fused(builder: Any, x: Any, y: Any, z: Any) -> Any:
     return builder.call(function, [x, y, z])
 
 
-def _add_product(builder: Any, x: tuple[Any, Any], a: tuple[Any, Any], total: tuple[Any, Any] | None) -> tuple[Any, Any]:
+def _add_product(
+    builder: Any, x: tuple[Any, Any], a: tuple[Any, Any], total: tuple[Any, Any] | None
+) -> tuple[Any, Any]:
     """x * a, or x * a + total, of complex registers."""
     (xr, xi), (ar, ai) = x, a
     if total is None:

@@ -14,9 +14,9 @@ from rcbench.engine.kernels import DENSE, ONE, apply_operator
 from rcbench.engine.lanes import LANES, lanes, load, store
 from rcbench.engine.operators import Operators, write_matrices
 from rcbench.engine.threads import Pool
-from rcbench.engine.trajectories import Changes, NoisyProgram, Patterns, changed_operators
+from rcbench.engine.trajectories import BLOCK_QUBITS, Changes, NoisyProgram, Patterns, changed_operators
+from rcbench.engine.work import Work
 
-BLOCK_QUBITS = 15  # up to here a state is one block, and each thread has batches of its own
 SAVED_BYTES = 2**27  # error-free states kept to start trajectories from
 
 
@@ -45,24 +45,35 @@ def bytes_needed(n_qubits: int, dtype: str, batches: int, sources: int) -> int:
     return sums + memory.bytes_needed(n_qubits, dtype, states=3)
 
 
-def run_patterns(
-    noisy: NoisyProgram, patterns: Patterns, dtype: str, pool: Pool, saved_bytes: int = SAVED_BYTES
-) -> Sums:
+def run_patterns(noisy: NoisyProgram, patterns: Patterns, dtype: str, pool: Pool, work: Work) -> Sums:
     """Run all trajectories of a circuit; the result is the same for any number of threads."""
     changes, sweeps = changed_operators(noisy, patterns), noisy.sweeps
-    run = _run_in_blocks if sweeps.operators.n_qubits <= BLOCK_QUBITS else _run_in_sweeps
-    return run(patterns, changes, sweeps, dtype, pool, saved_bytes)
+    n, run = sweeps.operators.n_qubits, _run_in_blocks if sweeps.operators.n_qubits <= BLOCK_QUBITS else _run_in_sweeps
+    sums = run(patterns, changes, sweeps, dtype, pool)
+    first = changes.op[changes.start[:-1]]
+    work.amplitudes += 2.0**n * float((len(noisy.program) - first).sum() + len(noisy.program))
+    work.trajectories += len(patterns)
+    work.holds(
+        bytes_needed(n, dtype, patterns.batches, len(sums.scored))
+        + _saved_count(sweeps, dtype) * memory.bytes_needed(n, dtype)
+    )
+    return sums
 
 
-def _run_in_blocks(
-    patterns: Patterns, changes: Changes, sweeps: Plan, dtype: str, pool: Pool, saved_bytes: int
-) -> Sums:
+def _saved_count(sweeps: Plan, dtype: str) -> int:
+    """Error-free states that are kept."""
+    n = sweeps.operators.n_qubits
+    candidates = len(sweeps.operators) if n <= BLOCK_QUBITS else len(sweeps.active)
+    return max(1, min(candidates, SAVED_BYTES // memory.bytes_needed(n, dtype)))
+
+
+def _run_in_blocks(patterns: Patterns, changes: Changes, sweeps: Plan, dtype: str, pool: Pool) -> Sums:
     operators = sweeps.operators
     real = operators.numbers.dtype
     bits = max(operators.n_qubits, LANES[real.name].bit_length() - 1)
     size, batches, sources = 2**bits, patterns.batches, patterns.scores.shape[1]
     numbers = write_matrices(changes.matrices).astype(real)
-    every = max(1, -(-len(operators) * size * 2 * real.itemsize // saved_bytes))
+    every = -(-len(operators) // _saved_count(sweeps, dtype))
     saved = aligned((2 << bits) * (-(-len(operators) // every)), real).reshape(-1, 2 << bits)
     saved[0] = 0
     saved[0, 0] = 1
@@ -71,12 +82,26 @@ def _run_in_blocks(
     table = (changes.op, numbers, operators.kind, operators.high, operators.low, operators.numbers, patterns.scores)
     # the error-free run fills `saved`; it has no changes, and its sums go nowhere
     nothing = np.zeros(2, dtype=np.int64)
-    _run_block(saved, every, True, 0, 1, nothing, *table, np.zeros(size), np.zeros((sources, size)), aligned(2 << bits, real), bits)
+    _run_block(
+        saved,
+        every,
+        True,
+        0,
+        1,
+        nothing,
+        *table,
+        np.zeros(size),
+        np.zeros((sources, size)),
+        aligned(2 << bits, real),
+        bits,
+    )
 
     def task(batch: int) -> None:
         block = aligned(2 << bits, real)
         first = batch * each
-        _run_block(saved, every, False, first, first + each, changes.start, *table, sums[batch], scored[batch], block, bits)
+        _run_block(
+            saved, every, False, first, first + each, changes.start, *table, sums[batch], scored[batch], block, bits
+        )
 
     pool.run(task, range(batches))
     used = 2**operators.n_qubits
@@ -112,11 +137,9 @@ def _run_block(
                     scored[source, chunk * w + lane] += scores[trajectory, source] * probability
 
 
-def _run_in_sweeps(
-    patterns: Patterns, changes: Changes, sweeps: Plan, dtype: str, pool: Pool, saved_bytes: int
-) -> Sums:
+def _run_in_sweeps(patterns: Patterns, changes: Changes, sweeps: Plan, dtype: str, pool: Pool) -> Sums:
     n, batches = sweeps.operators.n_qubits, patterns.batches
-    saved, first_sweep = _error_free_states(sweeps, dtype, pool, saved_bytes)
+    saved, first_sweep = _error_free_states(sweeps, dtype, pool)
     numbers = write_matrices(changes.matrices).astype(sweeps.operators.numbers.dtype)
     real = probability_type(n)
     sums, scored = np.zeros((batches, 2**n), real), np.zeros((patterns.scores.shape[1], 2**n), real)
@@ -128,15 +151,19 @@ def _run_in_sweeps(
         state[:] = saved[begin]
         changed = _with_changes(sweeps.operators, changes.op[part], numbers[part])
         apply_plan(state, replace(sweeps, operators=changed), pool, int(first_sweep[begin]))
-        _add_probabilities(state.view(numbers.dtype), patterns.scores[trajectory].astype(real), sums[trajectory * batches // len(patterns)], scored)
+        _add_probabilities(
+            state.view(numbers.dtype),
+            patterns.scores[trajectory].astype(real),
+            sums[trajectory * batches // len(patterns)],
+            scored,
+        )
     return Sums(sums, scored)
 
 
-def _error_free_states(sweeps: Plan, dtype: str, pool: Pool, saved_bytes: int) -> tuple[list[ComplexArray], IntArray]:
+def _error_free_states(sweeps: Plan, dtype: str, pool: Pool) -> tuple[list[ComplexArray], IntArray]:
     """States of the error-free run and the sweep that each one stands before."""
     n, count = sweeps.operators.n_qubits, len(sweeps.active)
-    room = max(1, saved_bytes // memory.bytes_needed(n, dtype))
-    first_sweep = np.unique(np.linspace(0, count, min(room, count), endpoint=False).astype(np.int64))
+    first_sweep = np.unique(np.linspace(0, count, _saved_count(sweeps, dtype), endpoint=False).astype(np.int64))
     state: ComplexArray = aligned(2**n, np.dtype(dtype))
     state[:] = 0
     state[0] = 1

@@ -41,7 +41,9 @@ def encode(program: Program, dtype: np.dtype[np.complexfloating]) -> Operators:
     kind, numbers = _encode(program.qubits, program.matrices)
     high = program.n_qubits - 1 - program.qubits[:, 0]
     low = np.where(program.qubits[:, 1] < 0, high, program.n_qubits - 1 - program.qubits[:, 1])
-    return Operators(program.n_qubits, kind, high.astype(np.int64), low.astype(np.int64), numbers.astype(real_of(dtype)))
+    return Operators(
+        program.n_qubits, kind, high.astype(np.int64), low.astype(np.int64), numbers.astype(real_of(dtype))
+    )
 
 
 def real_of(dtype: np.dtype[np.complexfloating]) -> np.dtype[np.floating]:
@@ -113,6 +115,8 @@ def write_matrices(matrices):  # type: ignore[no-untyped-def]
     """(m, 32) numbers of operators of unknown structure; those on one qubit have a zero outside [:2, :2]."""
     numbers = np.zeros((len(matrices), 32))
     for op in range(len(matrices)):
-        alone = matrices[op, 3, 3] == 0 and matrices[op, 3, 2] == 0 and matrices[op, 3, 1] == 0 and matrices[op, 3, 0] == 0
+        alone = (
+            matrices[op, 3, 3] == 0 and matrices[op, 3, 2] == 0 and matrices[op, 3, 1] == 0 and matrices[op, 3, 0] == 0
+        )
         write_numbers(matrices[op], 2 if alone else 4, numbers[op])
     return numbers

@@ -9,15 +9,17 @@ import numpy as np
 
 from rcbench.arrays import ComplexArray, FloatArray
 from rcbench.circuits.circuit import Circuit
-from rcbench.engine import tree
+from rcbench.engine import memory, tree
 from rcbench.engine.distribution import Distribution
-from rcbench.engine.mixture import BLOCK_QUBITS, probability_type, run_patterns
+from rcbench.engine.mixture import bytes_needed, probability_type, run_patterns
 from rcbench.engine.noise import SOURCES, NoiseModel
 from rcbench.engine.readout import flip, measured
 from rcbench.engine.threads import Pool
-from rcbench.engine.trajectories import draw_patterns, noisy_program
+from rcbench.engine.trajectories import NoisyProgram, Patterns, draw_patterns, noisy_program
+from rcbench.engine.work import Work
 from rcbench.errors import InputError
 from rcbench.randomness import Draw
+
 
 def probabilities(state: ComplexArray) -> FloatArray:
     """(2**n,) squared magnitudes."""
@@ -44,6 +46,7 @@ def distributions(
     memory_limit: int | None = None,
     threads: int | None = None,
     progress: Callable[[int, int], None] | None = None,
+    work: Work | None = None,
 ) -> Iterator[tuple[int, Distribution, Distribution | None]]:
     """The distribution of every circuit over its measured bits.
 
@@ -54,10 +57,11 @@ def distributions(
         seed: of the error patterns; they depend on it and on the circuit's rows alone.
         dtype, memory_limit, threads: as in `tree.walk`.
         progress: called with (circuits done, circuits in all) after each.
+        work: what is done is added to it.
     Yields:
         (index of the circuit, ideal, noisy), in no particular order; noisy is None without a noise model. Classical
-        bit 0 is the most significant. Readout flips are in the noisy one only. Its tilts hold "one_qubit",
-        "two_qubit", "idle" and "readout".
+        bit 0 is the most significant. Readout flips are in the noisy one only. Its tilts hold those of "one_qubit",
+        "two_qubit", "idle" and "readout" that have an uncertainty and act on the circuit.
     Raises:
         InputError: nothing measured, a reset or a gate after the qubit's measurement, a noise model of another size,
             or too little memory.
@@ -65,16 +69,25 @@ def distributions(
     for circuit in circuits:
         if not circuit.measured_qubits:
             raise InputError("circuit", "no measurement", "at least one measured qubit")
-    for done, (index, state) in enumerate(tree.walk(circuits, dtype=dtype, memory_limit=memory_limit, threads=threads)):
-        circuit = circuits[index]
-        whole = probabilities(state)
-        ideal = Distribution(len(circuit.measured_qubits), measured(whole, circuit.measured_qubits))
-        noisy = None
         if noise is not None:
-            noisy = noisy_distribution(circuit, whole, noise, trajectories, seed, dtype, threads)
-        yield index, ideal, noisy
-        if progress is not None:
-            progress(done + 1, len(circuits))
+            if noise.n_qubits != circuit.n_qubits:
+                raise InputError("noise", f"{noise.n_qubits} qubits", f"the circuit's {circuit.n_qubits} qubits")
+            needed = bytes_needed(circuit.n_qubits, dtype, batch_count(circuit.n_qubits), len(SOURCES))
+            memory.require(needed, memory_limit, f"trajectories of {circuit.n_qubits} qubits")
+    work = Work() if work is None else work
+    states = tree.walk(circuits, dtype=dtype, memory_limit=memory_limit, threads=threads, work=work)
+    with Pool(threads) as pool:
+        for done, (index, state) in enumerate(states):
+            circuit = circuits[index]
+            whole = probabilities(state)
+            ideal = Distribution(len(circuit.measured_qubits), measured(whole, circuit.measured_qubits))
+            noisy = None
+            if noise is not None:
+                with work.timed():
+                    noisy = noisy_distribution(circuit, whole, noise, trajectories, seed, dtype, pool, work)
+            yield index, ideal, noisy
+            if progress is not None:
+                progress(done + 1, len(circuits))
 
 
 def batch_count(n_qubits: int) -> int:
@@ -89,33 +102,45 @@ def noisy_distribution(
     trajectories: int,
     seed: int,
     dtype: str,
-    threads: int | None,
+    pool: Pool,
+    work: Work,
 ) -> Distribution:
     """The distribution under a noise model; error_free: (2**n,) probabilities of the circuit without an error."""
-    one_block = circuit.n_qubits if circuit.n_qubits <= BLOCK_QUBITS else None
-    noisy = noisy_program(circuit, noise, dtype, one_block)
-    qubits = circuit.measured_qubits
+    noisy = noisy_program(circuit, noise, dtype)
+    qubits, weight = circuit.measured_qubits, noisy.error_free
     confusion = noise.confusion(qubits)
-    exact, weight = measured(error_free, qubits), noisy.error_free
-    zero = np.broadcast_to(np.zeros((), dtype=exact.dtype), exact.shape)
-    tilts, batches, mixture = dict.fromkeys((*SOURCES, "readout"), zero), None, exact
+    exact = mixture = measured(error_free, qubits)
+    batches, tilts = None, {}
     if len(noisy.places):
         draw = Draw(seed, "trajectories", content_key(circuit))
         patterns = draw_patterns(noisy, trajectories, batch_count(circuit.n_qubits), draw)
-        with Pool(threads) as pool:
-            sums = run_patterns(noisy, patterns, dtype, pool)
+        sums = run_patterns(noisy, patterns, dtype, pool, work)
         batches = measured(sums.by_batch, qubits) * (patterns.batches / len(patterns))
-        scored = measured(sums.scored, qubits) / len(patterns)
         mixture = weight * exact + (1 - weight) * batches.mean(axis=0)
-        for place, source in enumerate(SOURCES):
-            scale = noise.uncertainty.get(source, 0.0)
-            if scale and np.any(noisy.places.source == place):
-                free = weight * noisy.error_free_scores[place]
-                # the exact mean score is 0: what sampling leaves of it is taken out
-                left = free + (1 - weight) * float(patterns.scores[:, place].mean())
-                slope = free * exact + (1 - weight) * scored[place] - left * mixture
-                tilts[source] = scale * flip(slope, confusion)
+        scored = measured(sums.scored, qubits) / len(patterns)
+        tilts = _tilts(noisy, patterns, noise, exact, mixture, scored)
+        tilts = {source: flip(tilt, confusion) for source, tilt in tilts.items()}
         batches = flip(batches, confusion)
     if noise.uncertainty.get("readout_0to1") or noise.uncertainty.get("readout_1to0"):
         tilts["readout"] = flip(mixture, noise.confusion(qubits, sigmas=1)) - flip(mixture, confusion)
     return Distribution(len(qubits), flip(exact, confusion), weight if batches is not None else 1.0, batches, tilts)
+
+
+def _tilts(
+    noisy: NoisyProgram,
+    patterns: Patterns,
+    noise: NoiseModel,
+    exact: FloatArray,
+    mixture: FloatArray,
+    scored: FloatArray,
+) -> dict[str, FloatArray]:
+    """Change of the distribution before readout for one standard uncertainty of each source; scored: means by source."""
+    weight, tilts = noisy.error_free, {}
+    for place, source in enumerate(SOURCES):
+        scale = noise.uncertainty.get(source, 0.0)
+        if scale and np.any(noisy.places.source == place):
+            free = weight * noisy.error_free_scores[place]
+            # the exact mean score is 0: what sampling leaves of it is taken out
+            left = free + (1 - weight) * float(patterns.scores[:, place].mean())
+            tilts[source] = scale * (free * exact + (1 - weight) * scored[place] - left * mixture)
+    return tilts

@@ -7,6 +7,7 @@ matrix and nothing else.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -29,6 +30,7 @@ class GateRows:
         qubits: (m, 2) int32 qubits of each gate, the second -1 for one-qubit gates.
         matrices: (m, 4, 4) complex128; a one-qubit gate fills [:2, :2].
         held: (m,) true where a one-qubit gate must join the operator after it, not the one before.
+        start: (stretches + 1,) where stretches begin whose states are asked for one by one.
     """
 
     n_qubits: int
@@ -37,6 +39,7 @@ class GateRows:
     qubits: IntArray
     matrices: ComplexArray
     held: BoolArray
+    start: IntArray
 
     def __len__(self) -> int:
         return len(self.layer)
@@ -58,15 +61,22 @@ def check_order(circuit: Circuit) -> None:
             continue
         qubits = [q for q in (pair[:1] if name else pair) if q >= 0]
         if measured.intersection(qubits):
-            raise InputError("circuit", f"{KINDS[kind].name} on qubit {qubits[0]} after its measurement", "measurements last")
+            raise InputError(
+                "circuit", f"{KINDS[kind].name} on qubit {qubits[0]} after its measurement", "measurements last"
+            )
         if name == "reset" and touched.intersection(qubits):
             raise InputError("circuit", f"reset of qubit {qubits[0]} after a gate", "resets before the first gate only")
         (measured if name == "measure" else touched).update(qubits)
 
 
-def gate_rows(circuit: Circuit, start: int = 0, stop: int | None = None) -> GateRows:
-    """The gates of a circuit as matrices, all or those from place start up to stop; `check_order` comes first."""
-    rows = np.flatnonzero(circuit.gate_rows)[start:stop]
+def gate_rows(circuit: Circuit, cuts: Sequence[int] | None = None) -> GateRows:
+    """The gates of a circuit as matrices; `check_order` comes first.
+
+    cuts: the gate that each stretch begins with, and the end; one stretch of all gates where None.
+    """
+    rows = np.flatnonzero(circuit.gate_rows)
+    start = np.array([0, len(rows)] if cuts is None else cuts, dtype=np.int64)
+    rows, start = rows[start[0] : start[-1]], start - start[0]
     kinds = circuit.kind[rows]
     matrices = np.zeros((len(rows), 4, 4), dtype=np.complex128)
     for code in np.unique(kinds):
@@ -78,7 +88,9 @@ def gate_rows(circuit: Circuit, start: int = 0, stop: int | None = None) -> Gate
         matrices[here, :side, :side] = gate.matrices(circuit.parameters[columns])
     qubits = np.ascontiguousarray(circuit.qubits[rows], dtype=np.int32)
     qubits[N_QUBITS[kinds] == 1, 1] = -1
-    return GateRows(circuit.n_qubits, circuit.layer[rows], kinds, qubits, matrices, np.zeros(len(rows), dtype=bool))
+    return GateRows(
+        circuit.n_qubits, circuit.layer[rows], kinds, qubits, matrices, np.zeros(len(rows), dtype=bool), start
+    )
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -90,12 +102,14 @@ class Program:
         qubits: (m, 2) int32, the lower label first; the second -1 for a one-qubit operator.
         matrices: (m, 4, 4) complex128, the lower label the more significant bit; a one-qubit operator fills [:2, :2].
         op_of_row: (gates,) the operator that holds each gate.
+        start: (stretches + 1,) where the operators of each stretch begin.
     """
 
     n_qubits: int
     qubits: IntArray
     matrices: ComplexArray
     op_of_row: IntArray
+    start: IntArray
 
     def __len__(self) -> int:
         return len(self.qubits)
@@ -104,13 +118,13 @@ class Program:
         """The same operators in another order that leaves those on a common qubit as they are."""
         place = np.empty(len(order), dtype=np.int64)
         place[order] = np.arange(len(order))
-        return Program(self.n_qubits, self.qubits[order], self.matrices[order], place[self.op_of_row])
+        return Program(self.n_qubits, self.qubits[order], self.matrices[order], place[self.op_of_row], self.start)
 
 
 def fuse(rows: GateRows) -> Program:
-    """The program of a stretch of gates."""
-    count, qubits, matrices, op_of_row = _fuse(rows.n_qubits, rows.qubits, rows.matrices, rows.held)
-    return Program(rows.n_qubits, qubits[:count], matrices[:count], op_of_row)
+    """The program of a circuit's gates; nothing is fused from one stretch to the next."""
+    qubits, matrices, op_of_row, start = _fuse(rows.n_qubits, rows.qubits, rows.matrices, rows.held, rows.start)
+    return Program(rows.n_qubits, qubits[: start[-1]], matrices[: start[-1]], op_of_row, start)
 
 
 @part
@@ -159,56 +173,60 @@ def apply_row(operator, first, second, gate, a, b):  # type: ignore[no-untyped-d
 
 
 @kernel
-def _fuse(n_qubits, qubits, gates, held):  # type: ignore[no-untyped-def]
+def _fuse(n_qubits, qubits, gates, held, starts):  # type: ignore[no-untyped-def]
     rows = len(qubits)
-    op_qubits = np.full((rows, 2), -1, dtype=np.int32)
+    op_qubits = np.empty((rows, 2), dtype=np.int32)
     matrices = np.zeros((rows, 4, 4), dtype=np.complex128)
-    absorbed = np.full(rows, -1, dtype=np.int64)  # the operator that took this one in
+    absorbed = np.empty(rows, dtype=np.int64)  # the operator that took this one in, -1 where none did
     op_of_row = np.empty(rows, dtype=np.int64)
-    last = np.full(n_qubits, -1, dtype=np.int64)  # the last operator on each qubit
-    count = 0
-    for row in range(rows):
-        a, b = qubits[row, 0], qubits[row, 1]
-        here = last[a]
-        joins = here >= 0 and (b < 0 or here == last[b])
-        if joins and held[row] and op_qubits[here, 1] >= 0:
-            joins = False
-        if joins:
-            apply_row(matrices[here], op_qubits[here, 0], op_qubits[here, 1], gates[row], a, b)
-            op_of_row[row] = here
-            continue
-        new = count
-        count += 1
-        op_of_row[row] = new
-        for i in range(4):
-            matrices[new, i, i] = 1
-        if b < 0:
-            op_qubits[new, 0] = a
-            matrices[new, 2, 2] = matrices[new, 3, 3] = 0
-            apply_row(matrices[new], a, -1, gates[row], a, -1)
-            last[a] = new
-            continue
-        low, high = min(a, b), max(a, b)
-        op_qubits[new, 0], op_qubits[new, 1] = low, high
-        for qubit in (low, high):
-            before = last[qubit]
-            if before >= 0 and op_qubits[before, 1] < 0:
-                apply_row(matrices[new], low, high, matrices[before], qubit, -1)
-                absorbed[before] = new
-            last[qubit] = new
-        apply_row(matrices[new], low, high, gates[row], a, b)
-    # close the gaps that absorbed operators left
-    place = np.empty(count, dtype=np.int64)
-    kept = 0
-    for op in range(count):
-        if absorbed[op] < 0:
-            place[op] = kept
-            op_qubits[kept, 0], op_qubits[kept, 1] = op_qubits[op, 0], op_qubits[op, 1]
-            for i in range(4):
-                for j in range(4):
-                    matrices[kept, i, j] = matrices[op, i, j]
-            kept += 1
-    for row in range(rows):
-        op = op_of_row[row]
-        op_of_row[row] = place[absorbed[op] if absorbed[op] >= 0 else op]
-    return kept, op_qubits, matrices, op_of_row
+    last = np.empty(n_qubits, dtype=np.int64)  # the last operator on each qubit in this stretch, -1 where there is none
+    op_starts = np.empty(len(starts), dtype=np.int64)
+    count, kept = 0, 0
+    for stretch in range(len(starts) - 1):
+        first = count
+        for qubit in range(n_qubits):
+            last[qubit] = -1
+        for row in range(starts[stretch], starts[stretch + 1]):
+            a, b = qubits[row, 0], qubits[row, 1]
+            here = last[a]
+            joins = here >= 0 and (b < 0 or here == last[b])
+            if joins and not (held[row] and op_qubits[here, 1] >= 0):
+                apply_row(matrices[here], op_qubits[here, 0], op_qubits[here, 1], gates[row], a, b)
+                op_of_row[row] = here
+                continue
+            op_of_row[row] = new = count
+            count += 1
+            absorbed[new] = -1
+            for i in range(2 if b < 0 else 4):
+                matrices[new, i, i] = 1
+            if b < 0:
+                op_qubits[new, 0], op_qubits[new, 1] = a, -1
+                apply_row(matrices[new], a, -1, gates[row], a, -1)
+                last[a] = new
+                continue
+            op_qubits[new, 0], op_qubits[new, 1] = min(a, b), max(a, b)
+            for side in range(2):
+                qubit = op_qubits[new, side]
+                before = last[qubit]
+                if before >= 0 and op_qubits[before, 1] < 0:
+                    apply_row(matrices[new], op_qubits[new, 0], op_qubits[new, 1], matrices[before], qubit, -1)
+                    absorbed[before] = new
+                last[qubit] = new
+            apply_row(matrices[new], op_qubits[new, 0], op_qubits[new, 1], gates[row], a, b)
+        # close the gaps that absorbed operators left; `absorbed` of those kept becomes their new place
+        op_starts[stretch] = kept
+        for op in range(first, count):
+            if absorbed[op] < 0:
+                op_qubits[kept, 0], op_qubits[kept, 1] = op_qubits[op, 0], op_qubits[op, 1]
+                for i in range(4):
+                    for j in range(4):
+                        matrices[kept, i, j] = matrices[op, i, j]
+                absorbed[op] = -1 - kept - 1
+                kept += 1
+        for row in range(starts[stretch], starts[stretch + 1]):
+            op = op_of_row[row]
+            if absorbed[op] >= 0:
+                op = absorbed[op]
+            op_of_row[row] = -2 - absorbed[op]
+    op_starts[len(starts) - 1] = kept
+    return op_qubits, matrices, op_of_row, op_starts

@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from rcbench.arrays import ComplexArray
 from rcbench.circuits.circuit import Circuit
 from rcbench.engine import memory
-from rcbench.engine.blocks import aligned, apply_plan, plan
+from rcbench.engine.blocks import Plan, aligned, apply_plan, plan
 from rcbench.engine.operators import encode
-from rcbench.engine.program import Program, check_order, fuse, gate_rows
+from rcbench.engine.program import check_order, fuse, gate_rows
 from rcbench.engine.threads import Pool
+from rcbench.engine.turns import split_turns
 
 
 def zero_state(n_qubits: int, dtype: str = "complex64") -> ComplexArray:
@@ -19,10 +22,10 @@ def zero_state(n_qubits: int, dtype: str = "complex64") -> ComplexArray:
     return state
 
 
-def evolve(state: ComplexArray, program: Program, pool: Pool) -> None:
-    """Apply a program to a state, in place."""
-    if len(program):
-        apply_plan(state, plan(encode(program, state.dtype)), pool)
+def compile_circuit(circuit: Circuit, dtype: str, cuts: Sequence[int] | None = None) -> Plan:
+    """A circuit as the kernels run it, in one stretch or with cuts as in `program.gate_rows`."""
+    program = fuse(split_turns(gate_rows(circuit, cuts)))
+    return plan(encode(program, memory.state_dtype(dtype)), program.start)
 
 
 def final_state(
@@ -44,5 +47,5 @@ def final_state(
     memory.require(memory.bytes_needed(circuit.n_qubits, dtype), memory_limit, f"a state of {circuit.n_qubits} qubits")
     state = zero_state(circuit.n_qubits, dtype)
     with Pool(threads) as pool:
-        evolve(state, fuse(gate_rows(circuit)), pool)
+        apply_plan(state, compile_circuit(circuit, dtype), pool)
     return state

@@ -105,6 +105,10 @@ class Pool:
         helpers = [self._executor.submit(work) for _ in range(self.threads - 1)]
         try:
             work()
+        except BaseException:  # an interrupt too: the others must not go on with what is left
+            for _ in queue:
+                pass
+            raise
         finally:
             for helper in helpers:
                 helper.result()

@@ -19,8 +19,11 @@ from rcbench.engine.compiled import kernel, part
 from rcbench.engine.noise import SOURCES, ErrorPlaces, NoiseModel, error_places
 from rcbench.engine.operators import encode
 from rcbench.engine.program import GateRows, Program, apply_row, fuse, gate_rows
+from rcbench.engine.turns import split_turns
 from rcbench.errors import InputError
 from rcbench.randomness import Draw
+
+BLOCK_QUBITS = 15  # up to here a state is one block, and each thread runs trajectories of its own
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -54,13 +57,15 @@ class NoisyProgram:
         return -np.bincount(self.places.source, weights, minlength=len(SOURCES))
 
 
-def noisy_program(circuit: Circuit, noise: NoiseModel, dtype: str, block_bits: int | None = None) -> NoisyProgram:
-    """The program of a circuit with its error places under a noise model; block_bits as in `blocks.plan`."""
+def noisy_program(circuit: Circuit, noise: NoiseModel, dtype: str = "complex64") -> NoisyProgram:
+    """The program of a circuit with its error places under a noise model."""
     if noise.n_qubits != circuit.n_qubits:
         raise InputError("noise", f"{noise.n_qubits} qubits", f"the circuit's {circuit.n_qubits} qubits")
-    rows = _touch_all(gate_rows(circuit))
+    rows = split_turns(_touch_all(gate_rows(circuit)))
     program = fuse(rows)
-    sweeps = plan(encode(program, np.dtype(dtype)), block_bits)
+    sweeps = plan(
+        encode(program, np.dtype(dtype)), program.start, rows.n_qubits if rows.n_qubits <= BLOCK_QUBITS else None
+    )
     program = program.reordered(sweeps.order)
     places = error_places(rows, noise)
     first_op = _first_ops(rows, program)
@@ -85,6 +90,7 @@ def _touch_all(rows: GateRows) -> GateRows:
         np.concatenate([pairs, rows.qubits]),
         np.concatenate([identity, rows.matrices]),
         np.concatenate([np.zeros(count, dtype=bool), rows.held]),
+        np.array([0, count + len(rows)]),
     )
 
 

@@ -16,19 +16,24 @@ from rcbench.arrays import ComplexArray, IntArray
 from rcbench.circuits.circuit import Circuit
 from rcbench.circuits.gates import N_PARAMETERS
 from rcbench.engine import memory
-from rcbench.engine.blocks import aligned
-from rcbench.engine.program import check_order, fuse, gate_rows
-from rcbench.engine.state import evolve, zero_state
+from rcbench.engine.blocks import Plan, aligned, apply_plan
+from rcbench.engine.program import check_order
+from rcbench.engine.state import compile_circuit, zero_state
 from rcbench.engine.threads import Pool
+from rcbench.engine.work import Work
 
 
 @dataclass(slots=True, eq=False)
 class Node:
-    """Gates start to stop of circuit `source`, then the circuits that end here, then the branches."""
+    """Gates start to stop of circuit `source`, then the circuits that end here, then the branches.
+
+    stretch: which of the nodes of that circuit this is.
+    """
 
     source: int
     start: int
     stop: int
+    stretch: int = 0
     ends: list[int] = field(default_factory=list)
     states: int = 1  # states alive at once in a depth-first walk from here
     branches: dict[bytes, Node] = field(default_factory=dict)
@@ -56,9 +61,11 @@ def layer_keys(circuit: Circuit) -> tuple[IntArray, list[bytes]]:
 
 def build_tree(circuits: Sequence[Circuit]) -> Node:
     """The tree of circuits of one register size; runs of layers without a branch or an end are one node."""
-    root = Node(0, 0, 0)
-    for index, circuit in enumerate(circuits):
-        stops, keys = layer_keys(circuit)
+    root = Node(-1, 0, 0)
+    layers = [layer_keys(circuit) for circuit in circuits]
+    # the deepest first: a path of nested depths then belongs to one circuit, and is compiled at once
+    for index in sorted(range(len(circuits)), key=lambda index: -len(layers[index][1])):
+        stops, keys = layers[index]
         node, start = root, 0
         for stop, key in zip(stops.tolist(), keys, strict=True):
             if key not in node.branches:
@@ -78,7 +85,7 @@ def _join(root: Node) -> None:
         for key, child in node.branches.items():
             while not child.ends and len(child.branches) == 1:
                 (below,) = child.branches.values()
-                child = Node(below.source, child.start, below.stop, below.ends, branches=below.branches)
+                child = Node(below.source, child.start, below.stop, ends=below.ends, branches=below.branches)
             node.branches[key] = child
             waiting.append(child)
 
@@ -102,6 +109,7 @@ def walk(
     dtype: str = "complex64",
     memory_limit: int | None = None,
     threads: int | None = None,
+    work: Work | None = None,
 ) -> Iterator[tuple[int, ComplexArray]]:
     """The final state of every circuit, shared beginnings evolved once.
 
@@ -110,6 +118,7 @@ def walk(
         dtype: "complex64" or "complex128".
         memory_limit: bytes that may be taken; the free memory where None.
         threads: cores to use; all that this process may use where None.
+        work: what is done is added to it.
     Yields:
         (index of the circuit, (2**n,) state), in no particular order. The array is reused after the next step and must
         not be written to.
@@ -118,20 +127,58 @@ def walk(
     """
     for circuit in circuits:
         check_order(circuit)
-    for n_qubits in sorted({circuit.n_qubits for circuit in circuits}):
-        members = [index for index, circuit in enumerate(circuits) if circuit.n_qubits == n_qubits]
-        root = build_tree([circuits[index] for index in members])
-        needed = memory.bytes_needed(n_qubits, dtype, states=root.states)
-        memory.require(needed, memory_limit, f"{root.states} states of {n_qubits} qubits")
-        with Pool(threads) as pool:
-            waiting = [(root, zero_state(n_qubits, dtype), False)]
-            while waiting:
-                node, state, others_wait = waiting.pop()
-                if others_wait:
-                    state, original = aligned(len(state), state.dtype), state
-                    state[:] = original
-                evolve(state, fuse(gate_rows(circuits[members[node.source]], node.start, node.stop)), pool)
-                for index in node.ends:
-                    yield members[index], state
-                # the first branch is taken up last and needs no copy
-                waiting += [(child, state, place > 0) for place, child in enumerate(node.branches.values())]
+    work = Work() if work is None else work
+    with Pool(threads) as pool:
+        for n_qubits in sorted({circuit.n_qubits for circuit in circuits}):
+            members = [index for index, circuit in enumerate(circuits) if circuit.n_qubits == n_qubits]
+            root = build_tree([circuits[index] for index in members])
+            needed = memory.bytes_needed(n_qubits, dtype, states=root.states)
+            memory.require(needed, memory_limit, f"{root.states} states of {n_qubits} qubits")
+            work.holds(needed)
+            work.circuits += len(members)
+            for index, state in _walk(root, [circuits[index] for index in members], dtype, pool, work):
+                yield members[index], state
+
+
+def _walk(
+    root: Node, circuits: list[Circuit], dtype: str, pool: Pool, work: Work
+) -> Iterator[tuple[int, ComplexArray]]:
+    cuts = _cuts(root)
+    plans: dict[int, Plan] = {}
+    left = {source: len(bounds) - 1 for source, bounds in cuts.items()}
+    waiting = [(root, zero_state(circuits[0].n_qubits, dtype), False)]
+    while waiting:
+        node, state, others_wait = waiting.pop()
+        if others_wait:
+            state, original = aligned(len(state), state.dtype), state
+            state[:] = original
+        source = node.source
+        if source >= 0:
+            with work.timed():
+                if source not in plans:
+                    plans[source] = compile_circuit(circuits[source], dtype, cuts[source])
+                plan = plans[source]
+                begin, end = plan.stretch[node.stretch : node.stretch + 2].tolist()
+                apply_plan(state, plan, pool, begin, end)
+            work.amplitudes += float(len(state) * (plan.start[end] - plan.start[begin]))
+            left[source] -= 1
+            if not left[source]:
+                del plans[source]
+        for index in node.ends:
+            yield index, state
+        # the first branch is taken up last and needs no copy
+        waiting += [(child, state, place > 0) for place, child in enumerate(node.branches.values())]
+
+
+def _cuts(root: Node) -> dict[int, list[int]]:
+    """Where the nodes of each circuit begin, and the end; numbers the nodes. They follow each other without a gap."""
+    cuts: dict[int, list[int]] = {}
+    waiting = [root]
+    while waiting:
+        node = waiting.pop()
+        waiting += node.branches.values()
+        if node.source >= 0:
+            bounds = cuts.setdefault(node.source, [node.start])
+            node.stretch = len(bounds) - 1
+            bounds.append(node.stop)
+    return cuts

@@ -45,11 +45,13 @@ class Kit:
         return text
 
     def circuit(self, row: RosterRow) -> Circuit:
-        """The circuit of a row, read from the kit's text."""
+        """The circuit of a row, read from the kit's text; an adopted one without the qubits that it leaves alone."""
         from rcbench.circuits.qasm import read_circuit
+        from rcbench.circuits.relabel import restrict, used_qubits
 
         name = circuit_file(row.circuit_id, self.campaign.circuit_format)
-        return read_circuit(self.text(row), self.campaign.circuit_format, name)
+        circuit = read_circuit(self.text(row), self.campaign.circuit_format, name)
+        return circuit if circuit.n_qubits == row.n_qubits else restrict(circuit, used_qubits(circuit))
 
     def protocol(self, experiment: Experiment | str) -> Protocol:
         """The protocol of an experiment."""

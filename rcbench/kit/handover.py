@@ -105,7 +105,7 @@ def handover(campaign: Campaign, rows: Sequence[RosterRow], kit_hash: str) -> st
         suffix=SUFFIX[campaign.circuit_format],
         packed=", in one of the zip archives there" if len(rows) > PACK_ABOVE else "",
         batches=_batches(campaign, rows),
-        sample=_sample(rows),
+        sample=sample_shots(rows),
     )
     return text + (_INVENTED if device.invented else "")
 
@@ -125,7 +125,7 @@ def _batches(campaign: Campaign, rows: Sequence[RosterRow]) -> str:
     return "\n".join(lines) + "\n"
 
 
-def _sample(rows: Sequence[RosterRow]) -> str:
+def sample_shots(rows: Sequence[RosterRow]) -> str:
     """Some rows of a file of shots, with made-up outcomes."""
     lines = ["circuit_id,bitstring,count"]
     for number, row in enumerate(rows[:2]):

@@ -45,7 +45,7 @@ class Store:
 
     folder: Path
     _archives: dict[str, Path] | None = field(default=None)
-    _open: tuple[Path, zipfile.ZipFile] | None = field(default=None)
+    _open: dict[Path, zipfile.ZipFile] = field(default_factory=dict)
 
     def read(self, name: str) -> str:
         """The text of a circuit's file; InputError names a file that is missing or damaged."""
@@ -78,9 +78,7 @@ class Store:
         return self._archives.get(name)
 
     def _opened(self, path: Path) -> zipfile.ZipFile:
-        """The archive, kept open while circuits of it are read."""
-        if self._open is None or self._open[0] != path:
-            if self._open is not None:
-                self._open[1].close()
-            self._open = (path, zipfile.ZipFile(path))
-        return self._open[1]
+        """The archive, kept open: circuits are asked for in any order."""
+        if path not in self._open:
+            self._open[path] = zipfile.ZipFile(path)
+        return self._open[path]

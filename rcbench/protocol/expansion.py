@@ -7,7 +7,7 @@ from dataclasses import dataclass, field, replace
 from itertools import product
 from typing import Any
 
-from rcbench.campaign import Campaign, Experiment
+from rcbench.campaign import ADOPTED, Campaign, Experiment
 from rcbench.circuits import transform
 from rcbench.circuits.circuit import Circuit
 from rcbench.circuits.families import draw_circuits
@@ -119,20 +119,30 @@ class Expander:
     _turned: dict[tuple[int, str, str], Circuit] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
-        for role in self.protocol.roles:
-            if role.target == "given":
-                allowed = (
-                    f"a protocol that builds circuits; {self.protocol.name!r} only serves circuits that are adopted"
-                )
-                raise InputError("protocol", self.protocol.name, allowed, f"experiment {self.experiment.name!r}: ")
-        self.placement = place(self.protocol, self.experiment, self.campaign.device)
+        name, experiment = self.protocol.name, self.experiment
+        if experiment.circuits.family == ADOPTED or any(role.target == "given" for role in self.protocol.roles):
+            key, found = ("family", ADOPTED) if experiment.circuits.family == ADOPTED else ("protocol", name)
+            raise InputError(
+                key, found, "what circuits can be drawn for; this one serves adopted circuits", self._where
+            )
+        self.placement = place(self.protocol, experiment, self.campaign.device)
+
+    @property
+    def _where(self) -> str:
+        return f"experiment {self.experiment.name!r}: "
 
     def slots(self, instance: int) -> Iterator[Slot]:
         """The circuits of an instance."""
         return plan(self.protocol, self.experiment, self.placement, instance)
 
     def write(self, slot: Slot) -> Written:
-        """The circuit of a slot."""
+        """The circuit of a slot; InputError names the experiment and what its device lacks."""
+        try:
+            return self._write(slot)
+        except InputError as error:
+            raise error.at(self._where) from None
+
+    def _write(self, slot: Slot) -> Written:
         if slot.instance != self._instance:
             self._instance = slot.instance
             self._drawn, self._turned = {}, {}
@@ -192,8 +202,7 @@ class Expander:
             for a, b in self.campaign.device.couplers:
                 if a in at and b in at and gate.at((a, b)) != gate.at((at[a], at[b])):
                     found = f"{gate.name} {gate.at((a, b))} on {a}-{b}, {gate.at((at[a], at[b]))} on {at[a]}-{at[b]}"
-                    where = f"experiment {self.experiment.name!r}: "
-                    raise InputError(f"registers.{register}", found, "the same angles on corresponding couplers", where)
+                    raise InputError(f"registers.{register}", found, "the same angles on corresponding couplers")
 
 
 def expand(protocol: Protocol, experiment: Experiment, campaign: Campaign) -> Iterator[PlannedCircuit]:

@@ -16,8 +16,9 @@ from rcbench.circuits.cliffords import CLIFFORD1
 from rcbench.circuits.compile import add_two_qubit
 from rcbench.circuits.ensembles import haar_unitaries
 from rcbench.circuits.families import served
-from rcbench.circuits.frames import FLIPS, LETTERS, PAULIS, randomised, unseen
+from rcbench.circuits.frames import randomised
 from rcbench.circuits.joining import joined, relabelled, side_by_side
+from rcbench.circuits.passage import FLIPS, LETTERS, PAULIS, unseen
 from rcbench.device import Device
 from rcbench.errors import InputError
 from rcbench.protocol.language import (
@@ -180,7 +181,7 @@ class _Writer:
                 self.pairs([(control, site)], controlled)
             return
         if step.angle is not None:
-            gate = np.cos(step.angle) * _EYE - 1j * np.sin(step.angle) * gate
+            gate = np.cos(step.angle / 2) * _EYE - 1j * np.sin(step.angle / 2) * gate
         self.flush()
         self.wait(sites, np.broadcast_to(gate, (len(sites), 2, 2)))
         self.flush()

@@ -1,9 +1,9 @@
 """Haar-random states and unitaries: what a perfect scrambler shows on average.
 
-States: `purity`, `purity_variance`, `vonneumann_entropy`, `renyi2_entropy`, `tmi_vonneumann`, `tmi_renyi2`. Unitaries, as
-Choi states with n input and n output qubits: `operator_purity`, `operator_tmi_renyi2`, `operator_tmi_halves`,
-`operator_tmi_bound`. Correlators and operators: `otoc`, `otoc_of`, `otoc_spread`, `average_otoc`, `operator_size`,
-`operator_size_distribution`.
+States: `purity`, `purity_variance`, `vonneumann_entropy`, `renyi2_entropy`, `tmi_vonneumann`, `tmi_renyi2`.
+Unitaries, as Choi states with n input and n output qubits: `operator_purity`, `operator_tmi_renyi2`,
+`operator_tmi_halves`, `operator_tmi_bound`. Correlators and operators: `otoc`, `otoc_of`, `otoc_spread`,
+`average_otoc`, `operator_size`, `operator_size_distribution`.
 
 Entropies are in nats. Sizes are numbers of qubits; whole numbers are exact inside, so 1000 qubits are served. Every
 call costs microseconds.
@@ -222,7 +222,7 @@ def otoc(n_qubits: int) -> float:
 
     Source: Roberts and Yoshida, JHEP 04 (2017) 121, arXiv:1610.04903.
     """
-    return -1 / (4 ** whole("n_qubits", n_qubits, 1, MOST_QUBITS) - 1)
+    return -1 / ((1 << 2 * whole("n_qubits", n_qubits, 1, MOST_QUBITS)) - 1)
 
 
 def otoc_spread(n_qubits: int) -> float:
@@ -263,7 +263,8 @@ def operator_size(n_qubits: int) -> float:
     Source: uniform over the non-identity Pauli strings; Nahum, Vijay and Haah, PRX 8, 021014 (2018).
     """
     n_qubits = whole("n_qubits", n_qubits, 1, MOST_QUBITS)
-    return 3 * n_qubits * 4**n_qubits / (4 * (4**n_qubits - 1))
+    strings = 1 << 2 * n_qubits
+    return 3 * n_qubits * strings / (4 * (strings - 1))
 
 
 def operator_size_distribution(n_qubits: int) -> FloatArray:

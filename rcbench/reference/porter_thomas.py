@@ -7,7 +7,7 @@ Entropies are in nats. `dimension` is D = 2^n, a whole number of any size.
 from __future__ import annotations
 
 from fractions import Fraction
-from math import factorial, prod
+from math import prod
 
 import numpy as np
 from scipy.special import digamma
@@ -53,7 +53,7 @@ def moment(k: int, dimension: int) -> float:
     Source: as `tail`.
     """
     k, d = whole("k", k, 0), whole("dimension", dimension, 2)
-    return factorial(k) * d**k / prod(range(d, d + k))
+    return float(prod(Fraction((j + 1) * d, d + j) for j in range(k)))
 
 
 def collision_probability(dimension: int) -> float:

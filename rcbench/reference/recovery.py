@@ -1,8 +1,8 @@
 """Hayden-Preskill recovery by a probabilistic decoder: how well a scrambled message comes back.
 
-A message A (n_message qubits, maximally entangled with a reference) and the rest go through U; the decoder runs U* on its own
-copies and projects n_read output qubits D and their copies on Bell pairs. P is the probability that the projection
-succeeds, F the fidelity of the recovered Bell pairs, P F = 1 / d_A^2 for every unitary.
+A message A (n_message qubits, maximally entangled with a reference) and the rest go through U; the decoder runs U* on
+its own copies and projects n_read output qubits D and their copies on Bell pairs. P is the probability that the
+projection succeeds, F the fidelity of the recovered Bell pairs, P F = 1 / d_A^2 for every unitary.
 """
 
 from __future__ import annotations
@@ -21,13 +21,13 @@ def projection_probability(n_message: int, n_read: int, n_qubits: int) -> float:
     Source: Yoshida and Kitaev, arXiv:1710.03363; the exact mean from Hosur et al., arXiv:1511.04021.
     """
     n = whole("n_qubits", n_qubits, 1, MOST_QUBITS)
-    a, d = (4 ** whole(key, size, 1, n) for key, size in (("n_message", n_message), ("n_read", n_read)))
-    full = 4**n - 1
+    a, d = (1 << 2 * whole(key, size, 1, n) for key, size in (("n_message", n_message), ("n_read", n_read)))
+    full = (1 << 2 * n) - 1
     return ((a + d - 1) * full - (a - 1) * (d - 1)) / (a * d * full)
 
 
 def recovery_fidelity(projection: float, n_message: int) -> float:
-    """F of the recovered Bell pairs for a unitary with projection probability P: 1 / (d_A^2 P), exact instance by instance.
+    """F of the recovered Bell pairs for a unitary with projection probability P: 1 / (d_A^2 P), for every instance.
 
     Args:
         projection: P, from 1 / d_A^2 (perfect recovery, or all noise) to 1 (nothing scrambled). n_message: 1 or more.
@@ -36,7 +36,7 @@ def recovery_fidelity(projection: float, n_message: int) -> float:
 
     Source: Yoshida and Kitaev, arXiv:1710.03363.
     """
-    a = 4 ** whole("n_message", n_message, 1, MOST_QUBITS // 2)
+    a = 1 << 2 * whole("n_message", n_message, 1, MOST_QUBITS // 2)
     return 1 / (a * between("projection", projection, (1 - 1e-9) / a, 1 + 1e-9))
 
 
@@ -48,7 +48,7 @@ def teleported_fidelity(recovery: float, n_message: int) -> float:
 
     Source: M., P. and R. Horodecki, Phys. Rev. A 60, 1888 (1999) (from memory).
     """
-    a = 2 ** whole("n_message", n_message, 1, MOST_QUBITS)
+    a = 1 << whole("n_message", n_message, 1, MOST_QUBITS)
     return (a * between("recovery", recovery, 0, 1) + 1) / (a + 1)
 
 
@@ -63,7 +63,7 @@ def noisy_projection(projection: float, survival: float, n_read: int) -> float:
     Source: Yoshida and Yao, PRX 9, 011006 (2019), arXiv:1803.10772; formula re-derived for this noise.
     """
     s = between("survival", survival, 0, 1)
-    return s * between("projection", projection, 0, 1) + (1 - s) / 4 ** whole("n_read", n_read, 1, 500)
+    return s * between("projection", projection, 0, 1) + (1 - s) / (1 << 2 * whole("n_read", n_read, 1, 500))
 
 
 def noise_parameter(survival: float, n_read: int) -> float:

@@ -6,7 +6,7 @@ from collections.abc import Iterable
 from operator import index
 from typing import SupportsIndex
 
-from rcbench.errors import InputError
+from rcbench.errors import InputError, suggest
 
 MOST_QUBITS = 1000  # 2**1000 still is a double; above 1023 qubits it is not
 
@@ -25,9 +25,13 @@ def whole(key: str, found: SupportsIndex, low: int, high: int | None = None, why
 
 def between(key: str, found: float, low: float, high: float) -> float:
     """A real number from low to high (both allowed)."""
-    if not low <= found <= high:
+    try:
+        value = float(found)
+    except (TypeError, ValueError):
+        value = float("nan")
+    if not low <= value <= high:
         raise InputError(key, found, f"a number from {low:g} to {high:g}")
-    return float(found)
+    return value
 
 
 def qubits_of(key: str, found: Iterable[SupportsIndex], n_qubits: int) -> tuple[int, ...]:
@@ -40,8 +44,6 @@ def qubits_of(key: str, found: Iterable[SupportsIndex], n_qubits: int) -> tuple[
 
 def one_of(key: str, found: str, names: Iterable[str]) -> str:
     """One of some names."""
-    from rcbench.errors import suggest
-
     allowed = tuple(names)
     if found not in allowed:
         raise InputError(key, found, suggest(str(found), allowed))

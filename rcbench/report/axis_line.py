@@ -44,7 +44,7 @@ def above(axis: str, points: Curve, threshold: float, level: str, what: str) -> 
     elif at.value == -math.inf:
         text = f"{axis} above {threshold:g} until before depth {first:g} {ends(at, points, level, up=False)}"
     else:
-        depth = int(last) if at.value == math.inf else math.floor(at.value)
+        depth = int(last) if at.value == math.inf else last_layer(at.value)
         text = f"{axis} above {threshold:g} until depth {depth} {ends(at, points, level, up=False)}"
     return Line(
         axis=axis,
@@ -57,9 +57,19 @@ def above(axis: str, points: Curve, threshold: float, level: str, what: str) -> 
     )
 
 
+def first_layer(depth: float) -> int:
+    """The first whole layer at a depth or after it; a thousandth of a layer is no layer."""
+    return math.ceil(depth - 1e-3)
+
+
+def last_layer(depth: float) -> int:
+    """The last whole layer at a depth or before it."""
+    return math.floor(depth + 1e-3)
+
+
 def ends(at: Crossing, points: Curve, level: str, *, up: bool) -> str:
     """The interval of a crossing in whole layers; up: the first layer below the level, else the last above it."""
-    rounded = math.ceil if up else math.floor
+    rounded = first_layer if up else last_layer
     first, last = points.depth[0], points.depth[-1]
     low = str(rounded(at.low)) if math.isfinite(at.low) else f"{'≤' if up else '<'} {first:g}"
     high = str(rounded(at.high)) if math.isfinite(at.high) else (f"> {last:g}" if at.high > 0 else f"≤ {first:g}")

@@ -2,10 +2,10 @@
 
 from __future__ import annotations
 
-import math
+from collections.abc import Mapping
 from dataclasses import dataclass
 
-from rcbench.report.axis_line import Line
+from rcbench.report.axis_line import Line, first_layer, last_layer
 from rcbench.report.kept_line import faithful_line, kept_line
 from rcbench.report.rule import KEPT_ABOVE
 from rcbench.report.source import NOT_STATED, Group, Source, groups
@@ -79,7 +79,7 @@ def _window(spread: Line, kept: Line, threshold: float, depths: list[int]) -> st
 
 def _layers(spread: float, kept: float, depths: list[int]) -> tuple[int, int]:
     """First and last whole layer of a window, within the depths tested."""
-    return math.ceil(max(spread, depths[0])), math.floor(min(kept, depths[-1]))
+    return first_layer(max(spread, depths[0])), last_layer(min(kept, depths[-1]))
 
 
 def _span(start: int, end: int) -> str:
@@ -100,7 +100,8 @@ def _scope(source: Source, group: Group) -> str:
 
 def dates(source: Source) -> str:
     """When the data were taken, as far as it was stated."""
-    start = source.execution("started", "start", "first_shot", "start_time", "date")
-    end = source.execution("ended", "finished", "end", "last_shot", "end_time")
-    days = list(dict.fromkeys(text[:10] for text in (start, end) if text != NOT_STATED))
+    took = source.audit.get("wall_time")
+    ends = [took.get("first"), took.get("last")] if isinstance(took, Mapping) else []
+    texts = [str(text) for text in ends if text] or [source.execution(key) for key in ("started", "ended")]
+    days = list(dict.fromkeys(text[:10] for text in texts if text != NOT_STATED))
     return f"data taken {' to '.join(days)}" if days else "date of the data not stated"

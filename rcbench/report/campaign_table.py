@@ -31,7 +31,10 @@ def experiments_table(source: Source) -> Table:
                 )
             )
         )
-    columns = "experiment, protocol, circuits, qubits, depths, instances>, shots a circuit>, circuits in all>, shots in all>, control for"
+    columns = (
+        "experiment, protocol, circuits, qubits, depths, instances>, shots a circuit>, circuits in all>, "
+        "shots in all>, control for"
+    )
     return table("experiments", "Experiments as planned", columns, rows)
 
 

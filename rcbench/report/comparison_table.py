@@ -36,7 +36,7 @@ def comparison_table(source: Source) -> Table:
 
 
 def fits_table(source: Source, name: str) -> Table | None:
-    """What holds for all depths of an experiment together, as the loss a layer, which no curve shows; None without any."""
+    """What holds for all depths of an experiment together, as the loss a layer; None without any."""
     frame = source.comparison
     rows = frame[(frame["experiment"] == name) & frame["depth"].isna()]
     if rows.empty:
@@ -49,12 +49,12 @@ def fits_table(source: Source, name: str) -> Table | None:
 
 
 def _block(experiment: Experiment, key: str, rows: pd.DataFrame) -> list[Row]:
-    """The lines of one signature; what they have in common stands in the head, small values as multiples of a power of ten."""
+    """The lines of one signature; the head holds what they have in common, and the power of ten of small values."""
     if rows.empty:
         return []
     row = signature(key)
     size = rows[["measured", "ideal", "noise_model"]].abs().max(axis=None)
-    power = small_power(float(size))
+    power = small_power(size)
     scale = 10.0**power
     digits = decimals_for((rows["std_error"] * scale).median())
     low, high = rows["margin"].min() * scale, rows["margin"].max() * scale
@@ -83,9 +83,10 @@ def _line(rows: pd.DataFrame, scale: float, digits: int) -> Row:
         said = f"{len(rows)} regions: " + "; ".join(
             f"{count} {finding_text(name)}" for name, count in by.items() if count
         )
-        widest = rows["difference"].abs().idxmax() if rows["difference"].notna().any() else rows.index[0]
+        size = rows["difference"].abs().fillna(-1.0)
+        widest = rows.iloc[int(size.argmax())]
         measured = _with(fixed(mean["measured"], digits), "mean")
-        difference = _with(fixed(rows.loc[widest, "difference"] * scale, digits), "largest")
+        difference = _with(fixed(widest["difference"] * scale, digits), "largest")
     else:
         mark = str(first["finding"])
         said = finding_text(mark, str(first["direction"])) + (f": {first['note']}" if first["note"] else "")
@@ -171,11 +172,25 @@ def disagreements(source: Source) -> Table:
     return table("disagreements", "Departures from the prediction tested against", columns, lines)
 
 
+def disagreements_in_brief(source: Source) -> list[str]:
+    """What departs, one line an experiment."""
+    found = []
+    for experiment in source.campaign.experiments:
+        rows = source.comparison[source.comparison["experiment"] == experiment.name]
+        off = rows[rows["finding"] == "departs"]
+        if len(off):
+            titles = ", ".join(signature(key).title for key in dict.fromkeys(off["signature"]))
+            said = "/".join(sorted({text for text in off["direction"] if text})) or "departs"
+            tested = int((rows["finding"] != "not-tested").sum())
+            found.append(f"{experiment.name}: {titles} ({said}; {whole(len(off))} of {whole(tested)} rows).")
+    return found
+
+
 def _disagreement(source: Source, experiment: Experiment, key: str, rows: pd.DataFrame) -> Row:
     off = rows[rows["finding"] == "departs"]
     tested = int((rows["finding"] != "not-tested").sum())
     depths = off["depth"].dropna()
-    worst = off.loc[(off["difference"] / off["u_combined"]).abs().idxmax()]
+    worst = off.iloc[int((off["difference"] / off["u_combined"]).abs().fillna(0.0).argmax())]
     digits = decimals_for(worst["u_combined"])
     at = [
         f"depth {worst['depth']:g}" if np.isfinite(worst["depth"]) else "",

@@ -17,7 +17,7 @@ MOST_MISSING = 0.2
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Curve:
-    """A quantity against depth. depth, value, low, high: (k,), rising in depth, all finite; low and high bound the band."""
+    """A quantity against depth, all finite. depth, value, low, high: (k,), rising in depth; low to high is the band."""
 
     depth: FloatArray
     value: FloatArray
@@ -86,51 +86,62 @@ def compared_curve(source: Source, experiment: str, signature: str) -> Curve:
 def by_instance(source: Source, experiment: str, signature: str, depth: float) -> tuple[FloatArray, FloatArray]:
     """(value, std_error), each (instances, regions), repeats averaged; NaN where an instance gave no value."""
     rows = source.estimated(experiment, signature)
-    rows = rows[(rows["depth"] == depth) & rows["value"].notna()]
+    # an instance that came back incomplete has one empty row without a region: it is missing, not refused
+    rows = rows[(rows["depth"] == depth) & (rows["value"].notna() | (rows["region"] != ""))]
     if rows.empty:
         return np.zeros((0, 0)), np.zeros((0, 0))
     same = rows.assign(variance=rows["std_error"] ** 2).groupby(["instance", "region"])
     value = same["value"].mean().unstack("region")
-    error = (np.sqrt(same["variance"].sum()) / same["variance"].size()).unstack("region")
+    error = (np.sqrt(same["variance"].sum()) / same["variance"].count()).unstack("region")
     return value.to_numpy(dtype=np.float64), error.to_numpy(dtype=np.float64)
 
 
 def mean_over_regions(
     source: Source, experiment: str, signature: str, *, from_value: float | None = None
 ) -> tuple[Curve, bool]:
-    """The mean over regions against depth: of the value, or of its distance from `from_value`.
+    """The mean over regions against depth: of the value, or of its distance from `from_value`; see `band`.
 
-    The distance is |mean over instances - from_value|, averaged over regions. Its error is the jackknife over whole
-    instances (Efron and Stein, Ann. Stat. 9, 586 (1981)) with Student's t, since the regions of one instance share
-    circuits and shots. With fewer than FEWEST instances there is no scatter to use; the band is then the shot noise,
-    added over regions as if it were common to all. A depth at which some region lacks more than MOST_MISSING of its
-    instances is left out: the ones that remain are a selection.
+    A depth at which some region lacks more than MOST_MISSING of its instances is left out: what remains is a selection.
 
     Returns:
         The curve, and whether its band rests on the scatter between instances at every depth.
     """
     points: list[tuple[float, float, float, float]] = []
     from_scatter = True
-    confidence = source.campaign.confidence
     for depth in sorted(source.estimated(experiment, signature)["depth"].dropna().unique()):
         value, error = by_instance(source, experiment, signature, depth)
         there = np.isfinite(value)
         if value.size == 0 or there.mean(axis=0).min() < 1 - MOST_MISSING:
             continue
-        total, number = np.nansum(value, axis=0), there.sum(axis=0)
-        centre = _mean_distance(total / number, from_value)
-        count = len(value)
-        if number.min() >= FEWEST:
-            left_out = (total - np.nan_to_num(value)) / (number - there)
-            each = np.array([_mean_distance(row, from_value) for row in left_out])
-            spread = math.sqrt((count - 1) / count * float(((each - each.mean()) ** 2).sum()))
-            half = float(stdtrit(count - 1, 0.5 + confidence / 2)) * spread
-        else:
-            from_scatter = False
-            shot = np.sqrt(np.nansum(error**2, axis=0)) / number
-            half = float(ndtri(0.5 + confidence / 2)) * float(shot.mean())
+        centre, half = band(value, error, from_value, source.campaign.confidence)
+        from_scatter &= bool(there.sum(axis=0).min() >= FEWEST)
         points.append((depth, centre, centre - half, centre + half))
     return curve(*(list(column) for column in zip(*points, strict=True)) if points else ([], [], [], [])), from_scatter
+
+
+def band(value: FloatArray, error: FloatArray, origin: float | None, confidence: float) -> tuple[float, float]:
+    """The mean over regions and half the width of its interval; with an origin, of |mean over instances - origin|.
+
+    The error is the jackknife over whole instances with Student's t, since the regions of one instance share circuits
+    and shots. With fewer than FEWEST instances there is no scatter to use; it is then the shot noise, added over
+    regions as if it were common to all.
+
+    Args:
+        value, error: (instances, regions), NaN where an instance gave no value.
+        origin: None for the plain mean. confidence: two-sided.
+
+    Source: Efron and Stein, Ann. Stat. 9, 586 (1981).
+    """
+    there = np.isfinite(value)
+    total, number, count = np.nansum(value, axis=0), there.sum(axis=0), len(value)
+    centre = _mean_distance(total / number, origin)
+    if number.min() < FEWEST:
+        shot = np.sqrt(np.nansum(error**2, axis=0)) / number
+        return centre, float(ndtri(0.5 + confidence / 2)) * float(shot.mean())
+    left_out = (total - np.nan_to_num(value)) / (number - there)
+    each = np.array([_mean_distance(row, origin) for row in left_out])
+    spread = math.sqrt((count - 1) / count * float(((each - each.mean()) ** 2).sum()))
+    return centre, float(stdtrit(count - 1, 0.5 + confidence / 2)) * spread
 
 
 def _mean_distance(values: FloatArray, origin: float | None) -> float:

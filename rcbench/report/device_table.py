@@ -14,8 +14,8 @@ from rcbench.report.table import Row, Table, table
 def device_table(source: Source) -> Table:
     """One row a stated rate over the working qubits or couplers; T1 and T2 with their shortest."""
     device, errors = source.campaign.device, source.campaign.device.errors
-    qubits = [(qubit,) for qubit in device.working_qubits]
-    couplers = list(device.couplers)
+    qubits: list[tuple[int, ...]] = [(qubit,) for qubit in device.working_qubits]
+    couplers: list[tuple[int, ...]] = list(device.couplers)
     rows: list[Row] = []
     if errors is not None:
         for name, rate, places in (

@@ -14,12 +14,13 @@ from matplotlib.lines import Line2D
 from rcbench.campaign import Experiment
 from rcbench.report import figures as look
 from rcbench.report.curves import mean_over_regions
-from rcbench.report.printed import number, small_power
+from rcbench.report.printed import number, percent, small_power
 from rcbench.report.source import Source
 from rcbench.signatures.registry import signature
 
 _SCALED = (
-    "measured", "ci_low", "ci_high", "ideal", "noise_model", "null_value", "difference", "diff_ci_low", "diff_ci_high", "margin",
+    "measured", "ci_low", "ci_high", "ideal", "noise_model", "null_value", "difference", "diff_ci_low",
+    "diff_ci_high", "margin",
 )  # fmt: skip
 MOST_POINTS = 500  # in the instance panel; beyond, regions are averaged
 
@@ -31,7 +32,7 @@ def decay_figure(source: Source, experiment: Experiment, key: str, folder: Path)
     if rows["measured"].isna().all():
         return None
     title = signature(key).title
-    power = small_power(float(rows[["measured", "noise_model", "ideal"]].abs().max(axis=None)))
+    power = small_power(rows[["measured", "noise_model", "ideal"]].abs().max(axis=None))
     scale = 10.0**power
     words = _words(source, experiment, key, rows)
     rows = rows.assign(**{column: rows[column] * scale for column in _SCALED})
@@ -50,18 +51,13 @@ def decay_figure(source: Source, experiment: Experiment, key: str, folder: Path)
         _residuals(below, experiment, rows)
         _instances(side, source, experiment, key, scale)
         regions = rows["region"].nunique()
-        name = textwrap.fill(title, 22) + (f" / {10.0**-power:.{power}f}" if power else "")
+        name = textwrap.fill(title, 22) + (f"\nin units of {10.0**-power:.{power}f}" if power else "")
         top.set_ylabel(name if regions == 1 else f"{name}\nmean of {regions} regions")
         top.tick_params(labelbottom=False)
         below.set_xlabel("depth (layers of two-qubit gates, one way)")
         top.yaxis.set_label_coords(-0.14, 0.5)
         below.yaxis.set_label_coords(-0.14, 0.5)
-        handles, labels = top.get_legend_handles_labels()
-        order = sorted(range(len(labels)), key=lambda at: labels[at] != "measured")
-        figure.legend(
-            [handles[at] for at in order], [labels[at] for at in order], loc="upper left", ncols=6,
-            bbox_to_anchor=(0.0, 1.0), columnspacing=1.4, handlelength=2.6, borderaxespad=0.1,
-        )  # fmt: skip
+        look.legend_above(figure, top, columns=6)
         return look.finish(figure, folder, f"{experiment.name}-{key}", *words)
 
 
@@ -69,11 +65,11 @@ def _words(source: Source, experiment: Experiment, key: str, rows: pd.DataFrame)
     title, against = signature(key).title, experiment.against.replace("-", " ")
     counts = rows["finding"].value_counts()
     said = ", ".join(f"{name.replace('-', ' ')} {counts[name]}" for name in look.FINDING_MARKERS if name in counts)
-    level = f"{100 * source.campaign.confidence:g} %"
+    level = percent(source.campaign.confidence)
     caption = (
         f"{title} of {experiment.name}. Top: measured with {level} intervals, ideal, and noise model with twice the "
-        f"standard uncertainty of the stated rates. Below: measured minus {against}, paired by circuit, with the margin. "
-        f"Right: measured against {against}, one point an instance. Findings: {said}."
+        f"standard uncertainty of the stated rates. Below: measured minus {against}, paired by circuit, with the "
+        f"margin. Right: measured against {against}, one point an instance. Findings: {said}."
     )
     by_depth = rows.groupby("depth")[["measured", "noise_model"]].mean()
     points = "; ".join(
@@ -115,7 +111,7 @@ def _curves(axes: Axes, source: Source, experiment: Experiment, key: str, rows: 
             label="± 2u of stated rates",
         )  # fmt: skip
     null = mean["null_value"]
-    bottom, top = axes.get_ylim()
+    bottom = axes.get_ylim()[0]
     if null.notna().any() and (not log or (null > bottom).all()):
         axes.plot(depth, null, color=look.GREY, linestyle=":", linewidth=1.2, label="fully mixed", zorder=1)
     errors = np.abs(np.vstack([mean["measured"] - mean["ci_low"], mean["ci_high"] - mean["measured"]]))
@@ -159,7 +155,9 @@ def _residuals(axes: Axes, experiment: Experiment, rows: pd.DataFrame) -> None:
     several = rows["region"].nunique() > 1
     rows = rows.assign(difference=rows["difference"].where(rows["finding"] != "not-tested", 0.0))
     # regions at one depth stand side by side, not on top of each other
-    place = rows.groupby("depth").cumcount() / np.maximum(rows.groupby("depth")["region"].transform("count") - 1, 1)
+    place: pd.Series[float] = rows.groupby("depth").cumcount() / np.maximum(
+        rows.groupby("depth")["region"].transform("count") - 1, 1
+    )
     gaps = np.diff(np.unique(rows["depth"]))
     width = 0.6 * float(gaps.min()) if several and len(gaps) else 0.0
     at = rows["depth"] + width * (place - 0.5 if several else 0.0)
@@ -190,7 +188,7 @@ def instance_pairs(source: Source, experiment: Experiment, key: str) -> pd.DataF
     keys = ["depth", "instance", "region"]
     measured = source.estimated(experiment.name, key).groupby(keys, as_index=False)[["value", "std_error"]].mean()
     model = source.predicted(experiment.name, key, experiment.against, by_instance=True)
-    model = model.groupby(keys, as_index=False)["value"].mean().rename(columns={"value": "predicted"})
+    model = model.groupby(keys, as_index=False)[["value"]].mean().rename(columns={"value": "predicted"})
     pairs = measured.merge(model, on=keys, how="inner")
     if len(pairs) > MOST_POINTS:
         pairs = pairs.groupby(["depth", "instance"], as_index=False)[["value", "std_error", "predicted"]].mean()

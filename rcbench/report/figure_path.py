@@ -1,8 +1,7 @@
-"""The path by depth in the plane of spread against kept, with the controls that must stay out of one corner."""
+"""The figure of the path: spread against kept by depth, with the controls that must stay out of one corner."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -11,149 +10,19 @@ import pandas as pd
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from rcbench.arrays import FloatArray
-from rcbench.campaign import Experiment
-from rcbench.circuits.schedule import dimer_layers
-from rcbench.randomness import Draw
-from rcbench.regions import read_setting
 from rcbench.report import figures as look
-from rcbench.report.curves import Curve, compared_curve, curve
-from rcbench.report.source import Group, Source
-from rcbench.report.spreading import anticoncentration, scrambled_value, spread_curve
+from rcbench.report.path import KEPT_KEYS, PathData
 
 FAMILIES = ("brickwork", "product", "dimers")
-KEPT_KEYS = {"self_fidelity": "kept", "xeb_fidelity": "faithful, a bound from below"}
+_CORNERS = (  # words, place in the axes, alignment
+    ("not spread, kept", (0.005, 0.985), "left", "top"),
+    ("spread and kept", (0.995, 0.985), "right", "top"),
+    ("not spread, lost", (0.005, 0.015), "left", "bottom"),
+    ("spread, lost", (0.995, 0.015), "right", "bottom"),
+)
 
 
-@dataclass(frozen=True, slots=True)
-class PathData:
-    """The path of one group.
-
-    points: columns family, depth, spread, spread_low, spread_high, kept, kept_low, kept_high, constructed (a control
-    without OTOCs, at the most that its circuits could spread). kept_key: the signature on the upright axis. measured:
-    whether spread was measured by OTOC; else computed from the circuits.
-    model: columns depth, spread, kept of the noise model; ideal: spread of the ideal circuits; both
-    empty where they cannot be drawn. absent: why a control is missing.
-    """
-
-    points: pd.DataFrame
-    kept_key: str
-    measured: bool
-    model: pd.DataFrame
-    ideal: FloatArray
-    absent: tuple[str, ...]
-
-
-def path_data(source: Source, group: Group) -> PathData | None:
-    """Join spread and kept by depth for a group and its controls; None where one of the two axes has no data."""
-    families: dict[str, tuple[Experiment, ...]] = {"brickwork": group.experiments, **group.controls}
-    spread = {family: _spread_of(source, members) for family, members in families.items()}
-    measured = len(spread["brickwork"]) > 0
-    if not measured:
-        spread = {family: _computed_spread(source, members) for family, members in families.items()}
-    for key in KEPT_KEYS:
-        kept = {family: _kept_of(source, members, key) for family, members in families.items()}
-        if len(kept["brickwork"]) and len(spread["brickwork"]):
-            break
-    else:
-        return None
-    frames, absent = [], []
-    for family in families:
-        bound = None
-        if measured and family != "brickwork" and len(spread[family]) == 0 and len(kept[family]):
-            bound = spread_bound(source, group, family)
-            spread[family] = _constant(kept[family], bound)
-        frame = _join(spread[family], kept[family]).assign(constructed=bound is not None)
-        if frame.empty:
-            what = "spread" if len(spread[family]) == 0 else "kept" if len(kept[family]) == 0 else "a common depth"
-            absent.append(f"{family} has no place here: no data on {what}.")
-        frames.append(frame.assign(family=family))
-    points = pd.concat(frames, ignore_index=True)
-    if not (points["family"] == "brickwork").any():
-        return None
-    model, ideal = _model_path(source, group, key) if measured else (pd.DataFrame(), np.zeros(0))
-    return PathData(points, key, measured, model, ideal, tuple(absent))
-
-
-def _spread_of(source: Source, members: tuple[Experiment, ...]) -> Curve:
-    found = [spread_curve(source, experiment) for experiment in members if _has(source, experiment, "otoc")]
-    return found[0] if found else curve([], [], [], [])
-
-
-def _computed_spread(source: Source, members: tuple[Experiment, ...]) -> Curve:
-    """Porter-Thomas collision excess over that of the ideal circuits, at most 1: 1 where outcomes are spread."""
-    for experiment in members:
-        points = anticoncentration(source, experiment)
-        if len(points):
-            ratio = [
-                np.minimum(1 / np.maximum(1 + edge, 1e-9), 1.0) for edge in (points.value, points.high, points.low)
-            ]
-            return Curve(points.depth, *ratio)
-    return curve([], [], [], [])
-
-
-def _kept_of(source: Source, members: tuple[Experiment, ...], key: str) -> Curve:
-    found = [compared_curve(source, experiment.name, key) for experiment in members if _has(source, experiment, key)]
-    return found[0] if found else curve([], [], [], [])
-
-
-def spread_bound(source: Source, group: Group, family: str) -> float:
-    """The most that a control can spread: the share of (butterfly, probe) pairs whose OTOC its circuits can change.
-
-    Without entangling gates that is a probe on the butterfly itself; with fixed partners, also one on its partner.
-    """
-    for experiment in group.experiments:
-        regions = source.compared(experiment.name, "otoc")["region"].unique()
-        pairs = [
-            (setting["butterfly"], setting["probe"]) for setting in map(read_setting, regions) if "probe" in setting
-        ]
-        if not pairs:
-            continue
-        partner: dict[str, str] = {}
-        if family == "dimers":
-            device, depth = source.campaign.device, max(experiment.depths)
-            for layer in dimer_layers(device, experiment.qubits, depth, Draw(source.campaign.seed, "partners")):
-                partner |= {str(a): str(b) for a, b in layer} | {str(b): str(a) for a, b in layer}
-        return sum(probe in (site, partner.get(site)) for site, probe in pairs) / len(pairs)
-    return 0.0
-
-
-def _constant(kept: Curve, bound: float) -> Curve:
-    there = np.full(len(kept), bound)
-    return Curve(kept.depth, there, np.zeros(len(kept)), there)
-
-
-def _has(source: Source, experiment: Experiment, key: str) -> bool:
-    return bool(source.compared(experiment.name, key)["measured"].notna().any())
-
-
-def _join(spread: Curve, kept: Curve) -> pd.DataFrame:
-    def frame(points: Curve, name: str) -> pd.DataFrame:
-        return pd.DataFrame({
-            "depth": points.depth, name: points.value, f"{name}_low": points.low, f"{name}_high": points.high,
-        })  # fmt: skip
-
-    return frame(spread, "spread").merge(frame(kept, "kept"), on="depth", how="inner")
-
-
-def _model_path(source: Source, group: Group, key: str) -> tuple[pd.DataFrame, FloatArray]:
-    """The noise model's own path and the spread of the ideal circuits, by depth, from the averaged predictions."""
-    spread, kept = [], []
-    for experiment in group.experiments:
-        spread += [
-            1 - (rows["value"] - scrambled_value(experiment.n_qubits)).abs().groupby(rows["depth"]).mean()
-            for model in ("noise-model", "ideal")
-            if len(rows := source.predicted(experiment.name, "otoc", model))
-        ]
-        fidelity = source.predicted(experiment.name, key, "noise-model")
-        kept += [fidelity.groupby("depth")["value"].mean()] if len(fidelity) else []
-    if len(spread) < 2 or not kept:
-        return pd.DataFrame(), np.zeros(0)
-    path = pd.DataFrame({"spread": spread[0], "kept": kept[0]}).dropna().rename_axis("depth").reset_index()
-    return path, spread[1].to_numpy(dtype=float)
-
-
-def path_figure(source: Source, data: PathData, threshold: float, folder: Path, name: str) -> look.Picture:
+def path_figure(data: PathData, threshold: float, folder: Path, name: str) -> look.Picture:
     """Draw a path: joined points labelled by depth, the controls with other markers, the noise model's path beneath."""
     with look.style():
         figure = Figure(figsize=(look.WIDE, 4.6), layout="constrained")
@@ -176,73 +45,46 @@ def path_figure(source: Source, data: PathData, threshold: float, folder: Path, 
         axes.set_xlim(min(-0.06, float(data.points["spread"].min()) - 0.06), 1.12)
         top = max(1.08, float(data.points["kept"].max()) + 0.08)
         axes.set_ylim(min(-0.05, float(data.points["kept_low"].min()) - 0.02), top)
-        axes.annotate(
-            "not spread, kept", (0.005, 0.985), xycoords="axes fraction", va="top", color=look.GREY, style="italic"
-        )
-        axes.annotate(
-            "spread and kept",
-            (0.995, 0.985),
-            xycoords="axes fraction",
-            va="top",
-            ha="right",
-            color=look.GREY,
-            style="italic",
-        )
-        axes.annotate(
-            "spread, lost", (0.995, 0.015), xycoords="axes fraction", ha="right", color=look.GREY, style="italic"
-        )
-        axes.annotate("not spread, lost", (0.005, 0.015), xycoords="axes fraction", color=look.GREY, style="italic")
+        for words, place, ha, va in _CORNERS:
+            axes.annotate(words, place, xycoords="axes fraction", ha=ha, va=va, color=look.GREY, style="italic")
         axes.annotate(f"p = {threshold:g}", (1.115, threshold), va="bottom", ha="right", color=look.GREY, fontsize=8)
-        handles, labels = axes.get_legend_handles_labels()
-        order = sorted(range(len(labels)), key=lambda at: (labels[at] != "measured", "control" in labels[at]))
-        figure.legend(
-            [handles[at] for at in order],
-            [labels[at] for at in order],
-            loc="outside upper left",
-            ncols=3,
-            borderaxespad=0.2,
-        )
+        look.legend_above(figure, axes, columns=5)
         return look.finish(figure, folder, name, *_words(data))
 
 
 def _trail(axes: Axes, part: pd.DataFrame, family: str) -> None:
-    kind: dict[str, Any] = (
-        {"color": look.BLACK, "marker": "o"} if family == "brickwork" else dict(look.CONTROLS[family])
-    )
-    errors = [
+    """One family's points. A control at its bound has open markers and no error bar along the spread axis."""
+    device, bound = family == "brickwork", bool(part["constructed"].any())
+    kind: dict[str, Any] = {"color": look.BLACK, "marker": "o"} if device else dict(look.CONTROLS[family])
+    if bound:
+        kind["markerfacecolor"] = "white"
+    x, y = (
         np.abs(np.vstack([part[key] - part[f"{key}_low"], part[f"{key}_high"] - part[key]]))
         for key in ("spread", "kept")
-    ]
-    label = "measured" if family == "brickwork" else f"control: {family}"
-    if part["constructed"].any():
-        label += " (spread at most, by construction)"
-    constructed = bool(part["constructed"].any())
-    if constructed:
-        kind["markerfacecolor"] = "white"
+    )
     axes.errorbar(
-        part["spread"], part["kept"], xerr=None if constructed else errors[0], yerr=errors[1], linestyle="-" if family == "brickwork" else ":",
-        linewidth=1.0, elinewidth=0.8, capsize=2, label=label, zorder=4, markersize=5.5, **kind,
+        part["spread"], part["kept"], xerr=None if bound else x, yerr=y, linestyle="-" if device else ":",
+        label="measured" if device else f"control: {family}{' (at most)' if bound else ''}", linewidth=1.0,
+        elinewidth=0.8, capsize=2, zorder=4, markersize=5.5, **kind,
     )  # fmt: skip
-    for at, row in enumerate(part.itertuples()):
-        # controls hardly move along the path's axis: their labels go to the right, of the first and last only
-        if family != "brickwork" and at not in (0, len(part) - 1):
-            continue
-        offset = (-5, -4) if family == "brickwork" else (8, 0)
-        axes.annotate(
-            f"{row.depth:g}", (row.spread, row.kept), xytext=offset, textcoords="offset points", fontsize=8,
-            ha="right" if family == "brickwork" else "left", va="top" if family == "brickwork" else "center",
-            weight="bold" if family == "brickwork" else "normal",
-        )  # fmt: skip
+    rows: list[Any] = list(part.itertuples())
+    for at, row in enumerate(rows):
+        # controls hardly move along the path's axis: only the first and the last are labelled
+        if device or at in (0, len(part) - 1):
+            axes.annotate(
+                f"{row.depth:g}", (row.spread, row.kept), xytext=(-5, -4) if device else (8, 0),
+                textcoords="offset points", fontsize=8, ha="right" if device else "left",
+                va="top" if device else "center", weight="bold" if device else "normal",
+            )  # fmt: skip
 
 
 def _words(data: PathData) -> tuple[str, str]:
-    parts = []
-    for row in data.points.sort_values(["family", "depth"], kind="stable").itertuples():
-        parts.append(f"{row.family} at depth {row.depth:g}: spread {row.spread:.2f}, kept {row.kept:.2f}")
+    rows: list[Any] = list(data.points.sort_values(["family", "depth"], kind="stable").itertuples())
+    parts = [f"{row.family} at depth {row.depth:g}: spread {row.spread:.2f}, kept {row.kept:.2f}" for row in rows]
     what = (
         "Each point is one depth, labelled. Scrambling moves a point to the right, loss moves it down; a device that "
         "only decoheres falls without moving right once the reference echo divides the loss out. The controls have "
-        "the same one-qubit gates (product) or the same gate count (dimers) and cannot spread."
+        "the same one-qubit gates (product) or the same gate count (dimers, fixed pairs) and cannot spread further."
     )
     if not data.measured:
         what += " No OTOC was measured: spread is computed from the circuits, so the device moves a point down only."

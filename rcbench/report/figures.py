@@ -12,6 +12,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 import matplotlib as mpl
 import numpy as np
@@ -28,12 +29,15 @@ from rcbench.files import write_bytes
 BLACK, BLUE, ORANGE, GREEN, PURPLE, SKY, GREY = (
     "#000000", "#0072B2", "#D55E00", "#009E73", "#CC79A7", "#56B4E9", "#6B6B6B",
 )  # fmt: skip
-MEASURED = {"color": BLACK, "marker": "o", "linestyle": "none"}
-IDEAL = {"color": BLUE, "linestyle": "-", "linewidth": 1.4}
-NOISE_MODEL = {"color": ORANGE, "linestyle": (0, (5, 2)), "linewidth": 1.4}
-CONTROLS = {"product": {"color": GREEN, "marker": "s"}, "dimers": {"color": PURPLE, "marker": "^"}}
+MEASURED: dict[str, Any] = {"color": BLACK, "marker": "o", "linestyle": "none"}
+IDEAL: dict[str, Any] = {"color": BLUE, "linestyle": "-", "linewidth": 1.4}
+NOISE_MODEL: dict[str, Any] = {"color": ORANGE, "linestyle": (0, (5, 2)), "linewidth": 1.4}
+CONTROLS: dict[str, dict[str, Any]] = {
+    "product": {"color": GREEN, "marker": "s"},
+    "dimers": {"color": PURPLE, "marker": "^"},
+}
 # filled: agrees; open: undecided; a cross: departs
-FINDING_MARKERS = {
+FINDING_MARKERS: dict[str, dict[str, Any]] = {
     "agrees": {"marker": "o", "markerfacecolor": BLACK, "markeredgecolor": BLACK},
     "departs": {"marker": "X", "markerfacecolor": ORANGE, "markeredgecolor": BLACK, "markersize": 7.5},
     "undecided": {"marker": "o", "markerfacecolor": "white", "markeredgecolor": BLACK},
@@ -44,12 +48,14 @@ WIDE = 7.4  # inches: the text width of an A4 page
 DPI = 120
 _PREAMBLE = re.compile(r"\A.*?(?=<svg )", re.DOTALL)
 _COMMENTS = re.compile(r"<!--.*?-->\s*|<metadata>.*?</metadata>\s*", re.DOTALL)
+_ID = re.compile(r' id="([^"]*)"')
+_REFERENCE = re.compile(r'(?:href="|url\()#([^")]*)')
 _SIZE = re.compile(r'(<svg [^>]*?)\s+width="[^"]*"|\s+height="[0-9.]+pt"')
 
 
 @dataclass(frozen=True, slots=True)
 class Picture:
-    """A figure as the report shows it. name: of its files; svg: inline SVG; caption; alt: in words, for who cannot see."""
+    """A figure of the report. name: of its files; svg: to stand in the page; caption; alt: the figure in words."""
 
     name: str
     svg: str
@@ -100,6 +106,16 @@ def whole_depths(axes: Axes, depths: list[float]) -> None:
         axes.set_xlim(min(depths) - room, max(depths) + room)
 
 
+def legend_above(figure: Figure, axes: Axes, columns: int) -> None:
+    """One legend above all axes of a figure: the measurement first, controls last."""
+    handles, labels = axes.get_legend_handles_labels()
+    order = sorted(range(len(labels)), key=lambda at: (labels[at] != "measured", "control" in labels[at]))
+    figure.legend(
+        [handles[at] for at in order], [labels[at] for at in order], ncols=columns, columnspacing=1.4, handlelength=2.6,
+        borderaxespad=0.1, loc="upper left" if figure.get_layout_engine() is None else "outside upper left",
+    )  # fmt: skip
+
+
 def log_axis(axes: Axes, values: pd.DataFrame) -> float:
     """A logarithmic upright axis round positive values, with plain numbers at its ticks; gives its lower end."""
     numbers = values.to_numpy(dtype=float)
@@ -122,10 +138,18 @@ def finish(figure: Figure, folder: Path, name: str, caption: str, alt: str) -> P
         engine.execute(figure)  # once; savefig would lay it out and draw it again for each file
         figure.set_layout_engine("none")
     drawn, painted = io.BytesIO(), io.BytesIO()
-    FigureCanvasSVG(figure).print_svg(drawn, metadata={"Date": None, "Creator": None})
+    FigureCanvasSVG(figure).print_svg(drawn, metadata={"Date": None, "Creator": None})  # type: ignore[no-untyped-call]
     write_bytes(folder / f"{name}.svg", drawn.getvalue())
     figure.set_dpi(DPI)
-    FigureCanvasAgg(figure).print_png(painted, metadata={"Software": None})
+    FigureCanvasAgg(figure).print_png(painted, metadata={"Software": None})  # type: ignore[no-untyped-call]
     write_bytes(folder / f"{name}.png", painted.getvalue())
-    text = _COMMENTS.sub("", _PREAMBLE.sub("", drawn.getvalue().decode("utf-8"), count=1))
-    return Picture(name, _SIZE.sub(r"\1", text, count=2), caption, alt)
+    return Picture(name, inline_svg(drawn.getvalue().decode("utf-8"), name), caption, alt)
+
+
+def inline_svg(text: str, name: str) -> str:
+    """SVG to stand in a page: no preamble, no size of its own, and no name of an element that another figure uses."""
+    text = _COMMENTS.sub("", _PREAMBLE.sub("", text, count=1))
+    text = _SIZE.sub(r"\1", text, count=2)
+    used = set(_REFERENCE.findall(text))
+    text = _ID.sub(lambda found: f' id="{name}-{found.group(1)}"' if found.group(1) in used else "", text)
+    return _REFERENCE.sub(lambda found: found.group(0).replace("#", f"#{name}-", 1), text)

@@ -9,6 +9,7 @@ from rcbench.report.source import Group, Source
 
 
 def kept_line(source: Source, group: Group, threshold: float) -> Line:
+    """How long the collision-based self-fidelity stays above the threshold; else a bound by cross-entropy."""
     level = percent(source.campaign.confidence)
     for experiment in group.experiments:
         points = compared_curve(source, experiment.name, "self_fidelity")
@@ -45,6 +46,7 @@ def kept_line(source: Source, group: Group, threshold: float) -> Line:
 
 
 def faithful_line(source: Source, group: Group, threshold: float) -> Line:
+    """How long the cross-entropy fidelity, else an echo of twice the depth, stays above the threshold."""
     level = percent(source.campaign.confidence)
     names = {
         "xeb_fidelity": "cross-entropy fidelity",

@@ -1,10 +1,10 @@
 """Which couplers lose more than the budget says, as far as reference echoes on single probes tell.
 
-An error in layer l of a circuit or of its inverse disturbs a probe's echo only where its gate lies in the probe's light
-cone, counted from the first layer on: what comes after l cancels. So -ln(measured / model) of each probe and depth is taken
-as an offset of the probe (readout, first gates) plus, for each coupler, its excess loss a gate times its gates in the
-cone, twice. The excesses are fitted by non-negative least squares. Not every error in the cone flips the probe, so an
-excess is a pointer to a coupler and no calibration of it.
+An error in layer l of a circuit or of its inverse disturbs a probe's echo only where its gate lies in the probe's
+light cone, counted from the first layer on: what comes after l cancels. So -ln(measured / model) of each probe and
+depth is taken as an offset of the probe (readout, first gates) plus, for each coupler, its excess loss a gate times its
+gates in the cone, twice. The excesses are fitted by non-negative least squares. Not every error in the cone flips the
+probe, so an excess is a pointer to a coupler and no calibration of it.
 """
 
 from __future__ import annotations

@@ -14,16 +14,17 @@ from rcbench.files import shipped
 
 _TEX = {
     "\\": r"\textbackslash{}", "{": r"\{", "}": r"\}", "&": r"\&", "%": r"\%", "$": r"\$", "#": r"\#", "_": r"\_",
-    "~": r"\textasciitilde{}", "^": r"\textasciicircum{}", "<": r"\textless{}", ">": r"\textgreater{}", "|": r"\textbar{}",
-    "±": r"$\pm$", "−": "$-$", "–": "--", "≈": r"$\approx$", "≠": r"$\neq$", "≤": r"$\leq$", "≥": r"$\geq$", "µ": r"\textmu{}",
-    "·": r"$\cdot$", "×": r"$\times$", "…": r"\dots{}", "\u202f": r"\,", '"': "''",
+    "~": r"\textasciitilde{}", "^": r"\textasciicircum{}", "<": r"\textless{}", ">": r"\textgreater{}",
+    "|": r"\textbar{}", '"': "''", "±": r"$\pm$", "−": "$-$", "–": "--", "≈": r"$\approx$", "≠": r"$\neq$",
+    "≤": r"$\leq$", "≥": r"$\geq$", "µ": r"\textmu{}", "·": r"$\cdot$", "×": r"$\times$", "…": r"\dots{}",
+    "\u202f": r"\,", "\u00a0": "~",
 }  # fmt: skip
 _MARKDOWN = re.compile(r"([\\`*_\[\]{}|#~^$])")
 
 
-def tex(text: object) -> str:
+def tex(text: object) -> Markup:
     """Text for LaTeX: every character that LaTeX reads as a command is escaped, line breaks become spaces."""
-    return " ".join("".join(_TEX.get(sign, sign) for sign in str(text)).split("\n"))
+    return Markup(" ".join("".join(_TEX.get(sign, sign) for sign in str(text)).splitlines()))
 
 
 def markdown(text: object) -> Markup:
@@ -33,7 +34,7 @@ def markdown(text: object) -> Markup:
 
 
 def render(name: str, context: Mapping[str, Any]) -> str:
-    """Fill a layout of `reports/`. HTML and Markdown layouts escape every value on their own; LaTeX ones by `tex`.
+    """Fill a layout of `reports/`. Every value is escaped for HTML, Markdown or LaTeX, by the ending before `.jinja`.
 
     Raises:
         InputError: the layout is missing or is no Jinja2 layout (users edit them).
@@ -42,13 +43,13 @@ def render(name: str, context: Mapping[str, Any]) -> str:
     kind = name.split(".")[-2]
     environment = jinja2.Environment(
         loader=jinja2.FileSystemLoader(folder),
-        autoescape=kind == "html",
+        autoescape=True,  # what a macro gives is escaped already, and is marked so
         finalize={"md": _finalize(markdown), "tex": _finalize(tex)}.get(kind),
         undefined=jinja2.StrictUndefined,
         trim_blocks=True,
         lstrip_blocks=True,
         keep_trailing_newline=True,
-        **_delimiters(kind),
+        **(_TEX_DELIMITERS if kind == "tex" else {}),
     )
     try:
         return environment.get_template(name).render(**context)
@@ -60,14 +61,10 @@ def render(name: str, context: Mapping[str, Any]) -> str:
         raise InputError("layout", error.message, "names that the report gives to its layouts", f"{name}: ") from None
 
 
-def _delimiters(kind: str) -> dict[str, str]:
-    """LaTeX has its own use for braces and per cent signs."""
-    if kind != "tex":
-        return {}
-    return {
-        "block_start_string": "<%", "block_end_string": "%>", "variable_start_string": "<<", "variable_end_string": ">>",
-        "comment_start_string": "<#", "comment_end_string": "#>",
-    }  # fmt: skip
+_TEX_DELIMITERS: dict[str, Any] = {  # LaTeX has its own use for braces and per cent signs
+    "block_start_string": "<%", "block_end_string": "%>", "variable_start_string": "<<", "variable_end_string": ">>",
+    "comment_start_string": "<#", "comment_end_string": "#>",
+}  # fmt: skip
 
 
 def _finalize(escape: Any) -> Any:

@@ -75,8 +75,8 @@ def duration(seconds: object) -> str:
 
 
 def percent(level: float) -> str:
-    """A confidence level as ``95 %``."""
-    return f"{100 * level:g} %"
+    """A confidence level as ``95 %``, in one piece."""
+    return f"{100 * level:g}\u00a0%"
 
 
 def depths_text(depths: Iterable[float], tested: Iterable[float]) -> str:

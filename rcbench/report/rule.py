@@ -8,9 +8,9 @@ from __future__ import annotations
 
 KEPT_ABOVE = 0.5
 RULE = (
-    "Spread is complete at the first depth at which the mean over (butterfly, probe) pairs of |OTOC - scrambled value|, "
-    "each pair averaged over instances first, lies within the OTOC margin and does not leave it again, while every "
-    "probe's reference echo stands more than five of its standard errors above zero. The scrambled value is "
+    "Spread is complete at the first depth at which the mean over (butterfly, probe) pairs of |OTOC - scrambled "
+    "value|, each pair averaged over instances first, lies within the OTOC margin and does not leave it again, while "
+    "every probe's reference echo stands more than five of its standard errors above zero. The scrambled value is "
     "-1/(4^n - 1). Where a control that cannot spread falls as well, spread is undecided.",
     "Without an OTOC, spread is read from the circuits: the first depth at which their ideal collision probability is "
     "within 10 % of the Porter-Thomas one, provided the cross-entropy fidelity shows that the device ran them. That "

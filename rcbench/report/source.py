@@ -84,14 +84,10 @@ class Source:
                     return str(value)
         return NOT_STATED
 
-    def execution(self, *keys: str) -> str:
-        """The first of some facts that the device team stated about the execution; else 'not stated'."""
+    def execution(self, key: str) -> str:
+        """A fact that the device team stated about the execution; else 'not stated'."""
         facts = self.audit.get("execution")
-        for key in keys:
-            value = facts.get(key) if isinstance(facts, Mapping) else None
-            if value not in (None, "", [], {}, NOT_STATED):
-                return str(value)
-        return NOT_STATED
+        return str(facts.get(key) or NOT_STATED) if isinstance(facts, Mapping) else NOT_STATED
 
 
 @dataclass(frozen=True, slots=True)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 
 from rcbench.campaign import Experiment
-from rcbench.report.axis_line import Line, ends
+from rcbench.report.axis_line import Line, ends, first_layer
 from rcbench.report.curves import Crossing, crossing, mean_over_regions
 from rcbench.report.printed import percent
 from rcbench.report.source import Group, Source
@@ -13,12 +13,13 @@ from rcbench.report.spreading import anticoncentration, reference_alive, scrambl
 
 
 def spread_line(source: Source, group: Group) -> Line:
+    """From which depth a group has spread; of several butterfly experiments the one that spreads last counts."""
     lines = [
         _spread_from_otoc(source, group, experiment)
         for experiment in group.experiments
         if not source.compared(experiment.name, "otoc")["measured"].dropna().empty
     ]
-    if lines:  # several butterfly experiments: the one that spreads last counts
+    if lines:
         order = {"complete": 0, "undecided": 1, "not-complete": 2}
         return max(lines, key=lambda line: (order[line.status], line.depth or 0))
     lines = [line for e in group.experiments if (line := _spread_from_collisions(source, e)) is not None]
@@ -70,7 +71,7 @@ def _spread_from_otoc(source: Source, group: Group, experiment: Experiment) -> L
     fallen = _fallen_controls(source, group, margin, at.high)
     if fallen:
         return line("undecided", "spread undecided", f"The control that cannot spread ({fallen}) fell as well.")
-    depth = int(points.depth[0]) if at.value == -math.inf else math.ceil(at.value)
+    depth = int(points.depth[0]) if at.value == -math.inf else first_layer(at.value)
     text = f"spread complete by depth {depth} {ends(at, points, level, up=True)}"
     return line("complete", text, f"It is {last}.{beyond}", depth, at)
 
@@ -116,7 +117,7 @@ def _spread_from_collisions(source: Source, experiment: Experiment) -> Line | No
     if not settled:
         detail = "Where the circuits reach Porter-Thomas, no cross-entropy fidelity shows that the device ran them."
         return line("undecided", "spread undecided", detail)
-    depth = int(points.depth[0]) if at.value == -math.inf else math.ceil(at.value)
+    depth = int(points.depth[0]) if at.value == -math.inf else first_layer(at.value)
     interval = ends(at, points, percent(source.campaign.confidence), up=True)
     text = f"outcomes spread by depth {depth} {interval} (computed from the circuits; no OTOC was measured)"
     return line("complete", text, f"Cross-entropy fidelity excludes no signal at depth {min(settled):g}.", depth)

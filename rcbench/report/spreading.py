@@ -21,7 +21,7 @@ def scrambled_value(n_qubits: int) -> float:
 
 
 def spread_margin(experiment: Experiment) -> float:
-    """The absolute OTOC margin that the campaign fixed; the default where it is relative, since the target is about 0."""
+    """The absolute OTOC margin that the campaign fixed; the default where it is relative: the target is about 0."""
     stated = experiment.margins.get("otoc")
     return signature("otoc").margin if stated is None or stated.relative else stated.value
 
@@ -57,5 +57,5 @@ def anticoncentration(source: Source, experiment: Experiment) -> Curve:
     for depth, values in excess.groupby(rows["depth"]):
         centre, count = float(values.mean()), len(values)
         half = 2 * float(values.std(ddof=1)) / np.sqrt(count) if count >= FEWEST else 0.0
-        points.append((float(depth), centre, centre - half, centre + half))  # type: ignore[arg-type]
+        points.append((float(depth), centre, centre - half, centre + half))
     return curve(*(list(column) for column in zip(*points, strict=True)) if points else ([], [], [], []))

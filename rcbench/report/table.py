@@ -16,7 +16,7 @@ SIGNS = {"agrees": "≈", "departs": "≠", "undecided": "?", "not-tested": "·"
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Row:
-    """One row. cells: as they are shown; mark: a finding, which the page marks by sign and word; head: opens a block."""
+    """One row. cells: as they are shown; mark: a finding, shown by more than a colour; head: opens a block."""
 
     cells: tuple[str, ...]
     mark: str = ""
@@ -25,7 +25,7 @@ class Row:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Table:
-    """A table. key: name of its files; numeric: which columns stand to the right; frame: raw numbers for the CSV file."""
+    """A table. key: name of its files; numeric: columns that stand to the right; frame: raw numbers for the CSV."""
 
     key: str
     title: str
@@ -54,7 +54,7 @@ class Table:
 
 def _plain(cell: str) -> str:
     """A cell as programs read it: no thin spaces, a plain minus, nothing where nothing is known."""
-    return "" if cell == MISSING else cell.replace("\u202f", "").replace(MINUS, "-")
+    return "" if cell == MISSING else cell.replace("\u202f", "").replace("\u00a0", " ").replace(MINUS, "-")
 
 
 def table(
@@ -75,4 +75,5 @@ def table(
 def finding_text(finding: str, direction: str = "") -> str:
     """A finding as sign and word: ``≠ departs, worse``."""
     word = finding.replace("-", " ")
-    return f"{SIGNS.get(finding, '?')} {word}{', ' + direction if direction else ''}"
+    said = f", {direction}" if direction and finding != "agrees" else ""
+    return f"{SIGNS.get(finding, '?')} {word}{said}"

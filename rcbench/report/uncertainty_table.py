@@ -12,11 +12,11 @@ from rcbench.report.source import Source
 from rcbench.report.table import Row, Table, table
 from rcbench.signatures.registry import signature
 
-_PARTS = ("statistical", "between runs", "stated rates", "Monte Carlo", "numerical", "fit of the model")
+_PARTS = ("statistical", "between runs", "stated rates", "Monte Carlo", "numerical")
 
 
 def uncertainty_table(source: Source) -> Table:
-    """Standard uncertainties by experiment and signature: medians over depths and regions, and the largest combined one."""
+    """Standard uncertainties by experiment and signature: medians over depths and regions, and the largest."""
     rows, raw = [], []
     for experiment in source.campaign.experiments:
         head = experiment.name
@@ -28,13 +28,14 @@ def uncertainty_table(source: Source) -> Table:
             margin = source.compared(experiment.name, key)["margin"].median()
             known = {name: value for name, value in parts.items() if math.isfinite(value)}
             largest = max(known, key=lambda name: known[name]) if known else MISSING
-            cells = [signature(key).title, *(number(parts[name], 2) for name in _PARTS[:5])]
+            cells = [signature(key).title, *(number(parts[name], 2) for name in _PARTS)]
             cells += [number(combined.median(), 2), number(combined.max(), 2), number(margin, 2), largest]
             rows.append(Row(head=head, cells=tuple(cells)))
             raw.append(
-                {"experiment": experiment.name, "signature": key, **{name.replace(" ", "_"): parts[name] for name in _PARTS[:5]},
-                 "u_combined_median": combined.median(), "u_combined_max": combined.max(), "margin": margin}
-            )  # fmt: skip
+                {"experiment": experiment.name, "signature": key}
+                | {name.replace(" ", "_"): value for name, value in parts.items()}
+                | {"u_combined_median": combined.median(), "u_combined_max": combined.max(), "margin": margin}
+            )
             head = ""
     columns = (
         "signature, statistical>, between runs>, stated rates>, Monte Carlo>, numerical>, combined>, "
@@ -52,7 +53,6 @@ def _parts(source: Source, experiment: str, key: str) -> dict[str, float]:
         "stated rates": _median(noise["u_model"]),
         "Monte Carlo": _median(noise["std_error"]),
         "numerical": _median(ideal["std_error"]),
-        "fit of the model": math.nan,
     }
 
 

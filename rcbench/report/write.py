@@ -15,13 +15,15 @@ from rcbench.report.comparison_table import (
     counts,
     departures,
     disagreements,
+    disagreements_in_brief,
     fits_table,
 )
-from rcbench.report.data_table import audit_facts, audit_lists, deviations, execution_facts, usage_table
+from rcbench.report.data_table import audit_facts, execution_facts, files_table, problems, usage_table
+from rcbench.report.deviations import deviations
 from rcbench.report.device_table import device_facts, device_table
 from rcbench.report.locate import suspects
-from rcbench.report.printed import fixed, whole
 from rcbench.report.page import inline, render
+from rcbench.report.printed import fixed, whole
 from rcbench.report.rule import DISCLAIMER, KEPT_ABOVE, LIMITS, RULE
 from rcbench.report.source import Source, groups, read_source
 from rcbench.report.table import SIGNS, Row, Table, finding_text, table
@@ -46,7 +48,8 @@ def write_report(folder: Path | str) -> Path:
     """Write report.html, report.md, summary.html, tables/ and figures/ into the folder that a comparison left.
 
     Args:
-        folder: holds campaign.toml, roster.csv, comparison.csv, estimates.csv, predictions.csv, audit.json, provenance.json.
+        folder: holds campaign.toml, roster.csv, comparison.csv, estimates.csv, predictions.csv, audit.json and
+            provenance.json.
     Returns:
         The path of report.html. The same folder gives the same bytes again.
     Raises:
@@ -80,8 +83,9 @@ def report_context(source: Source, figures: Path) -> dict[str, Any]:
     pictures, path_tables = _paths(source, lines, figures)
     sections = [_section(source, experiment, figures) for experiment in source.campaign.experiments]
     tables = [
-        disagreements(source), experiments_table(source), margins_table(source), comparison_table(source), departures(source),
-        usage_table(source), uncertainty_table(source), device_table(source), *path_tables,
+        disagreements(source), experiments_table(source), margins_table(source), comparison_table(source),
+        departures(source), usage_table(source), files_table(source), uncertainty_table(source),
+        device_table(source), *path_tables,
         *(section.fits for section in sections if section.fits is not None),
     ]  # fmt: skip
     return {
@@ -95,6 +99,7 @@ def report_context(source: Source, figures: Path) -> dict[str, Any]:
         "threshold": KEPT_ABOVE,
         "counts": counts(source.comparison),
         "signs": SIGNS,
+        "disagreements": disagreements_in_brief(source),
         "suspects": _suspects(source),
         "rule_fixed": rule_fixed(source),
         "facts": facts(source),
@@ -102,13 +107,12 @@ def report_context(source: Source, figures: Path) -> dict[str, Any]:
         "sections": sections,
         "tables": {shown.key: shown for shown in tables},
         "audit_facts": audit_facts(source),
-        "audit_lists": audit_lists(source),
+        "problems": problems(source),
         "execution": execution_facts(source),
         "deviations": deviations(source),
         "device_facts": device_facts(source),
         "cards": cards(source),
         "versions": dict(source.provenance.get("versions") or {}),
-        "files": _files(source),
         "inline": inline,
         "whole": whole,
         "finding_text": finding_text,
@@ -116,7 +120,8 @@ def report_context(source: Source, figures: Path) -> dict[str, Any]:
 
 
 def _paths(source: Source, lines: list[BottomLine], folder: Path) -> tuple[list[Any], list[Table]]:
-    from rcbench.report.figure_path import path_data, path_figure
+    from rcbench.report.figure_path import path_figure
+    from rcbench.report.path import path_data
 
     pictures, tables = [], []
     for at, group in enumerate(groups(source)):
@@ -124,7 +129,8 @@ def _paths(source: Source, lines: list[BottomLine], folder: Path) -> tuple[list[
         if data is None:
             continue
         name = "path" if at == 0 else f"path-{at + 1}"
-        pictures.append(path_figure(source, data, KEPT_ABOVE, folder, name))
+        pictures.append(path_figure(data, KEPT_ABOVE, folder, name))
+        points: list[Any] = list(data.points.itertuples())
         rows = [
             Row(
                 cells=(
@@ -134,7 +140,7 @@ def _paths(source: Source, lines: list[BottomLine], folder: Path) -> tuple[list[
                     f"{fixed(row.kept, 3)} [{fixed(row.kept_low, 3)}, {fixed(row.kept_high, 3)}]",
                 )
             )
-            for row in data.points.itertuples()
+            for row in points
         ]
         what = "kept" if data.kept_key == "self_fidelity" else "faithful"
         columns = f"circuits, depth>, spread [interval]>, {what} [interval]>"
@@ -156,7 +162,10 @@ def _section(source: Source, experiment: Experiment, folder: Path) -> Section:
         "dimers": "the same gate count, but each qubit keeps one partner: the same loss, no spreading",
     }[experiment.circuits.family]
     role = f" Control for {experiment.control_for}." if experiment.control_for else ""
-    about = f"{experiment.protocol or 'Predicted only'}, {experiment.circuits.family} ({circuits}), {experiment.circuits.gates}.{role}"
+    about = (
+        f"{experiment.protocol or 'Predicted only'}, {experiment.circuits.family} ({circuits}), "
+        f"{experiment.circuits.gates}.{role}"
+    )
     return Section(
         experiment=experiment,
         about=about,
@@ -178,10 +187,3 @@ def cards(source: Source) -> list[Signature]:
     """The registry's rows of every signature that the comparison or the predictions hold, by axis."""
     used = set(source.comparison["signature"]) | set(source.predictions["signature"])
     return [row for key, row in SIGNATURES.items() if key in used]
-
-
-def _files(source: Source) -> list[tuple[str, str]]:
-    """Shots files and their hashes, as the provenance holds them."""
-    inputs = source.provenance.get("inputs")
-    shots = inputs.get("shots") if isinstance(inputs, dict) else None
-    return [(str(name), str(digest)) for name, digest in shots.items()] if isinstance(shots, dict) else []

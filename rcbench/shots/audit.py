@@ -86,7 +86,9 @@ class Audit:
 
     def _files_text(self) -> str:
         width = max(len(_safe(file.name)) for file in self.files) if self.files else 0
-        lines = [f"{_safe(f.name):<{width}}  sha256 {f.sha256[:12]}  {f.rows} rows" for f in self.files]
+        lines = [
+            f"{_safe(f.name):<{width}}  sha256 {f.sha256[:12]}" + f"  {f.rows} rows" * (f.rows > 0) for f in self.files
+        ]
         return "\n".join(["Files read", *lines])
 
     def _execution_text(self) -> str:
@@ -126,6 +128,7 @@ class Audit:
 def check_shots(kit: Kit, shots: Shots) -> Audit:
     """Audit the shots of a kit: complete, short, missing, unknown, and what the files alone give reason to doubt."""
     frame = runs_frame(kit, shots)
+    names = [experiment.name for experiment in kit.campaign.experiments]
     groups = findings.dropped_groups(kit, shots)
     depth_problems, trends = findings.of_depth(frame)
     problems = [
@@ -138,7 +141,7 @@ def check_shots(kit: Kit, shots: Shots) -> Audit:
         *findings.of_batches(kit, shots),
     ]
     return Audit(
-        table=by_experiment(frame, len(shots.unknown)),
+        table=by_experiment(frame, names, len(shots.unknown)),
         frame=frame,
         bit_order=shots.bit_order,
         files=shots.files,

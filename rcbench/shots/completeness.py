@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from typing import TYPE_CHECKING, NamedTuple
 
 import numpy as np
@@ -63,14 +63,16 @@ def _state(asked: int, delivered: int) -> str:
     return "complete" if delivered == asked else "over"
 
 
-def by_experiment(frame: pd.DataFrame, unknown: int) -> pd.DataFrame:
-    """One row an experiment, counting runs (shots in the columns discards, shots_asked and shots_returned).
+def by_experiment(frame: pd.DataFrame, names: Sequence[str], unknown: int) -> pd.DataFrame:
+    """One row an experiment, in the order of the names, counting runs; discards and the last two columns count shots.
 
     complete counts runs with at least the shots asked for; those with more are in `over` too. repeats counts runs that
     repeat a circuit, asked for or not. unknown: circuit ids that are not of the kit; they have a row of their own.
     """
     rows = []
-    for experiment, runs in frame.groupby("experiment", sort=False):
+    groups = dict(list(frame.groupby("experiment", sort=False)))
+    for experiment in (name for name in names if name in groups):
+        runs = groups[experiment]
         state = runs["state"]
         asked = state != "extra"
         rows.append(

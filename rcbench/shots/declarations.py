@@ -199,7 +199,7 @@ def _time(section: Section, key: str, value: Any) -> str:
     except (TypeError, ValueError):
         section.error(key, value, "a date and time, as 2026-03-04T09:30:00Z")
         return ""
-    return str(text)
+    return str(text).replace("+00:00", "Z")
 
 
 def _check_order(file: TomlFile, execution: Execution) -> None:

@@ -31,35 +31,31 @@ def some(names: Iterable[object]) -> str:
     return ", ".join(listed[:_NAMES]) + (f" and {rest} more" if rest > 0 else "")
 
 
+def many(count: int, noun: str) -> str:
+    """A number of things in words."""
+    return f"{count} {noun}{'' if count == 1 else 's'}"
+
+
 def of_completeness(frame: pd.DataFrame, shots: Shots) -> list[Problem]:
-    """Circuits that are missing, short, over, extra or unknown."""
+    """Circuits that are missing, short, over, extra or unknown; the table says how many of each experiment."""
     found = []
-    for experiment, runs in frame.groupby("experiment", sort=False):
-        for state, words, hint in (
-            ("missing", "did not come back", _REBUILD),
-            ("short", "came back with fewer shots than asked for; they are used as they are", ""),
-        ):
-            ids = runs.loc[runs["state"] == state, "circuit_id"]
-            if len(ids):
-                asked = int((runs["state"] != "extra").sum())
-                text = f"{experiment}: {len(ids)} of {asked} circuits {words} ({some(ids)})"
-                found.append(Problem("warning", text, hint))
-    over = frame[frame["state"] == "over"]
-    if len(over):
-        text = (
-            f"{len(over)} circuits came back with more shots than asked for; all are used ({some(over['circuit_id'])})"
-        )
-        found.append(Problem("note", text))
-    extra = frame[frame["state"] == "extra"]
-    if len(extra):
-        text = f"{len(extra)} repeats came back that were not asked for ({some(extra['circuit_id'])})"
-        found.append(Problem("note", text))
+    asked = int((frame["state"] != "extra").sum())
+    for state, severity, words, hint in (
+        ("missing", "warning", f"of {asked} did not come back", _REBUILD),
+        ("short", "warning", "came back with fewer shots than asked for; what there is is used", ""),
+        ("over", "note", "came back with more shots than asked for; all are used", ""),
+        ("extra", "note", "came back as a repeat that was not asked for", ""),
+    ):
+        ids = frame.loc[frame["state"] == state, "circuit_id"]
+        if len(ids):
+            found.append(Problem(severity, f"{many(len(ids), 'circuit')} {words} ({some(ids)})", hint))
     if shots.unknown:
-        total = sum(shots.unknown.values())
-        text = f"{len(shots.unknown)} circuit ids are not of this kit, {total} shots not used ({some(shots.unknown)})"
-        ends = (".qasm", ".json")
+        total = many(sum(shots.unknown.values()), "shot")
+        text = (
+            f"{many(len(shots.unknown), 'circuit id')} not of this kit, with {total} not used ({some(shots.unknown)})"
+        )
         hint = "a circuit_id is the name of the circuit's file without its ending"
-        if not any(name.endswith(ends) for name in shots.unknown):
+        if not any(name.endswith((".qasm", ".json")) for name in shots.unknown):
             hint = "compare with the roster.csv of the kit; shots of another kit belong in a folder of their own"
         found.append(Problem("warning", text, hint))
     return found
@@ -74,8 +70,8 @@ def of_doubling(frame: pd.DataFrame, shots: Shots) -> list[Problem]:
             doubled.append(circuit_id)
     if not doubled:
         return []
-    text = f"{len(doubled)} circuits have every outcome two or more times over: the same shots twice? ({some(doubled)})"
-    return [Problem("error", text, "keep one of the files that hold the same shots, and read again")]
+    text = f"every outcome of {many(len(doubled), 'circuit')} came two or more times over: the same shots twice?"
+    return [Problem("error", f"{text} ({some(doubled)})", "keep one of the files that hold the same shots")]
 
 
 def of_depth(frame: pd.DataFrame) -> tuple[list[Problem], dict[str, float]]:
@@ -145,9 +141,9 @@ def _run(row: RosterRow, outcomes: object) -> Run:
 def of_dropping(dropped: Sequence[Dropped]) -> list[Problem]:
     """Instances that cannot be used at all."""
     found = []
-    for experiment, lacking in dict.fromkeys((d[0], d[4]) for d in dropped):
-        names = [f"instance {d[1]} depth {d[2]}" for d in dropped if (d[0], d[4]) == (experiment, lacking)]
-        text = f"{experiment}: {len(names)} instances dropped whole, since {lacking} is missing ({some(names)})"
+    for lacking in dict.fromkeys(d[4] for d in dropped):
+        names = [f"{d[0]} instance {d[1]} depth {d[2]}" for d in dropped if d[4] == lacking]
+        text = f"{many(len(names), 'instance')} dropped whole, since {lacking} is missing ({some(names)})"
         found.append(Problem("warning", text, _REBUILD))
     return found
 
@@ -197,8 +193,8 @@ def of_batches(kit: Kit, shots: Shots) -> list[Problem]:
     ]
     if not other:
         return []
-    text = f"{len(other)} circuits ran in another batch than planned ({some(other)}): controls may be of another time"
-    return [Problem("note", text)]
+    text = f"{many(len(other), 'circuit')} ran in another batch than planned: controls may be of another time"
+    return [Problem("note", f"{text} ({some(other)})")]
 
 
 def span(shots: Shots) -> tuple[np.datetime64 | None, np.datetime64 | None]:

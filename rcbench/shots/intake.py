@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Iterable, Mapping
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -39,9 +39,23 @@ class Runs:
         self.n_bits = np.array(bits, dtype=np.int64)
         self.max_bits = int(self.n_bits.max(initial=1))
         # the run of a row without a repeat: -1 where the roster has several
+        self.n_asked = len(self.keys)
         self.only_run = np.full(len(bits), -2, dtype=np.int64)
         for (circuit, _), run in self._run.items():
             self.only_run[circuit] = run if self.only_run[circuit] == -2 else -1
+
+    def settle(self, present: Collection[int]) -> None:
+        """Give runs their place in the roster, once it is known which of them came back.
+
+        The roster counts the repeats of a circuit, each under an id of its own; a sender may count the runs of each id
+        from 0. So where the roster has one run of an id, and its repeat did not come back, the run numbered 0 is it.
+        """
+        for number in sorted(present):
+            if number < self.n_asked or self.keys[number][1] != 0:
+                continue
+            asked = int(self.only_run[self.ids[self.keys[number][0]]])
+            if asked >= 0 and asked not in present:
+                self.keys[asked], self.keys[number] = self.keys[number], self.keys[asked]
 
     def run(self, circuit_id: str, circuit: int, repeat: int, n_bits: int) -> int:
         """Number of a run; a repeat that the roster lacks becomes a new one."""

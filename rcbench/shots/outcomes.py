@@ -55,14 +55,19 @@ class Outcomes:
 
     def bits(self) -> IntArray:
         """(k, n_bits) zeros and ones of the different outcomes."""
-        return np.unpackbits(self.packed, axis=1, count=self.n_bits)
+        return np.unpackbits(self.packed.astype(np.uint8, copy=False), axis=1, count=self.n_bits)
 
     def index(self) -> IntArray:
         """(k,) state index of the different outcomes, int64; InputError above MAX_INDEX_BITS bits."""
         if self.n_bits > MAX_INDEX_BITS:
             raise InputError("n_bits", self.n_bits, f"at most {MAX_INDEX_BITS} bits for a state index")
-        powers = np.int64(1) << np.arange(self.n_bits - 1, -1, -1, dtype=np.int64)
-        return self.bits().astype(np.int64) @ powers
+        index = np.zeros(len(self.packed), dtype=np.int64)
+        for column in range(
+            self.packed.shape[1] - 1
+        ):  # by bytes: a matrix of bits would take 8 * n_bits bytes an outcome
+            index = index << 8 | self.packed[:, column]
+        spare = -self.n_bits % 8  # bits that packbits filled up
+        return index << (8 - spare) | self.packed[:, -1] >> spare
 
     def _mean(self, values: FloatArray) -> Value:
         shots = self.shots

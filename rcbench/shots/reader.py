@@ -1,7 +1,8 @@
 """Reading shots: files or folders of files in, one `Shots` out, and every row that was not used accounted for.
 
 Which repeat a row belongs to: the `repeat` column says it, or, for a whole file, the table [repeat] of shots.toml; with
-neither, rows belong to the one repeat that the roster has of their circuit, and are refused where it has several.
+neither, rows belong to the one repeat that the roster has of their circuit, and are refused where it has several. Where
+the roster has one repeat of a circuit and nothing came back under its number, the run numbered 0 is taken for it.
 """
 
 from __future__ import annotations
@@ -174,7 +175,9 @@ class _Reading:
     def finish(self, execution: Execution, declarations: list[ShotFile], others: list[str], path: Path) -> Shots:
         """Everything together; InputError where a file was bad, or nothing is of this kit."""
         self.raise_errors()
-        outcomes = {self.runs.keys[number]: found for number, found in self.total.tally.outcomes(self.runs.run_bits)}
+        tallied = list(self.total.tally.outcomes(self.runs.run_bits))
+        self.runs.settle({number for number, _ in tallied} | set(self.total.discards))
+        outcomes = {self.runs.keys[number]: found for number, found in tallied}
         discards = by_key(self.runs, self.total.discards)
         unknown = dict(sorted(self.total.unknown.items()))
         if not outcomes and not discards:

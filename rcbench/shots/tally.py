@@ -12,7 +12,7 @@ from rcbench.shots.outcomes import Outcomes
 
 NARROW = 40  # widest outcome that shares one 64-bit key with the number of its run: 2**24 runs
 WORTH_IT = 0.5  # merging counts costs an argsort, merging single shots only a sort
-ROWS_AT_ONCE = 1 << 21  # bounds the memory of the last pass
+ROWS_AT_ONCE = 1 << 18  # bounds the memory of the last pass
 
 
 class Tally:

@@ -237,6 +237,6 @@ def test_what_the_device_lacks_is_refused_by_name():
 @pytest.mark.parametrize("native", ["cz", "sqrt-iswap"])
 def test_220_000_gates_are_decomposed_within_15_seconds(native):
     gates = unitary_group.rvs(4, size=220_000, random_state=1)
-    start = time.perf_counter()
+    start = time.process_time()
     decompose(gates, native)
-    assert time.perf_counter() - start < 15
+    assert time.process_time() - start < 15

@@ -18,8 +18,9 @@ from protocol_cases import (
 
 from rcbench.campaign import Circuits
 from rcbench.circuits.families import draw_circuits
-from rcbench.circuits.frames import PAULIS, passage, randomised, unseen
+from rcbench.circuits.frames import randomised
 from rcbench.circuits.gates import CODE, N_QUBITS
+from rcbench.circuits.passage import PAULIS, passage, unseen
 from rcbench.protocol import load_protocol
 from rcbench.randomness import Draw
 

@@ -1,4 +1,4 @@
-"""A small kit that needs no circuits, and helpers to write shots for it."""
+"""A small kit that needs no circuits, and small functions that write shots for it."""
 
 from __future__ import annotations
 

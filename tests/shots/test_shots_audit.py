@@ -66,13 +66,13 @@ def test_the_table_counts_each_kind_once(tmp_path):
     }
     assert found.needs_attention
     assert texts(found) == [
-        ("warning", "line: 1 of 5 circuits did not come back (gone)"),
+        ("warning", "1 circuit of 6 did not come back (gone)"),
         (
             "warning",
-            "line: 1 of 5 circuits came back with fewer shots than asked for; they are used as they are (short)",
+            "1 circuit came back with fewer shots than asked for; what there is is used (short)",
         ),
-        ("warning", "2 circuit ids are not of this kit, 8 shots not used (foreign, strange)"),
-        ("note", "1 circuits came back with more shots than asked for; all are used (over)"),
+        ("warning", "2 circuit ids not of this kit, with 8 shots not used (foreign, strange)"),
+        ("note", "1 circuit came back with more shots than asked for; all are used (over)"),
     ]
     assert "rcbench build CAMPAIGN --out KIT --missing SHOTS" in found.problems[0].hint
 
@@ -85,7 +85,7 @@ def test_ids_with_a_file_ending_get_the_hint_that_mends_them(tmp_path):
 def test_repeats_beyond_the_roster_are_kept_and_told(tmp_path):
     content = "circuit_id,bitstring,count,repeat\na,0101,100,0\na,0101,100,1\n"
     found = audit(tmp_path, make_kit(Row(circuit_id="a")), content)
-    assert texts(found) == [("note", "1 repeats came back that were not asked for (a)")]
+    assert texts(found) == [("note", "1 circuit came back as a repeat that was not asked for (a)")]
     assert found.table.iloc[0]["repeats"] == 1
     assert not found.needs_attention
 
@@ -107,7 +107,7 @@ def test_the_same_shots_in_two_formats_are_found(tmp_path):
     kit = make_kit(Row(circuit_id="a"))
     found = check_shots(kit, read_shots(tmp_path, kit, bit_order="q0-first"))
     assert found.problems[0].severity == "error"
-    assert "1 circuits have every outcome two or more times over: the same shots twice? (a)" in found.problems[0].text
+    assert "every outcome of 1 circuit came two or more times over: the same shots twice? (a)" in found.problems[0].text
 
 
 def test_what_is_missing_and_grows_with_depth_is_warned_of(tmp_path):
@@ -178,7 +178,7 @@ def test_an_instance_without_its_reference_is_dropped_whole_and_named(tmp_path):
     assert found.dropped == {("line", 1, 4)}
     assert (
         "warning",
-        "line: 1 instances dropped whole, since the reference echo is missing (instance 1 depth 4)",
+        "1 instance dropped whole, since the reference echo is missing (line instance 1 depth 4)",
     ) in texts(found)
 
 
@@ -231,7 +231,7 @@ def test_wall_time_comes_from_the_shots_or_from_what_is_stated(tmp_path):
 def test_circuits_of_another_batch_are_noted(tmp_path):
     content = "circuit_id,bitstring,batch\na,0101,3\n"
     found = audit(tmp_path, make_kit(Row(circuit_id="a", shots=1, batch=0)), content)
-    assert found.problems[0].text.startswith("1 circuits ran in another batch than planned (a)")
+    assert found.problems[0].text.startswith("1 circuit ran in another batch than planned")
 
 
 def test_the_audit_survives_json_and_the_terminal(tmp_path):

@@ -88,7 +88,7 @@ def test_facts_about_the_execution_are_read(tmp_path):
     text = 'started = 2026-03-04T09:00:00Z\nended = "2026-03-04T11:00:00+01:00"\ntwirling = false\n'
     write(tmp_path / "execution.toml", text + 'physical_qubits = ["A0", "A1"]\ncompiler = { name = "none", level = 0 }')
     execution = read_execution(tmp_path)
-    assert execution.started == "2026-03-04T09:00:00+00:00"
+    assert execution.started == "2026-03-04T09:00:00Z"
     assert execution.twirling == "no"
     assert execution.physical_qubits == "A0 A1"
     assert execution.compiler == "name=none, level=0"

@@ -186,6 +186,26 @@ def test_without_a_repeat_shots_belong_to_the_one_that_the_roster_has(tmp_path):
     assert list(read_shots(path, make_kit(Row(circuit_id="a", repeat=1)), bit_order="q0-first").outcomes) == [("a", 1)]
 
 
+@pytest.mark.parametrize(
+    ("repeats", "keys"), [((0,), [1]), ((1,), [1]), ((0, 1), [0, 1]), ((2,), [2]), ((0, 2), [1, 2])]
+)
+def test_the_first_run_of_a_circuit_is_the_one_asked_for_whichever_way_runs_are_counted(tmp_path, repeats, keys):
+    lines = [f"a-r1,{5:04b},{1 + r},{r}" for r in repeats]
+    path = write(tmp_path / "s.csv", "\n".join(["circuit_id,bitstring,count,repeat", *lines]))
+    shots = read_shots(path, make_kit(Row(circuit_id="a"), Row(circuit_id="a-r1", repeat=1)), bit_order="q0-first")
+    assert {key: o.shots for key, o in shots.outcomes.items()} == {
+        ("a-r1", key): 1 + r for key, r in zip(keys, repeats, strict=True)
+    }
+
+
+@pytest.mark.parametrize("n_bits", [1, 7, 8, 9, 20, 62])
+def test_indices_of_outcomes_are_the_numbers_their_bits_spell(n_bits):
+    bits = random_bits(4, 50, n_bits)
+    index = Outcomes.from_bits(bits).index()
+    assert index.dtype == np.int64
+    assert sorted(index.tolist()) == sorted({int(s, 2) for s in strings_of(bits)})
+
+
 def test_a_file_can_state_its_repeat(tmp_path):
     kit = make_kit(Row(circuit_id="a", repeat=0), Row(circuit_id="a", repeat=1))
     write(tmp_path / "first.json", '{"a": {"0101": 2}}')

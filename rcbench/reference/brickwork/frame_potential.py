@@ -1,7 +1,7 @@
 """Second frame potential of the ensemble of Haar brickworks of a depth: how near it is to a 2-design.
 
-The product of one circuit's inverse with another is a brickwork of twice the depth whose middle layers merge, so the mean of
-|tr U^dag V|^4 is the trace of a product of layers acting on labels.
+The product of one circuit's inverse with another is a brickwork of twice the depth whose middle layers merge, so the
+mean of |tr U^dag V|^4 is the trace of a product of layers acting on labels.
 
 Source: Hunter-Jones, arXiv:1905.12053.
 """

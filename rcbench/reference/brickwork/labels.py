@@ -1,7 +1,8 @@
 """Averages over Haar gates that are quadratic in U and U*: sums over two labels a site, identity and swap.
 
-The average of U x U* x U x U* over a two-site Haar gate leaves both sites with one label, so that the weights of all label
-patterns of a brickwork need one binary variable a gate of the last layer and not one a site: 2^(n/2) numbers, not 2^n.
+The average of U x U* x U x U* over a two-site Haar gate leaves both sites with one label, so that the weights of all
+label patterns of a brickwork need one binary variable a gate of the last layer and not one a site: 2^(n/2) numbers,
+not 2^n.
 
 Source: Nahum, Vijay and Haah, PRX 8, 021014 (2018); Zhou and Nahum, PRB 99, 174205 (2019), arXiv:1804.09737; Dalzell,
 Hunter-Jones and Brandao, PRX Quantum 3, 010333 (2022), arXiv:2011.12277.
@@ -60,11 +61,14 @@ class LabelWeights:
         self.owner[first] = self.owner[second] = new = self._next
         self.leg[first] = self.leg[second] = None
         self._next += 1
-        if a is None and b is None:
-            self._append(new, np.einsum("a,b,abg->g", self.start[first], self.start[second], rule))
-        elif a is None or b is None:
-            fresh, axis = (first, 0) if a is None else (second, 1)
-            self._one(a if b is None else b, np.tensordot(self.start[fresh], rule, (0, axis)), new)
+        if a is None:
+            rule = np.tensordot(self.start[first], rule, (0, 0))
+            if b is None:
+                self._append(new, self.start[second] @ rule)
+            else:
+                self._one(b, rule, new)
+        elif b is None:
+            self._one(a, np.tensordot(self.start[second], rule, (0, 1)), new)
         elif a == b:
             self._one(a, np.einsum("aag->ag", rule), new)
         else:
@@ -115,10 +119,7 @@ class LabelWeights:
         weights = self.weights.reshape(-1, 2, 1 << (second - first - 1), 2, 1 << (count - second - 1))
         keep_a, keep_b = a in self.owner, b in self.owner
         # the new axis takes the place of one that ends, so that along a line the axes stay in the order of the sites
-        if not keep_a:
-            out = "xgybz" if keep_b else "xgyz"
-        else:
-            out = "xaygbz" if keep_b else "xaygz"
+        out = f"x{'ayg' if keep_a else 'gy'}{'b' if keep_b else ''}z"
         self.weights = np.einsum(f"xaybz,abg->{out}", weights, rule).ravel()
         self.variables[first : second + 1] = [
             *([a] if keep_a else [new]),
@@ -147,6 +148,12 @@ def _totals(
                 labels.noise(first, noise[number])
                 labels.noise(second, noise[number])
         yield float(labels.total(end)[0])
+
+
+def product_state(n_qubits: int, q: int) -> FloatArray:
+    """(n, 2) weights of a product state after a random gate on every site."""
+    weight = 1 / (q * (q + 1))
+    return same_on_all(n_qubits, weight, weight)
 
 
 def same_on_all(n_qubits: int, identity: float, swap: float) -> FloatArray:

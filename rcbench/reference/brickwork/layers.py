@@ -1,15 +1,17 @@
 """Which sites the gates of a layer join, and the rates that every average of the Haar brickwork is built from.
 
-Layer 1 joins (0, 1), (2, 3), ..., layer 2 joins (1, 2), (3, 4), ..., and so on in turn; a ring has the gate (n - 1, 0) in even
-layers. One layer is one unit of depth. Cut x separates the sites x - 1 and x.
+Layer 1 joins (0, 1), (2, 3), ..., layer 2 joins (1, 2), (3, 4), ..., and so on in turn; a ring has the gate (n - 1,
+0) in even layers. One layer is one unit of depth. Cut x separates the sites x - 1 and x.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 
+import numpy as np
+
 from rcbench.errors import InputError
-from rcbench.reference.sizes import whole
+from rcbench.reference.sizes import between, one_of, whole
 
 Pairs = tuple[tuple[int, int], ...]
 
@@ -38,8 +40,6 @@ def all_layers(n_qubits: int, depth: int, *, ring: bool = False, most: int | Non
 
 def met_layers(n_qubits: int, depth: int, order: str) -> list[int]:
     """Numbers of the layers in the order in which an operator meets them."""
-    from rcbench.reference.sizes import one_of
-
     whole("n_qubits", n_qubits, 2)
     layers = list(range(1, whole("depth", depth, 0) + 1))
     return layers if one_of("order", order, ("forward", "backward")) == "forward" else layers[::-1]
@@ -59,10 +59,9 @@ def outward_rate(q: int) -> float:
 
 def check_sequence(key: str, values: Sequence[float] | float, depth: int) -> list[float]:
     """One rate from 0 to 1 for every layer, from one rate or a sequence of them."""
-    from rcbench.reference.sizes import between
-
-    if isinstance(values, int | float):
-        return [between(key, values, 0, 1)] * depth
-    if len(values) != depth:
-        raise InputError(key, len(values), f"one rate, or one for each of the {depth} layers")
-    return [between(key, value, 0, 1) for value in values]
+    rates = np.asarray(values)
+    if rates.ndim == 0:
+        return [between(key, rates.item(), 0, 1)] * depth
+    if rates.shape != (depth,):
+        raise InputError(key, rates.shape, f"one rate, or one for each of the {depth} layers")
+    return [between(key, rate, 0, 1) for rate in rates.tolist()]

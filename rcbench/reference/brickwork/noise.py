@@ -1,7 +1,8 @@
 """The Haar brickwork with noise after its gates, averaged over circuits: fidelity, echo, and how many errors count.
 
 Two rates are in use and differ by a third: p of rho -> (1 - p) rho + p 1/2, and the probability eps = 3p/4 of a Pauli
-error other than 1. Noisy cross-entropy is `output.linear_xeb`, noisy purity `purity.pattern_purity`, both with `noise=p`.
+error other than 1. Noisy cross-entropy is `output.linear_xeb`, noisy purity `purity.pattern_purity`, both with
+`noise=p`.
 
 Source of all but the echo: the label sums as in Dalzell, Hunter-Jones and Brandao, Commun. Math. Phys. (2024),
 arXiv:2111.14907, and Gao et al., PRX Quantum 5, 010334 (2024), arXiv:2112.01657.
@@ -16,7 +17,7 @@ import numpy as np
 
 from rcbench.arrays import FloatArray
 from rcbench.errors import InputError
-from rcbench.reference.brickwork.labels import MOST_SITES, noise_rule, same_on_all, totals
+from rcbench.reference.brickwork.labels import MOST_SITES, noise_rule, product_state, same_on_all, totals
 from rcbench.reference.brickwork.layers import all_layers, check_sequence, layer_pairs
 from rcbench.reference.brickwork.output import linear_xeb
 from rcbench.reference.brickwork.strings import echo_return
@@ -37,10 +38,9 @@ def fidelity(
 
     Source: see the module.
     """
-    layers = all_layers(n_qubits, depth, ring=ring, most=MOST_SITES)
+    q, layers = whole("q", q, 2), all_layers(n_qubits, depth, ring=ring, most=MOST_SITES)
     rules = [noise_rule(1 - p, q) for p in check_sequence("noise", noise, depth)]
-    start = same_on_all(n_qubits, 1 / (q * (q + 1)), 1 / (q * (q + 1)))
-    return totals(start, same_on_all(n_qubits, q, q * q), layers, q, rules)
+    return totals(product_state(n_qubits, q), same_on_all(n_qubits, q, q * q), layers, q, rules)
 
 
 def location_count(n_qubits: int, depth: int, *, ring: bool = False) -> int:
@@ -118,7 +118,8 @@ def noisy_echo(n_qubits: int, depth: int, error: float) -> float:
     To first order in `error`; the exponential is good far beyond it (0.7 % at 6 sites, 8 layers, error 0.01).
 
     Args:
-        n_qubits: 2 to 22. depth: layers of the circuit. error: probability of a Pauli other than 1 at each place, 0 to 3/4.
+        n_qubits: 2 to 22. depth: layers of the circuit. error: probability of a Pauli other than 1 at each place, 0
+        to 3/4.
     Raises:
         InputError: values outside these.
 

@@ -1,4 +1,4 @@
-"""Output distribution of the Haar brickwork on a product state: averaged collision probability and linear cross-entropy.
+"""Output distribution of the Haar brickwork: averaged collision probability and linear cross-entropy.
 
 Source of all: Dalzell, Hunter-Jones and Brandao, PRX Quantum 3, 010333 (2022), arXiv:2011.12277; Barak, Chou and Gao,
 arXiv:2005.02421.
@@ -13,7 +13,7 @@ import numpy as np
 
 from rcbench.arrays import FloatArray
 from rcbench.errors import InputError
-from rcbench.reference.brickwork.labels import MOST_SITES, noise_rule, same_on_all, totals
+from rcbench.reference.brickwork.labels import MOST_SITES, noise_rule, product_state, same_on_all, totals
 from rcbench.reference.brickwork.layers import all_layers, check_sequence
 from rcbench.reference.sizes import whole
 
@@ -23,8 +23,8 @@ def scaled_collisions(
 ) -> FloatArray:
     """(depth + 1,) averaged D sum_x p(x) p'(x) after 0 to `depth` layers, p' from a noisy copy if noise is asked.
 
-    Depth 0 is a layer of random one-qubit gates, (2q/(q + 1))^n. Cost: 2^(n/2) times n a layer (32 sites, 20 layers: about
-    a second).
+    Depth 0 is a layer of random one-qubit gates, (2q/(q + 1))^n. Cost: 2^(n/2) times n a layer (32 sites, 20 layers:
+    about a second).
 
     Args:
         n_qubits: 2 to 32. depth: layers, 0 or more. q: local dimension. ring: closed line of even length.
@@ -34,10 +34,10 @@ def scaled_collisions(
 
     Source: see the module; noise as in Dalzell, Hunter-Jones and Brandao, arXiv:2111.14907.
     """
-    layers = all_layers(n_qubits, depth, ring=ring, most=MOST_SITES)
+    q, layers = whole("q", q, 2), all_layers(n_qubits, depth, ring=ring, most=MOST_SITES)
     rules = [noise_rule(1 - p, q) for p in check_sequence("noise", noise, depth)]
-    # q outcomes a site, times D = q^n
-    return totals(same_on_all(n_qubits, 1 / (q + 1), 1 / (q + 1)), same_on_all(n_qubits, q, q), layers, q, rules)
+    # each of q outcomes a site has overlap 1 with both labels; q once more a site for the factor D
+    return totals(product_state(n_qubits, q), same_on_all(n_qubits, q * q, q * q), layers, q, rules)
 
 
 def collision_probability(n_qubits: int, depth: int, *, q: int = 2, ring: bool = False) -> FloatArray:
@@ -65,7 +65,8 @@ def linear_xeb(
 def anticoncentration_depth(n_qubits: int, *, over_haar: float = 2.0, ring: bool = False, most: int = 200) -> float:
     """Depth at which the averaged collision probability falls to `over_haar` times its Haar value.
 
-    Between whole layers ln of the ratio is taken as a straight line. Grows as n ln n gates, with a large negative offset.
+    Between whole layers ln of the ratio is taken as a straight line. Grows as n ln n gates, with a large negative
+    offset.
 
     Args:
         n_qubits: 2 to 32. over_haar: above 1. ring: closed line of even length. most: layers tried.

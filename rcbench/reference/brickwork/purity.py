@@ -1,8 +1,9 @@
 """Purity of regions after a Haar brickwork on a product state, averaged over circuits; and how fast it falls.
 
 `cut_purity` (one cut, to thousands of sites), `region_purity` (any contiguous region, to 2000), `subset_purity` (all
-subsets, to 20, rings too) and `pattern_purity` (one subset, to 32, with noise) agree where they overlap. -ln of these is the
-annealed Renyi-2 entropy, in nats; the mean of -ln purity is a little more, the von Neumann entropy clearly more.
+subsets, to 20, rings too) and `pattern_purity` (one subset, to 32, with noise) agree where they overlap. -ln of these
+is the annealed Renyi-2 entropy, in nats; the mean of -ln purity is a little more, the von Neumann entropy clearly
+more.
 
 Source of all: Nahum, Vijay and Haah, PRX 8, 021014 (2018), arXiv:1705.08975; Zhou and Nahum, PRB 99, 174205 (2019),
 arXiv:1804.09737; Nahum, Ruhman, Vijay and Haah, PRX 7, 031016 (2017), arXiv:1608.06950.
@@ -16,7 +17,7 @@ from math import cos, log, pi
 import numpy as np
 
 from rcbench.arrays import FloatArray
-from rcbench.reference.brickwork.labels import MOST_SITES, noise_rule, same_on_all, totals
+from rcbench.reference.brickwork.labels import MOST_SITES, noise_rule, product_state, same_on_all, totals
 from rcbench.reference.brickwork.layers import all_layers, check_sequence, split_rate
 from rcbench.reference.sizes import qubits_of, whole
 
@@ -108,11 +109,11 @@ def pattern_purity(
 
     Source: see the module; noise as in Dalzell, Hunter-Jones and Brandao, arXiv:2111.14907.
     """
-    layers = all_layers(n_qubits, depth, ring=ring, most=MOST_SITES)
+    q, layers = whole("q", q, 2), all_layers(n_qubits, depth, ring=ring, most=MOST_SITES)
     end = same_on_all(n_qubits, q * q, q)
     end[list(qubits_of("region", region, n_qubits))] = q, q * q
     rules = [noise_rule((1 - p) ** 2, q) for p in check_sequence("noise", noise, depth)]
-    return totals(same_on_all(n_qubits, 1 / (q * (q + 1)), 1 / (q * (q + 1))), end, layers, q, rules)
+    return totals(product_state(n_qubits, q), end, layers, q, rules)
 
 
 def entanglement_rate(q: int = 2) -> float:

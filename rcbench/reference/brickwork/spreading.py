@@ -4,10 +4,10 @@
 `front_*`, `butterfly_velocity` and `light_cone_edge` are the closed forms of the front. For distributions over whole
 strings, other gates and operator sizes see `strings`.
 
-The operator starts at one site. `order="forward"` means U V U^dag, which meets layer 1 first; "backward" means
-U^dag W U, which meets the last layer first. F is (1/D) tr(W(t) V W(t) V) for Paulis (q > 2: traceless, squaring to 1). At the
-operator's own site, as long as no gate has met it, F is the mean over independent random Paulis, -1/(q^2 - 1): circuits
-here end and begin in random one-qubit gates.
+The operator starts at one site. `order="forward"` means U V U^dag, which meets layer 1 first; "backward" means U^dag
+W U, which meets the last layer first. F is (1/D) tr(W(t) V W(t) V) for Paulis (q > 2: traceless, squaring to 1). At
+the operator's own site, as long as no gate has met it, F is the mean over independent random Paulis, -1/(q^2 - 1):
+circuits here end and begin in random one-qubit gates.
 
 Source of all: Nahum, Vijay and Haah, PRX 8, 021014 (2018), arXiv:1705.08975; von Keyserlingk, Rakovszky, Pollmann and
 Sondhi, PRX 8, 021013 (2018), arXiv:1705.08910.
@@ -15,6 +15,7 @@ Sondhi, PRX 8, 021013 (2018), arXiv:1705.08910.
 
 from __future__ import annotations
 
+from collections import deque
 from collections.abc import Iterator
 from math import sqrt
 
@@ -33,6 +34,7 @@ def _trivial_on(n: int, site: int, q: int, layers: list[int]) -> Iterator[FloatA
 
     A gate on non-trivial sites leaves one of them trivial with probability 1/(q^2 + 1), so an interval whose end a gate
     straddles takes q^2/(q^2 + 1) of the interval enlarged at that end and the rest of the one shrunk there.
+    One table, changed in place: use it before the next.
     """
     out = outward_rate(q)
     cut = np.arange(n + 1)
@@ -40,12 +42,15 @@ def _trivial_on(n: int, site: int, q: int, layers: list[int]) -> Iterator[FloatA
     yield table
     for layer in layers:
         moved = slice(1 + (layer + 1) % 2, n, 2)  # cuts that a gate straddles; 0 and n are none
-        wider, narrower = _beside(moved, -1), _beside(moved, 1)
-        table = table.copy()
-        table[moved] = out * table[wider] + (1 - out) * table[narrower]
-        table[:, moved] = out * table[:, narrower] + (1 - out) * table[:, wider]
-        table[cut[:, None] >= cut[None, :]] = 1.0
+        below, above = _beside(moved, -1), _beside(moved, 1)
+        table[moved] = out * table[below] + (1 - out) * table[above]
+        table[:, moved] = out * table[:, above] + (1 - out) * table[:, below]
+        np.fill_diagonal(table, 1.0)  # both ends of an empty interval moved, apart
         yield table
+
+
+def _last(tables: Iterator[FloatArray]) -> FloatArray:
+    return deque(tables, maxlen=1)[0]
 
 
 def _beside(cuts: slice, by: int) -> slice:
@@ -70,9 +75,7 @@ def otoc_profile(n_qubits: int, site: int, depth: int, *, q: int = 2, order: str
     Source: see the module.
     """
     n, site = _sizes(n_qubits, site)
-    table = np.empty(0)
-    for table in _trivial_on(n, site, q, met_layers(n, depth, order)):  # noqa: B007 - the last one is meant
-        pass
+    table = _last(_trivial_on(n, site, q, met_layers(n, depth, order)))
     return _otoc(table, q)
 
 
@@ -101,9 +104,7 @@ def end_density(
     Source: see the module.
     """
     n, site = _sizes(n_qubits, site)
-    table = np.empty(0)
-    for table in _trivial_on(n, site, q, met_layers(n, depth, order)):  # noqa: B007 - the last one is meant
-        pass
+    table = _last(_trivial_on(n, site, q, met_layers(n, depth, order)))
     if one_of("side", side, ("right", "left")) == "right":
         return np.diff(table[:, n])
     return -np.diff(table[0, :])

@@ -72,7 +72,7 @@ def string_distribution(
     Source: see the module.
     """
     n = whole("n_qubits", n_qubits, 2, MOST_SITES, "; `spreading` serves longer lines")
-    weights = np.zeros(1 << n)
+    weights: FloatArray = np.zeros(1 << n)
     weights[1 << (n - 1 - whole("site", site, 0, n - 1))] = 1
     for layer in met_layers(n, depth, order):
         for pair in layer_pairs(n, layer):
@@ -112,7 +112,7 @@ def size_distribution(distribution: FloatArray) -> FloatArray:
     Source: elementary.
     """
     n = _sites(distribution)
-    return np.bincount(_weight(n), weights=distribution, minlength=n + 1)
+    return np.asarray(np.bincount(_weight(n), weights=distribution, minlength=n + 1), dtype=np.float64)
 
 
 def _sites(distribution: FloatArray) -> int:
@@ -141,7 +141,7 @@ def echo_return(n_qubits: int, depth: int, *, rule: FloatArray = HAAR_RULE) -> F
     Source: the chain of Nahum, Vijay and Haah; re-derived and checked by sampling.
     """
     n = whole("n_qubits", n_qubits, 2, MOST_SITES)
-    values = 3.0 ** -_weight(n)
+    values: FloatArray = 3.0 ** -_weight(n)
     starts = 1 << np.arange(n - 1, -1, -1)
     rows = [values[starts]]
     # a string meets the last layer first, so one more layer at the end is one more step at the start of the chain

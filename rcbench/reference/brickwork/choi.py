@@ -13,7 +13,7 @@ import numpy as np
 from rcbench.arrays import FloatArray
 from rcbench.reference.brickwork.labels import MOST_SITES, same_on_all, totals
 from rcbench.reference.brickwork.layers import all_layers
-from rcbench.reference.sizes import qubits_of
+from rcbench.reference.sizes import qubits_of, whole
 
 
 def operator_purity(
@@ -31,7 +31,7 @@ def operator_purity(
 
     Source: see the module.
     """
-    layers = all_layers(n_qubits, depth, ring=ring, most=MOST_SITES)
+    q, layers = whole("q", q, 2), all_layers(n_qubits, depth, ring=ring, most=MOST_SITES)
     start = same_on_all(n_qubits, 1, 0)
     start[list(qubits_of("region_in", region_in, n_qubits))] = 0, 1
     end = same_on_all(n_qubits, 1, 1 / q)  # over q^2 a site, the norm of the Choi state
@@ -51,7 +51,7 @@ def operator_tmi_renyi2(
 
     Source: see the module.
     """
-    inside = qubits_of("region_out", region_out, n_qubits)
+    inside = qubits_of("region_out", region_out, whole("n_qubits", n_qubits, 2, MOST_SITES))
     rest = [site for site in range(n_qubits) if site not in inside]
     both = [operator_purity(n_qubits, region_in, part, depth, ring=ring) for part in (inside, rest)]
-    return n_qubits * np.log(2) + np.log(both[0]) + np.log(both[1])
+    return np.asarray(n_qubits * np.log(2) + np.log(both[0]) + np.log(both[1]))

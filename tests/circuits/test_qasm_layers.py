@@ -1,0 +1,122 @@
+"""Layers from a sequence of rows, and the barriers that keep the layers of a circuit in its text."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+from circuit_cases import make_device
+from qasm_cases import layered_rows, without_barriers
+
+from rcbench.campaign import Circuits, Experiment
+from rcbench.circuits.circuit import Circuit, CircuitBuilder
+from rcbench.circuits.export import to_qasm2, write_circuit
+from rcbench.circuits.families import draw_circuits
+from rcbench.circuits.gates import CODE, VIRTUAL
+from rcbench.circuits.qasm import read_circuit, read_qasm
+from rcbench.circuits.qasm_layers import PARTIAL, layers_of, time_keys, waits
+from rcbench.circuits.transform import inverse
+from rcbench.device import Limits, NativeGate
+from rcbench.errors import InputError
+
+NATIVE = {
+    "cz": NativeGate(name="cz"),
+    "sqrt-iswap": NativeGate(name="sqrt-iswap"),
+    "fsim": NativeGate(name="fsim", parameters=(np.pi / 2, 0.0)),
+    "zz": NativeGate(name="zz"),
+}
+
+
+def echo(native: str, one_qubit: str, two_qubit: str, limits: Limits | None, layout: str = "line") -> Circuit:
+    """A circuit and its reverse, then measurements, on five or six qubits."""
+    device = make_device(layout, 5, one_qubit=one_qubit, gates=(NATIVE[native],), limits=limits)
+    circuits = Circuits(two_qubit=two_qubit, one_qubit="quarter-turns", angle=0.3 if two_qubit == "zz" else None)
+    experiment = Experiment(
+        name="e", signatures=("renyi2_entropy",), circuits=circuits, depths=(3,), instances=1, qubits=tuple(range(5))
+    )
+    circuit = draw_circuits(experiment, device, 3, 0)[3]
+    builder = CircuitBuilder(5)
+    builder.append(circuit)
+    builder.barrier()
+    try:
+        builder.append(inverse(circuit, device, range(5)))
+    except InputError:
+        builder.append(circuit)
+    builder.barrier()
+    builder.measure(range(5))
+    return builder.build()
+
+
+def cases():
+    for native in NATIVE:
+        for one_qubit in ("u", "r+rz", "sx+rz"):
+            for two_qubit in (native, "haar", "clifford"):
+                for limits in (None, Limits(parallel_gates=1)):
+                    yield pytest.param(native, one_qubit, two_qubit, limits, id=f"{native}-{one_qubit}-{two_qubit}-{bool(limits)}")
+
+
+@pytest.mark.parametrize(("native", "one_qubit", "two_qubit", "limits"), list(cases()))
+def test_the_barriers_of_waits_give_back_the_very_layers_of_a_compiled_circuit(native, one_qubit, two_qubit, limits):
+    circuit = echo(native, one_qubit, two_qubit, limits)
+    held = waits(circuit)
+    sequence, partial, own = [], {}, []
+    for place, (code, pair) in enumerate(zip(circuit.kind.tolist(), circuit.qubits.tolist(), strict=True)):
+        if code == CODE["measure"]:
+            break
+        if place in held:
+            partial[len(sequence)] = held[place]
+            sequence.append((PARTIAL, -1, -1))
+        own.append(len(sequence))
+        sequence.append((code, *pair))
+    keys = time_keys(5, sequence, partial)[own]
+    order, layer = layers_of(keys)
+    assert order.tolist() == list(range(len(own)))
+    assert layer.tolist() == circuit.layer[: len(own)].tolist()
+
+
+@pytest.mark.parametrize("circuit_format", ["qasm3", "qasm2", "cirq-json"])
+@pytest.mark.parametrize(("native", "one_qubit"), [("cz", "u"), ("fsim", "sx+rz"), ("zz", "r+rz"), ("sqrt-iswap", "sx+rz")])
+def test_our_own_files_give_back_the_same_rows_in_the_same_layers(native, one_qubit, circuit_format):
+    circuit = echo(native, one_qubit, native, None)
+    again = read_circuit(write_circuit(circuit, circuit_format), circuit_format, "t")
+    assert again.n_qubits == circuit.n_qubits
+    expected, found = layered_rows(circuit), layered_rows(again)
+    if circuit_format == "cirq-json":  # angles in half turns agree to rounding
+        assert [row[:3] for row in found] == [row[:3] for row in expected]
+        np.testing.assert_allclose(again.parameters, circuit.parameters, atol=1e-12)
+    else:
+        assert found == expected
+
+
+@pytest.mark.parametrize(("native", "one_qubit", "two_qubit", "limits"), list(cases()))
+def test_files_of_compiled_circuits_give_back_the_same_gates_at_the_same_time(native, one_qubit, two_qubit, limits):
+    """Where a gate could start earlier the file holds a further barrier; virtual gates may move between pulses."""
+    circuit = echo(native, one_qubit, two_qubit, limits)
+    again = read_qasm(to_qasm2(circuit), name="t")
+
+    def pulses(one: Circuit) -> list[tuple]:
+        timed = {name for name, code in CODE.items() if not VIRTUAL[code]}
+        kept = [row for row in without_barriers(one) if row[1] in timed]
+        number = {layer: place for place, layer in enumerate(sorted({row[0] for row in kept}))}
+        return [(number[row[0]], *row[1:]) for row in kept]
+
+    assert pulses(again) == pulses(circuit)
+    assert [row[1:] for row in sorted(without_barriers(again), key=lambda row: (row[2], row[0]))] == [
+        row[1:] for row in sorted(without_barriers(circuit), key=lambda row: (row[2], row[0]))
+    ]
+
+
+def test_a_gate_that_could_start_earlier_waits_for_one_that_runs_right_before_it():
+    builder = CircuitBuilder(3)
+    builder.add("x", [0])
+    builder.next_layer()
+    builder.add("x", [0])
+    builder.add("x", [1])
+    builder.next_layer()
+    builder.add("cz", [1, 2])
+    assert waits(builder.build()) == {1: [0, 1]}
+
+
+def test_ten_thousand_qubits_and_barriers_take_no_time_of_their_square():
+    rows = [(CODE["barrier"], -1, -1), (CODE["x"], 9_999, -1)] * 20_000
+    keys = time_keys(10_000, rows, {})
+    assert np.all(np.diff(keys) > 0)
