@@ -20,8 +20,7 @@ from rcbench.campaign import Campaign, Experiment
 from rcbench.circuits.circuit import Circuit
 from rcbench.device import Device
 from rcbench.engine.distribution import Distribution
-from rcbench.errors import InputError, suggest
-from rcbench.estimators import ESTIMATORS
+from rcbench.estimators import estimator
 from rcbench.estimators.sample import Group, Measured, Run
 from rcbench.files import output_folder, read_csv, sha256_bytes, write_csv, write_parquet
 from rcbench.signatures.registry import signature
@@ -159,8 +158,8 @@ def trajectories_for(experiment: Experiment) -> int:
 class _Writer:
     """Collects rows of the prediction table for one experiment."""
 
-    def __init__(self, experiment: Experiment) -> None:
-        self.experiment = experiment
+    def __init__(self, experiment: Experiment, protocol: str) -> None:
+        self.experiment, self.protocol = experiment, protocol
         self.rows: list[dict[str, Any]] = []
         self._deltas: dict[tuple[str, str, int, str], list[dict[str, float]]] = defaultdict(list)
 
@@ -177,7 +176,7 @@ class _Writer:
         self.rows.append(
             {
                 "experiment": self.experiment.name,
-                "protocol": self.experiment.protocol or "",
+                "protocol": self.protocol,
                 "signature": value.signature,
                 "axis": row.axis,
                 "unit": row.unit,
@@ -217,7 +216,7 @@ def predict_instance(
     """Both predictions of all circuits of one instance."""
     from rcbench.engine.predict import distributions
 
-    estimators = [ESTIMATORS[name] for name in protocol.estimators]
+    estimators = [estimator(name) for name in protocol.estimators]
     trajectories = options.trajectories or trajectories_for(writer.experiment)
     ideal: dict[str, Distribution] = {}
     noisy: dict[str, Distribution] = {}
@@ -239,9 +238,9 @@ def predict_instance(
         models.append(("noise-model", noisy, f"{trajectories} trajectories a circuit"))
     for model, samples, method in models:
         for group in group_runs(writer.experiment.name, runs, samples, ideal):
-            for estimator in estimators:
-                shifts = _shifts(estimator.apply, group) if model == "noise-model" else {}
-                for value in estimator.apply(group):
+            for family in estimators:
+                shifts = _shifts(family.apply, group) if model == "noise-model" else {}
+                for value in family.apply(group):
                     if not math.isfinite(value.value) or not math.isfinite(value.std_error):
                         continue
                     place = (value.signature, value.region)
@@ -369,17 +368,15 @@ def _predict_experiment(
     from rcbench.engine.noise import NoiseModel
     from rcbench.protocol import load_protocol
 
-    writer = _Writer(experiment)
     if experiment.protocol is None:
+        writer = _Writer(experiment, "")
         for instance in range(experiment.instances):
             predict_states(writer, campaign.device, campaign.seed, instance, options)
             if progress:
                 progress(done + instance + 1, total, experiment.name)
     else:
         protocol = kit.protocol(experiment) if kit is not None else load_protocol(experiment.protocol)
-        for name in protocol.estimators:
-            if name not in ESTIMATORS:
-                raise InputError("estimator", name, suggest(name, ESTIMATORS))
+        writer = _Writer(experiment, protocol.name)
         stated = campaign.device.errors is not None
         noise = NoiseModel.from_device(campaign.device, experiment.qubits) if stated else None
         batches: Iterator[list[PlannedRun]] | list[list[PlannedRun]] = (

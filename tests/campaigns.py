@@ -19,6 +19,7 @@ from rcbench.tables import PREDICTIONS
 N = 6
 SIZE = 2**N
 PROBES = (1, 2)
+MODELS = ("ideal", "noise-model")
 PROTOCOLS = {
     "direct-sampling": (
         ("xeb_linear", "xeb_fidelity", "self_fidelity", "collision_probability", "layer_loss", "spam"),
@@ -150,17 +151,16 @@ def draw_shots(kit: Kit, truth: Truth, rng: np.random.Generator, *, repeats=(0,)
 
 
 def predict(kit: Kit, values: dict[str, Callable], *, u_model: float = 0.0, mc: float = 0.0) -> pd.DataFrame:
-    """A prediction table: values[signature](row) -> (region, ideal, noise-model) or None, for every circuit."""
+    """A prediction table: values[signature](row) -> (region, ideal, noise-model), several, or None."""
     rows = []
     experiments = {e.name: e for e in kit.campaign.experiments}
     for row in kit.rows:
         e = experiments[row.experiment]
         for key, value in values.items():
             found = value(row) if key in PROTOCOLS[e.protocol][0] else None
-            if found is None:
-                continue
-            region, *numbers = found
-            for model, number in zip(("ideal", "noise-model"), numbers, strict=True):
+            found = [found] if isinstance(found, tuple) else found or []
+            entries = [(region, *pair) for region, *both in found for pair in zip(MODELS, both, strict=True)]
+            for region, model, number in entries:
                 if number is None:
                     continue
                 noisy = model == "noise-model"

@@ -198,6 +198,15 @@ def test_missing_that_grows_with_depth_is_warned_of():
     assert "grows" not in pick(even, "xeb_fidelity", 8)["note"]
 
 
+def test_planned_instances_are_those_of_the_roster_at_each_depth():
+    rng = np.random.default_rng(2)
+    kit = kit_of(experiment("sampling", "direct-sampling", instances=4, depths=(2, 4)))
+    kit.rows = [row for row in kit.rows if row.depth == 2 or row.instance < 3]
+    truth = draw_truth(kit, rng, fidelity)
+    table = compared(kit, truth, draw_shots(kit, truth, rng), predict(kit, {}))
+    assert [pick(table, "xeb_fidelity", depth)["instances_planned"] for depth in (2, 4)] == [4, 3]
+
+
 def test_predictions_are_averaged_over_the_used_instances():
     kept = lambda row: 0.2 + 0.06 * row.instance  # noqa: E731
     row = pick(sampling(kept=kept, skip=lambda row: row.instance < 5, shots=4000), "xeb_fidelity", 4)
@@ -211,6 +220,28 @@ def test_a_perfect_paired_device_with_wide_circuit_scatter_agrees():
     row = pick(sampling(kept=lambda row: wide[row.instance], shots=8000), "xeb_fidelity", 4)
     assert row["finding"] == "agrees"
     assert row["std_error"] > 5 * row["u_stat"]
+
+
+def test_scatter_between_live_circuits_does_not_make_the_guard_doubt_the_signal():
+    """Fidelities from 0.1 to 0.99: their mean is less than 2 of its standard errors above the margin."""
+    wide = np.linspace(0.1, 0.99, 6)
+    kept = lambda row: wide[row.instance]  # noqa: E731
+    row = pick(sampling(kept=kept, shots=8000, instances=6, margins={"xeb_fidelity": 0.3}), "xeb_fidelity", 4)
+    assert row["measured"] - 0.3 < 2 * row["std_error"]
+    assert row["finding"] == "agrees"
+
+
+def test_an_instance_without_a_prediction_is_left_out_of_the_difference_and_noted():
+    rng = np.random.default_rng(12)
+    kit = kit_of(experiment("sampling", "direct-sampling", margins=FIDELITY_MARGINS, instances=7))
+    truth = draw_truth(kit, rng, lambda row: 0.3 + 0.1 * row.instance)
+    values = {"xeb_fidelity": lambda row: ("", 1.0, 0.3 + 0.1 * row.instance if row.instance else None)}
+    table = compared(kit, truth, draw_shots(kit, truth, rng), predict(kit, values))
+    row = pick(table, "xeb_fidelity", 4)
+    assert "1 used instances have no prediction" in row["note"]
+    assert row["dof"] == 5
+    assert abs(row["difference"]) < 4 * row["u_stat"]
+    assert np.isfinite(pick(table, "layer_loss")["u_stat"])
 
 
 def test_self_fidelity_is_the_root_of_the_mean_square():

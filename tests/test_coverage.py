@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from campaigns import SIZE, N, compared, draw_shots, draw_truth, experiment, kit_of, predict
+from campaigns import PROBES, SIZE, N, compared, draw_shots, draw_truth, experiment, kit_of, predict
 
 from rcbench.estimators.decay import fit
 
@@ -109,7 +109,8 @@ def off_by_the_margin(hidden):
         return ("", 1.0, kept + (1 - kept) / SIZE - MARGINS["echo_return"])
 
     def otoc(row):
-        return (OTOC, 1.0, hidden.o[row.instance] + MARGINS["otoc"]) if row.params else None
+        expected = hidden.o[row.instance] + MARGINS["otoc"] if row.params else None
+        return [(OTOC.replace("probe=1", f"probe={probe}"), 1.0, expected) for probe in PROBES] if row.params else None
 
     return {"xeb_fidelity": fidelity, "polarization": polarization, "echo_return": echo_return, "otoc": otoc}
 
@@ -117,23 +118,30 @@ def off_by_the_margin(hidden):
 @pytest.mark.slow
 @pytest.mark.parametrize("instances", [5, 10, 30])
 def test_a_true_difference_equal_to_the_margin_agrees_in_at_most_6_percent(instances):
-    """Nominal 5 % each, 1,000 campaigns. The rate of loss is the same in all circuits, so that its mean is exact."""
+    """Nominal 5 %, 1,000 campaigns, all depths or probes of a signature together, which leaves 0.3 to 0.7 % of noise.
+
+    The rate of loss is the same in all circuits, so that the fit of the mean is exact.
+    """
     rng = np.random.default_rng(200 + instances)
     kit = campaign(instances, MARGINS, shots=1000)
-    wanted = {("sampling", "xeb_fidelity", "", depth) for depth in DEPTHS}
-    wanted |= {("echo", "echo_return", "", depth) for depth in DEPTHS}
-    false = dict.fromkeys([*sorted(wanted), ("echo", "layer_loss", "", None), ("otoc", "otoc", OTOC, 2)], 0)
+    found: dict[tuple[str, str], list[bool]] = {
+        ("sampling", "xeb_fidelity"): [],
+        ("echo", "echo_return"): [],
+        ("echo", "layer_loss"): [],
+        ("otoc", "otoc"): [],
+    }
     for _ in range(CAMPAIGNS):
         hidden = Instances(instances, rng)
         hidden.q[:] = Q[0]
         drawn = draw_truth(kit, rng, hidden.kept)
         table = compared(kit, drawn, draw_shots(kit, drawn, rng), predict(kit, off_by_the_margin(hidden)))
         for key, _low, _high, finding in rows_of(table):
-            if key in false:
-                false[key] += finding == "agrees"
-    for key, count in false.items():
-        print(instances, "instances,", *key, "false agreement", count / CAMPAIGNS)
-    assert {key: count for key, count in false.items() if count > 0.06 * CAMPAIGNS} == {}
+            if key[:2] in found:
+                found[key[:2]].append(finding == "agrees")
+    assert [len(rows) // CAMPAIGNS for rows in found.values()] == [len(DEPTHS), len(DEPTHS), 1, len(PROBES)]
+    for key, rows in found.items():
+        print(instances, "instances,", *key, "false agreement", np.mean(rows))
+    assert {key: np.mean(rows) for key, rows in found.items() if np.mean(rows) > 0.06} == {}
 
 
 @pytest.mark.slow

@@ -3,9 +3,9 @@
 OpenQASM. One register q and, where something is measured, one register c; one statement a line; angles with every
 digit, so that reading them back gives the same numbers. Gates outside the format's standard file are defined at the
 top, by standard gates, up to a global phase: r, iswap, sqrt_iswap, fsim, zz and sxdg, and sx in 2.0 only. The gate u is
-U in OpenQASM 3 and u3 in 2.0. Every barrier row is a barrier line, and so is every place where a gate could slip into
-an earlier layer: between barriers, each gate as early as its qubits are free gives back the layers, where virtual gates
-take no time.
+U in OpenQASM 3 and u3 in 2.0. Every barrier row is a line `barrier q;`. Where a gate could start in an earlier layer,
+a barrier on its qubits and on one that is busy till then holds it back. So each gate as early as its qubits are free
+gives back the layers, where virtual gates take no time, and barriers on single qubits are no rows.
 
 Cirq. One moment a layer; Cirq has no barrier, so an empty moment stands for one. u is PhasedXZGate and r
 PhasedXPowGate, in half turns, so that their angles agree to rounding, and the gates up to a global phase. Where all
@@ -23,9 +23,10 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from rcbench.arrays import BoolArray, IntArray
+from rcbench.arrays import IntArray
 from rcbench.circuits.circuit import Circuit
-from rcbench.circuits.gates import CODE, KINDS, VIRTUAL
+from rcbench.circuits.gates import CODE, KINDS
+from rcbench.circuits.qasm_layers import waits
 from rcbench.errors import InputError, suggest
 
 if TYPE_CHECKING:
@@ -110,25 +111,6 @@ def angle_text(values: Sequence[float]) -> list[str]:
     return [text.replace("e", ".0e") if "e" in text and "." not in text else text for text in texts]
 
 
-def early_rows(circuit: Circuit) -> BoolArray:
-    """(rows,) true where a row could run in the layer before its own: all its qubits are free there.
-
-    Layers that hold virtual gates only take no time and do not count.
-    """
-    barrier = circuit.kind == CODE["barrier"]
-    timed = barrier | ~VIRTUAL[circuit.kind]
-    _, layer = np.unique(circuit.layer[timed], return_inverse=True)
-    kind, qubits = circuit.kind[timed], circuit.qubits[timed].copy()
-    qubits[kind == CODE["measure"], 1] = -1  # a classical bit
-    busy = np.zeros((layer.max(initial=-1) + 2, circuit.n_qubits + 1), dtype=bool)
-    busy[layer[:, None] + 1, qubits] = True
-    busy[0] = True  # nothing runs before the start, nor slips over a barrier
-    busy[layer[kind == CODE["barrier"]] + 1] = True
-    out = np.zeros(len(circuit), dtype=bool)
-    out[timed] = ~(busy[layer[:, None], qubits] & (qubits >= 0)).any(axis=1)
-    return np.asarray(out & ~barrier)
-
-
 def _qasm(circuit: Circuit, header: list[str], u: str, measure: str) -> str:
     numbers = angle_text(circuit.parameters.tolist())
     lines = [""] * len(circuit)
@@ -147,9 +129,8 @@ def _qasm(circuit: Circuit, header: list[str], u: str, measure: str) -> str:
             texts = [call + place for call, place in zip(calls, places, strict=True)]
         for row, text in zip(rows.tolist(), texts, strict=True):
             lines[row] = text
-    for layer in np.unique(circuit.layer[early_rows(circuit)]).tolist():
-        row = int(np.searchsorted(circuit.layer, layer))
-        lines[row] = "barrier q;\n" + lines[row]
+    for row, qubits in waits(circuit).items():
+        lines[row] = f"barrier {', '.join(f'q[{qubit}]' for qubit in qubits)};\n{lines[row]}"
     return "\n".join([*header, *lines, ""])
 
 

@@ -63,6 +63,10 @@ _TOKEN = re.compile(
     r"\s*(?:(0[xX][\da-fA-F_]+|0[bB][01_]+)|((?:\d[\d_]*\.?[\d_]*|\.\d[\d_]*)(?:[eE][+-]?\d+)?)"
     r"|([^\W\d]\w*)|(\*\*|[-+*/^(),]))"
 )
+_NUMBER = r"(?:\d++\.?\d*+|\.\d++)(?:[eE][+-]?\d++)?"
+_USUAL = re.compile(
+    rf"\s*+(-?)\s*+(?:({_NUMBER})|(?:({_NUMBER})\s*+\*\s*+)?pi\s*+(?:([*/])\s*+(-?{_NUMBER}))?)\s*+"
+)
 _Step = float | str | Operation
 FINITE = "an expression with a finite real value"
 
@@ -142,7 +146,26 @@ class Expression:
 
 def evaluate(text: str, known: Mapping[str, float], *, power_sign: bool) -> float:
     """The value of an expression that uses the names in `known` and no others."""
-    return compile_expression(text, known, power_sign=power_sign).value(known)
+    quick = _quick(text, known)
+    return compile_expression(text, known, power_sign=power_sign).value(known) if quick is None else quick
+
+
+def _quick(text: str, known: Mapping[str, float]) -> float | None:
+    """The value of a number or a multiple of pi, which most angles are; None for all else."""
+    match = _USUAL.fullmatch(text)
+    if match is None or "pi" in known:
+        return None
+    sign, plain, factor, by, other = match.groups()
+    if plain is not None:
+        value = float(plain)
+    else:
+        value = math.pi if factor is None else float(factor) * math.pi
+        if by is not None:
+            second = float(other)
+            if second == 0:
+                return None
+            value = value * second if by == "*" else value / second
+    return (-value if sign else value) if math.isfinite(value) else None
 
 
 def compile_expression(text: str, names: Collection[str], *, power_sign: bool) -> Expression:

@@ -88,22 +88,24 @@ def waits(circuit: Circuit) -> dict[int, list[int]]:
     """
     out: dict[int, list[int]] = {}
     virtual = VIRTUAL.tolist()
+    timeless = [*virtual]
+    timeless[CODE["measure"]] = True
     free = [0] * circuit.n_qubits
     pending: set[int] = set()  # qubits with virtual gates since the last layer that takes time
     slot, latest = 0, -1  # slot of the layer at hand; a qubit that becomes free right there
     starts = np.flatnonzero(np.diff(circuit.layer, prepend=-1, append=-1))
     codes, pairs = circuit.kind.tolist(), circuit.qubits.tolist()
     for begin, end in pairwise(starts.tolist()):
-        if codes[begin] == CODE["measure"]:
-            break
         if codes[begin] == _BARRIER:
             slot, latest = slot + 1, -1
             free = [slot] * circuit.n_qubits
             pending.clear()
             continue
-        acting = [[qubit for qubit in pair if qubit >= 0] for pair in pairs[begin:end]]
-        if virtual[codes[begin]]:
-            pending.update(qubit for qubits in acting for qubit in qubits)
+        layer = range(begin, end)
+        acting = [[q for q in pairs[row] if q >= 0] for row in layer if not timeless[codes[row]]]
+        late = {pairs[row][0] for row in layer if virtual[codes[row]]}
+        if not acting:
+            pending |= late
             continue
         busy = {qubit for qubits in acting for qubit in qubits}
         held = {qubit for qubits in acting if max(free[one] for one in qubits) < slot for qubit in qubits}
@@ -114,5 +116,5 @@ def waits(circuit: Circuit) -> dict[int, list[int]]:
         for qubit in busy | held:
             free[qubit] = slot if qubit in busy else slot - 1
         latest = acting[0][0]
-        pending.clear()
+        pending = late
     return out

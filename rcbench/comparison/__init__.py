@@ -8,6 +8,7 @@
 
 from __future__ import annotations
 
+from collections import defaultdict
 from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -53,6 +54,7 @@ def compare_frames(
 
     cells = read_cells(estimates, predictions)
     returned = returned_instances(estimates)
+    planned = planned_instances(kit)
     rows: list[dict[str, Any]] = []
     for experiment in kit.campaign.experiments:
         if experiment.protocol is None:
@@ -62,11 +64,20 @@ def compare_frames(
             confidence=kit.campaign.confidence if confidence is None else confidence,
             budget=kit.campaign.device.errors is not None,
         )
+        asked = {depth: planned.get((experiment.name, depth), set()) for depth in experiment.depths}
         back = {depth: returned.get((experiment.name, depth), set()) for depth in experiment.depths}
         measured = kit.protocol(experiment).measured
-        rows += ExperimentRows(terms, cells.get(experiment.name, {}), back, measured).rows()
+        rows += ExperimentRows(terms, cells.get(experiment.name, {}), asked, back, measured).rows()
     add_controls(kit.campaign.experiments, rows)
     return _typed(pd.DataFrame(rows, columns=list(COMPARISON), dtype=object))
+
+
+def planned_instances(kit: Kit) -> dict[tuple[str, int], set[int]]:
+    """Instances in the roster, by experiment and depth; adopted circuits need not be equally many at every depth."""
+    planned: dict[tuple[str, int], set[int]] = defaultdict(set)
+    for row in kit.rows:
+        planned[row.experiment, row.depth].add(row.instance)
+    return planned
 
 
 def read_comparison(path: Path) -> pd.DataFrame:

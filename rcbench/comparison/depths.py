@@ -25,13 +25,20 @@ class ExperimentRows:
 
     Args:
         terms: on what terms it is compared. cells: what is known of it.
-        returned: instances that came back, by depth. measured: signature keys of its protocol, in order.
+        planned, returned: instances of the roster and those that came back, by depth.
+        measured: signature keys of its protocol, in order.
     """
 
     def __init__(
-        self, terms: Terms, cells: Mapping[Key, Cell], returned: Mapping[int, set[int]], measured: Sequence[str]
+        self,
+        terms: Terms,
+        cells: Mapping[Key, Cell],
+        planned: Mapping[int, set[int]],
+        returned: Mapping[int, set[int]],
+        measured: Sequence[str],
     ) -> None:
         self.terms = terms
+        self.planned = planned
         self.returned = returned
         self.measured = [key for key in measured if signature(key).axis != "prediction only"]
         self.cells = {key: cell for key, cell in cells.items() if self._is_row(key, cells)}
@@ -57,19 +64,20 @@ class ExperimentRows:
             out += [write_row(self.terms, self._at_depth(key)) for key in keys]
             if name == source:
                 cells = [self.cells[key] for key in keys if key in self.cells]
-                out += fit_rows(self.terms, name, fits, cells, set().union(*self.returned.values()))
+                out += fit_rows(self.terms, name, fits, cells, (_all(self.planned), _all(self.returned)))
         return out
 
     def _at_depth(self, key: Key) -> Row:
         cell = self.cells.get(key) or Cell(key=key, used=[], refused=[], table=_EMPTY, shots=0)
         # with no data the row still says what was expected
-        shown = cell.used or list(range(self.terms.experiment.instances))
+        shown = cell.used or sorted(self.planned[key.depth])
         return Row(
             entry=signature(key.signature),
             region=key.region,
             depth=key.depth,
             pool=pool_for(key.signature),
             used=cell.used,
+            planned=len(self.planned[key.depth]),
             returned=len(self.returned[key.depth]),
             table=cell.table,
             shots=cell.shots,
@@ -87,6 +95,10 @@ class ExperimentRows:
             notes.append("once scrambled, a normalised OTOC is larger than the ideal one")
         if cell.used and cell.refused:
             notes.append(f"{len(cell.refused)} returned instances gave no value")
+        model = cell.ideal if self.terms.against == "ideal" else cell.noise
+        alone = sum(i not in model.values for i in cell.used) if model else 0
+        if alone:
+            notes.append(f"{alone} used instances have no prediction and are not in the difference")
         gone = len(self.returned[cell.key.depth]) - len(cell.used) - len(cell.refused)
         if cell.used and gone > 0:
             notes.append(f"{gone} returned instances dropped: a role is missing")
@@ -120,13 +132,19 @@ class ExperimentRows:
 
     def _missing_grows(self) -> str:
         """A warning where deep circuits are missing more often than shallow ones, so that the rest may look better."""
-        planned = self.terms.experiment.instances
-        missing = [planned - len(self.returned[depth]) for depth in sorted(self.returned)]
-        half = len(missing) // 2
+        depths = sorted(depth for depth in self.planned if self.planned[depth])
+        half = len(depths) // 2
         if half == 0 or not any(self.returned.values()):
             return ""
-        more = (sum(missing[-half:]) - sum(missing[:half])) / half
-        return "what is missing grows with depth" if more >= max(1.0, 0.1 * planned) else ""
+        lost = {depth: len(self.planned[depth] - self.returned[depth]) for depth in depths}
+        shares = [lost[depth] / len(self.planned[depth]) for depth in depths]
+        more = sum(lost[depth] for depth in depths[-half:]) - sum(lost[depth] for depth in depths[:half])
+        steeper = (sum(shares[-half:]) - sum(shares[:half])) / half
+        return "what is missing grows with depth" if more >= half and steeper >= 0.1 else ""
+
+
+def _all(instances: Mapping[int, set[int]]) -> set[int]:
+    return set().union(*instances.values())
 
 
 def _order(key: Key) -> tuple[list[tuple[bool, int, str]], int]:

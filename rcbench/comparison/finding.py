@@ -44,16 +44,20 @@ class Guard:
     faint: str = ""
 
 
-def own_guard(null: float, margin: float, reference: float, measured: Interval, alpha: float) -> Guard:
+def own_guard(null: float, margin: float, reference: float, measured: float, u_shot: float, alpha: float) -> Guard:
     """Prediction and data must both stand apart from a fully mixed state by more than the margin.
 
-    For agreement the data must do so beyond doubt: with the one-sided bound of level 1 - alpha.
+    For agreement the data must do so beyond doubt: with a one-sided bound of level 1 - alpha. What could lift a dead
+    device above its margin is shot noise, so the bound is made with that and not with the scatter between circuits.
+
+    Args:
+        null: value for a fully mixed state. reference, measured: prediction and data. u_shot: shot noise of measured.
     """
     if abs(reference - null) <= margin:
         return Guard(dead="the prediction lies within the margin of a fully mixed state")
-    if abs(measured.value - null) <= margin:
+    if abs(measured - null) <= margin:
         return Guard(dead="the data lie within the margin of a fully mixed state")
-    if abs(measured.value - null) - quantile(1 - alpha, measured.dof) * measured.std_error <= margin:
+    if not abs(measured - null) - quantile(1 - alpha, math.inf) * u_shot > margin:
         return Guard(faint="the data do not stand apart from a fully mixed state beyond doubt")
     return Guard()
 
@@ -127,7 +131,7 @@ def settle(found: Difference, u_syst: float, margin: float, alpha: float, instan
     gap = margin if none else abs(abs(found.value) - margin)
     target = u_to_settle(gap, alpha, POWER, u_syst, two_sided=none)
     if target == 0:
-        return f"more data would not settle it: the model's own uncertainty ({u_syst:.2g}) is too large for the margin"
+        return f"more data would hardly settle it: the model's own uncertainty is {u_syst:.2g}, too near the margin"
     needed = math.ceil((found.one / target) ** 2) + 2  # the normal formula falls short of Student's by one or two
     if needed > MOST_INSTANCES:
         return "the difference lies too near the margin for more data to settle it"

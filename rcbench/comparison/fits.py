@@ -24,7 +24,7 @@ _DOUBT = 0.001
 
 
 def fit_rows(
-    terms: Terms, source: str, keys: Sequence[str], cells: Sequence[Cell], returned: set[int]
+    terms: Terms, source: str, keys: Sequence[str], cells: Sequence[Cell], instances: tuple[set[int], set[int]]
 ) -> list[dict[str, Any]]:
     """`layer_loss` and `spam` of an experiment. No rows where fewer than decay.LEAST_DEPTHS depths were planned.
 
@@ -34,13 +34,13 @@ def fit_rows(
 
     Args:
         terms: of the experiment. source: the signature that is fitted. keys: the rows wanted, of decay.SIGNATURES.
-        cells: the source's cells by depth, rising. returned: the instances that came back at any depth.
+        cells: the source's cells by depth, rising. instances: those planned and those that came back, at any depth.
     """
     if len(terms.experiment.depths) < decay.LEAST_DEPTHS:
         return []
     cells = [cell for cell in cells if cell.used]
     if sum(_stands(cell) for cell in cells) < decay.LEAST_DEPTHS:
-        return [write_row(terms, _no_fit(key, source, cells, returned)) for key in keys]
+        return [write_row(terms, _no_fit(key, source, cells, instances)) for key in keys]
     layers = np.array([cell.key.depth for cell in cells], dtype=float) * decay.LAYERS_PER_DEPTH[source]
     used, table = stack(cells)
     weights = decay.depth_weights(*table.by_instance())
@@ -56,7 +56,8 @@ def fit_rows(
             depth=None,
             pool=pool,
             used=used,
-            returned=len(returned),
+            planned=len(instances[0]),
+            returned=len(instances[1]),
             table=table,
             shots=sum(cell.shots for cell in cells),
             ideal=ideal,
@@ -74,7 +75,7 @@ def _stands(cell: Cell) -> bool:
     return found.value > quantile(_STANDS, found.dof) * found.std_error
 
 
-def _no_fit(key: str, source: str, cells: Sequence[Cell], returned: set[int]) -> Row:
+def _no_fit(key: str, source: str, cells: Sequence[Cell], instances: tuple[set[int], set[int]]) -> Row:
     finding = Finding(finding="not-tested", note="no data returned")
     if cells:
         few = f"{source} stands above 0 at fewer than {decay.LEAST_DEPTHS} depths"
@@ -86,7 +87,8 @@ def _no_fit(key: str, source: str, cells: Sequence[Cell], returned: set[int]) ->
         depth=None,
         pool=MEAN,
         used=(),
-        returned=len(returned),
+        planned=len(instances[0]),
+        returned=len(instances[1]),
         table=none,
         shots=0,
         empty=finding,

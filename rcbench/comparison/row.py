@@ -16,6 +16,7 @@ from rcbench.signatures.registry import Signature
 from rcbench.statistics import Component, Interval, combine
 from rcbench.tables import COMPARISON
 
+_ROUNDING = 1e-13
 NO_BUDGET = "no error budget: compared with the ideal"
 
 
@@ -54,9 +55,10 @@ class Terms:
 class Row:
     """What a row is made from, whether of one depth or of a fit over depths.
 
-    used: instances. returned: how many came back. table: their values. ideal, noise: predictions, instance for
-    instance. u_model: uncertainty of the noise prediction from the stated rates. guard: None where the row's own
-    value for a fully mixed state guards it. empty: the finding and why, where nothing was used.
+    used: instances. planned, returned: how many were asked for and came back. table: values of the used ones. ideal,
+    noise: predictions, instance for instance. u_model: uncertainty of the noise prediction from the stated rates.
+    guard: None where the row's own value for a fully mixed state guards it. empty: the finding and why, where nothing
+    was used.
     """
 
     entry: Signature
@@ -64,6 +66,7 @@ class Row:
     depth: int | None
     pool: Pool
     used: Sequence[int]
+    planned: int
     returned: int
     table: Table
     shots: int
@@ -90,7 +93,7 @@ def write_row(terms: Terms, row: Row) -> dict[str, Any]:
         "region": row.region,
         "n_qubits": n,
         "depth": row.depth,
-        "instances_planned": terms.experiment.instances,
+        "instances_planned": row.planned,
         "instances_returned": row.returned,
         "instances": len(row.used),
         "shots": row.shots,
@@ -105,7 +108,7 @@ def write_row(terms: Terms, row: Row) -> dict[str, Any]:
     else:
         measured = interval(row.pool, row.table, terms.confidence)
         out |= _measured(measured) | _scores(row)
-        finding = _find(terms, row, out, measured, reference, margin)
+        finding = _find(terms, row, out, measured.value, reference, margin)
         notes = [*row.notes, *_runs(row)] + ([NO_BUDGET] if terms.no_budget else [])
     notes += [finding.note] if finding.note else []
     return out | {"finding": finding.finding, "direction": finding.direction, "note": "; ".join(notes)}
@@ -113,7 +116,7 @@ def write_row(terms: Terms, row: Row) -> dict[str, Any]:
 
 def _measured(found: Interval) -> dict[str, Any]:
     return {
-        "measured": found.value,
+        "measured": _finite(found.value),
         "std_error": _finite(found.std_error),
         "ci_low": _finite(found.low),
         "ci_high": _finite(found.high),
@@ -133,7 +136,7 @@ def _scores(row: Row) -> dict[str, Any]:
 
 
 def _find(
-    terms: Terms, row: Row, out: dict[str, Any], measured: Interval, reference: float | None, margin: float | None
+    terms: Terms, row: Row, out: dict[str, Any], measured: float, reference: float | None, margin: float | None
 ) -> Finding:
     """The finding; the difference and its uncertainties are put into `out`."""
     ideal = terms.against == "ideal"
@@ -144,7 +147,7 @@ def _find(
     u_syst = 0.0 if ideal else row.u_model
     tested, total = against_margin(found, u_syst, margin or 0.0, terms.alpha)
     out |= {
-        "difference": found.value,
+        "difference": _finite(found.value),
         "diff_ci_low": _finite(tested.low),
         "diff_ci_high": _finite(tested.high),
         "u_stat": _finite(found.stat.u),
@@ -161,7 +164,8 @@ def _find(
     guard = row.guard
     if guard is None:
         null = row.entry.null_value(terms.experiment.n_qubits)
-        guard = Guard() if null is None else own_guard(null, margin, reference, measured, terms.alpha)
+        u_shot = found.shot / math.sqrt(len(row.used))
+        guard = Guard() if null is None else own_guard(null, margin, reference, measured, u_shot, terms.alpha)
     return decide(
         row.entry,
         found,
@@ -185,9 +189,12 @@ def _runs(row: Row) -> list[str]:
 def _pooled(pool: Pool, predicted: Table | None) -> float | None:
     if predicted is None:
         return None
-    values, _ = pool.forward(predicted.values, predicted.errors)
+    values = pool.columns(predicted).values
     return _finite(float(pool.combine(np.nanmean(values[:, 0], axis=0))))
 
 
 def _finite(value: float) -> float | None:
-    return value if math.isfinite(value) else None
+    """A number for the table; what is 0 but for rounding is 0, so that tables of equal inputs are equal."""
+    if not math.isfinite(value):
+        return None
+    return 0.0 if abs(value) < _ROUNDING else value

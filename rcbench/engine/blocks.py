@@ -220,7 +220,7 @@ def _grow(masks, waiting, count, active, block_bits):  # type: ignore[no-untyped
 
 @kernel
 def _sweeps(masks, costs, n, block_bits, run_bits):  # type: ignore[no-untyped-def]
-    """Sweep after sweep the active positions that take in the most: windows, and sets grown from each operator in reach."""
+    """Sweep after sweep the active positions that take in the most: windows, and sets grown from operators in reach."""
     total = len(masks)
     waiting = np.arange(total)
     order = np.empty(total, dtype=np.int64)

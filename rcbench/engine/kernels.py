@@ -66,7 +66,7 @@ def _make_dense_mixed(bit: int) -> Any:
 def _make_dense_inside(high: int, low: int) -> Any:
     @part
     def dense_inside(block, bits, c):  # type: ignore[no-untyped-def]
-        # a lane with bits h, l is row 2h + l; the columns are its own index with no, one, the other and both bits flipped
+        # a lane with bits h, l is row 2h + l; the columns are its index with no, one, the other and both bits flipped
         own, flip_low = choose4(c, 0, 10, 5, high, low), choose4(c, 1, 10, 3, high, low)
         flip_high, flip_both = choose4(c, 2, 6, 5, high, low), choose4(c, 3, 6, 3, high, low)
         for i in range(0, 2 << bits, 2 * lanes(block)):

@@ -14,12 +14,34 @@ import operator
 from collections.abc import Callable
 from typing import Any
 
-import llvmlite.binding
-from llvmlite import ir
-from numba.core import cgutils, types
-from numba.core.imputils import lower_builtin
-from numba.core.typing.templates import AbstractTemplate, infer_global
-from numba.extending import intrinsic, models, register_model
+import llvmlite.binding  # type: ignore[import-untyped]
+import llvmlite.ir  # type: ignore[import-untyped]
+import numba.core.cgutils
+import numba.core.imputils
+import numba.core.typing.templates
+import numba.extending
+from numba.core import types as numba_types
+
+# numba and llvmlite are typed in some of the supported versions only
+types: Any = numba_types
+ir: Any = llvmlite.ir
+_extending: Any = numba.extending
+register_model: Any = numba.extending.register_model
+models: Any = numba.extending.models
+lower_builtin: Any = numba.core.imputils.lower_builtin
+infer_global: Any = numba.core.typing.templates.infer_global
+AbstractTemplate: Any = numba.core.typing.templates.AbstractTemplate
+cgutils: Any = numba.core.cgutils
+
+
+def intrinsic(function: Any) -> Any:
+    """A function that writes instructions for compiled code."""
+    return _extending.intrinsic(function)
+
+
+def intrinsic_with_constants(function: Any) -> Any:
+    """The same for arguments that must be known when it is compiled."""
+    return _extending.intrinsic(prefer_literal=True)(function)
 
 
 def _register_bytes() -> int:
@@ -39,7 +61,7 @@ class Amplitudes(types.Type):  # type: ignore[misc]
         super().__init__(name=f"amplitudes({self.lanes} x {element.name})")
 
 
-def _register(kind: Amplitudes) -> ir.VectorType:
+def _register(kind: Amplitudes) -> Any:
     element = ir.FloatType() if kind.element.bitwidth == 32 else ir.DoubleType()
     return ir.VectorType(element, kind.lanes)
 
@@ -104,7 +126,7 @@ def _integers(context: Any, builder: Any, signature: Any, args: Any, places: ran
     return [context.cast(builder, args[k], signature.args[k], types.intp) for k in places]
 
 
-@intrinsic  # type: ignore[untyped-decorator]
+@intrinsic
 def lanes(typing: Any, array: Any) -> Any:
     """Amplitudes in a register of an array's type."""
 
@@ -114,7 +136,7 @@ def lanes(typing: Any, array: Any) -> Any:
     return types.intp(array), generate
 
 
-@intrinsic  # type: ignore[untyped-decorator]
+@intrinsic
 def load(typing: Any, block: Any, index: Any) -> Any:
     """The chunk of a block that begins at a float index."""
 
@@ -125,7 +147,7 @@ def load(typing: Any, block: Any, index: Any) -> Any:
     return Amplitudes(block.dtype)(block, types.intp), generate
 
 
-@intrinsic  # type: ignore[untyped-decorator]
+@intrinsic
 def store(typing: Any, block: Any, index: Any, value: Any) -> Any:
     """Write a chunk of a block."""
 
@@ -138,7 +160,7 @@ def store(typing: Any, block: Any, index: Any, value: Any) -> Any:
     return types.void(block, types.intp, value), generate
 
 
-@intrinsic  # type: ignore[untyped-decorator]
+@intrinsic
 def load_pairs(typing: Any, state: Any, index: Any) -> Any:
     """Amplitudes from an array of real and imaginary parts in turn, from a float index on."""
 
@@ -152,7 +174,7 @@ def load_pairs(typing: Any, state: Any, index: Any) -> Any:
     return Amplitudes(state.dtype)(state, types.intp), generate
 
 
-@intrinsic  # type: ignore[untyped-decorator]
+@intrinsic
 def store_pairs(typing: Any, state: Any, index: Any, value: Any) -> Any:
     """Write amplitudes into an array of real and imaginary parts in turn."""
 
@@ -168,7 +190,7 @@ def store_pairs(typing: Any, state: Any, index: Any, value: Any) -> Any:
     return types.void(state, types.intp, value), generate
 
 
-@intrinsic  # type: ignore[untyped-decorator]
+@intrinsic
 def entry(typing: Any, numbers: Any, place: Any) -> Any:
     """One complex number, at a place counted in complex numbers, in every lane."""
 
@@ -181,7 +203,7 @@ def entry(typing: Any, numbers: Any, place: Any) -> Any:
     return Amplitudes(numbers.dtype)(numbers, place), generate
 
 
-@intrinsic(prefer_literal=True)  # type: ignore[untyped-decorator]
+@intrinsic_with_constants
 def choose(typing: Any, numbers: Any, zero: Any, one: Any, bit: Any) -> Any:
     """Complex number `zero` in the lanes whose index has a 0 in one bit, complex number `one` in the others."""
     place = bit.literal_value
@@ -194,7 +216,7 @@ def choose(typing: Any, numbers: Any, zero: Any, one: Any, bit: Any) -> Any:
     return Amplitudes(numbers.dtype)(numbers, zero, one, bit), generate
 
 
-@intrinsic(prefer_literal=True)  # type: ignore[untyped-decorator]
+@intrinsic_with_constants
 def choose4(typing: Any, numbers: Any, first: Any, up: Any, across: Any, high: Any, low: Any) -> Any:
     """Complex number first + up * (bit `high` of the lane's index) + across * (bit `low`)."""
     bits = high.literal_value, low.literal_value
@@ -215,7 +237,7 @@ def _flipped(builder: Any, part: Any, bit: int) -> Any:
     return _shuffle(builder, part, part, [lane ^ (1 << bit) if 1 << bit < count else lane for lane in range(count)])
 
 
-@intrinsic(prefer_literal=True)  # type: ignore[untyped-decorator]
+@intrinsic_with_constants
 def exchange(typing: Any, value: Any, bit: Any) -> Any:
     """Each lane swapped for the one whose index differs in one bit."""
 
@@ -228,8 +250,8 @@ def exchange(typing: Any, value: Any, bit: Any) -> Any:
 def _fused(builder: Any, x: Any, y: Any, z: Any) -> Any:
     """x * y + z in one instruction where the processor has it.
 
-    Written out, and never left to relaxed arithmetic: the same inputs must give the same digits however and whenever the
-    code around was compiled.
+    Written out, and never left to relaxed arithmetic: the same inputs must give the same digits whenever and with
+    whatever the code was compiled.
     """
     name = f"llvm.fmuladd.v{x.type.count}f{32 if isinstance(x.type.element, ir.FloatType) else 64}"
     function = cgutils.get_or_insert_function(builder.module, ir.FunctionType(x.type, [x.type] * 3), name)
@@ -248,7 +270,7 @@ def _add_product(
     return _fused(builder, builder.fneg(xi), ai, re), _fused(builder, xr, ai, im)
 
 
-@intrinsic(prefer_literal=True)  # type: ignore[untyped-decorator]
+@intrinsic_with_constants
 def turn(typing: Any, value: Any, bit: Any) -> Any:
     """[[1, -1], [1, 1]] on the qubit that is one bit of the lane's index."""
 
@@ -271,13 +293,13 @@ def _sum_of_products(builder: Any, args: Any) -> Any:
     return _pack(builder, *total)
 
 
-@intrinsic  # type: ignore[untyped-decorator]
+@intrinsic
 def mix2(typing: Any, x0: Any, a0: Any, x1: Any, a1: Any) -> Any:
     """x0 a0 + x1 a1."""
     return x0(x0, a0, x1, a1), lambda context, builder, signature, args: _sum_of_products(builder, args)
 
 
-@intrinsic  # type: ignore[untyped-decorator]
+@intrinsic
 def mix4(typing: Any, x0: Any, a0: Any, x1: Any, a1: Any, x2: Any, a2: Any, x3: Any, a3: Any) -> Any:
     """x0 a0 + x1 a1 + x2 a2 + x3 a3."""
     return x0(x0, a0, x1, a1, x2, a2, x3, a3), lambda context, builder, signature, args: _sum_of_products(builder, args)
@@ -294,9 +316,10 @@ def _operation(symbol: Any, parts: Callable[[Any, Any, Any], tuple[Any, Any]]) -
 
     infer_global(symbol)(Typing)
 
-    @lower_builtin(symbol, Amplitudes, Amplitudes)  # type: ignore[untyped-decorator]
     def generate(context: Any, builder: Any, signature: Any, args: Any) -> Any:
         return _pack(builder, *parts(builder, _unpack(builder, args[0]), _unpack(builder, args[1])))
+
+    lower_builtin(symbol, Amplitudes, Amplitudes)(generate)
 
 
 _operation(operator.add, lambda builder, x, y: (builder.fadd(x[0], y[0]), builder.fadd(x[1], y[1])))

@@ -21,7 +21,7 @@ def state_dtype(name: str) -> np.dtype[np.complexfloating]:
 
 def bytes_needed(n_qubits: int, dtype: str = "complex64", states: int = 1, float64: int = 0) -> int:
     """Bytes of `states` states of n qubits and `float64` arrays of as many double-precision numbers."""
-    return 2**n_qubits * (states * state_dtype(dtype).itemsize + 8 * float64)
+    return int(2**n_qubits * (states * state_dtype(dtype).itemsize + 8 * float64))
 
 
 def available_memory() -> int:

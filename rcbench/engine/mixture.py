@@ -42,7 +42,7 @@ def bytes_needed(n_qubits: int, dtype: str, batches: int, sources: int) -> int:
     """Bytes that the sums and the states of a run take beside the circuit's own state, saved states left out."""
     numbers = np.dtype(probability_type(n_qubits)).itemsize
     sums = 2**n_qubits * numbers * (batches + sources * (1 + (batches if n_qubits <= BLOCK_QUBITS else 0)))
-    return sums + memory.bytes_needed(n_qubits, dtype, states=3)
+    return int(sums) + memory.bytes_needed(n_qubits, dtype, states=3)
 
 
 def run_patterns(noisy: NoisyProgram, patterns: Patterns, dtype: str, pool: Pool, work: Work) -> Sums:
@@ -64,7 +64,7 @@ def _saved_count(sweeps: Plan, dtype: str) -> int:
     """Error-free states that are kept."""
     n = sweeps.operators.n_qubits
     candidates = len(sweeps.operators) if n <= BLOCK_QUBITS else len(sweeps.active)
-    return max(1, min(candidates, SAVED_BYTES // memory.bytes_needed(n, dtype)))
+    return int(max(1, min(candidates, SAVED_BYTES // memory.bytes_needed(n, dtype))))
 
 
 def _run_in_blocks(patterns: Patterns, changes: Changes, sweeps: Plan, dtype: str, pool: Pool) -> Sums:
@@ -109,9 +109,7 @@ def _run_in_blocks(patterns: Patterns, changes: Changes, sweeps: Plan, dtype: st
 
 
 @kernel
-def _run_block(
-    saved, every, record, first, last, start, changed, changed_numbers, kind, high, low, numbers, scores, total, scored, block, bits
-):  # type: ignore[no-untyped-def]  # fmt: skip
+def _run_block(saved, every, record, first, last, start, changed, changed_numbers, kind, high, low, numbers, scores, total, scored, block, bits):  # type: ignore[no-untyped-def]  # noqa: E501  # fmt: skip
     w = lanes(block)
     step = 2 * w
     for trajectory in range(first, last):

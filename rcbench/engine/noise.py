@@ -99,7 +99,7 @@ class NoiseModel:
         )
 
     def confusion(self, qubits: Sequence[int], sigmas: float = 0.0) -> FloatArray:
-        """(k, 2, 2) probability [q, read, true] of each qubit, its flips `sigmas` standard uncertainties above the stated."""
+        """(k, 2, 2) probability [q, read, true] of each qubit, its flips so many standard uncertainties up."""
         up = np.minimum(1.0, self.read_1_of_0[list(qubits)] * (1 + sigmas * self.uncertainty.get("readout_0to1", 0.0)))
         down = np.minimum(
             1.0, self.read_0_of_1[list(qubits)] * (1 + sigmas * self.uncertainty.get("readout_1to0", 0.0))

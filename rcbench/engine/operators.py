@@ -100,7 +100,7 @@ def _encode(qubits, matrices):  # type: ignore[no-untyped-def]
             write_numbers(matrices[op], 2, numbers[op])
             continue
         kinds[op] = kind = _kind_of(matrices[op])
-        if kind == DIAGONAL or kind == QUARTER:
+        if kind in (DIAGONAL, QUARTER):
             for i in range(4):
                 value = matrices[op, i, i] if kind == DIAGONAL else matrices[op, i, 0]
                 numbers[op, 2 * i] = value.real

@@ -134,7 +134,7 @@ def _tilts(
     mixture: FloatArray,
     scored: FloatArray,
 ) -> dict[str, FloatArray]:
-    """Change of the distribution before readout for one standard uncertainty of each source; scored: means by source."""
+    """Change of the distribution before readout for one standard uncertainty of each source; scored: their means."""
     weight, tilts = noisy.error_free, {}
     for place, source in enumerate(SOURCES):
         scale = noise.uncertainty.get(source, 0.0)

@@ -26,4 +26,5 @@ def final_state_reference(circuit: Circuit) -> ComplexArray:
     for matrix, pair in zip(circuit.row_matrices(), circuit.qubits.tolist(), strict=True):
         if matrix is not None:
             state = apply_reference(state, matrix, pair[: len(matrix).bit_length() - 1])
-    return state[0]
+    final: ComplexArray = state[0]
+    return final

@@ -54,7 +54,7 @@ class NoisyProgram:
     def error_free_scores(self) -> FloatArray:
         """(sources,) derivative of ln(error_free) with respect to ln(rate) of each of SOURCES."""
         weights = self.places.slope / (1 - self.places.probability)
-        return -np.bincount(self.places.source, weights, minlength=len(SOURCES))
+        return np.bincount(self.places.source, -weights, minlength=len(SOURCES)).astype(np.float64)
 
 
 def noisy_program(circuit: Circuit, noise: NoiseModel, dtype: str = "complex64") -> NoisyProgram:
@@ -137,7 +137,8 @@ def draw_patterns(noisy: NoisyProgram, trajectories: int, batches: int, draw: Dr
     strata = (np.arange(each) + generator.random((batches, 1))) / each
     reached = -np.log1p(np.expm1(-noisy.hazard[-1]) * strata.reshape(-1))
     alive = np.arange(count)
-    places, owners = [], []
+    places: list[IntArray] = []
+    owners: list[IntArray] = []
     last = len(noisy.places)
     while len(alive):
         place = np.searchsorted(noisy.hazard, reached, side="right") - 1
@@ -204,7 +205,7 @@ def changed_operators(noisy: NoisyProgram, patterns: Patterns) -> Changes:
 
 
 _PAULIS = np.zeros((4, 4, 4), dtype=np.complex128)
-_PAULIS[:, :2, :2] = [[[1, 0], [0, 1]], [[0, 1], [1, 0]], [[0, -1j], [1j, 0]], [[1, 0], [0, -1]]]
+_PAULIS[:, :2, :2] = np.array([[[1, 0], [0, 1]], [[0, 1], [1, 0]], [[0, -1j], [1j, 0]], [[1, 0], [0, -1]]])
 
 
 @part

@@ -91,7 +91,7 @@ def _join(root: Node) -> None:
 
 
 def _count_states(root: Node) -> None:
-    """Fill in `Node.states`, and put the branch that needs the most first: it is walked last, in its parent's memory."""
+    """Fill in `Node.states`; put the branch that needs most first: it is walked last, in its parent's memory."""
     order, waiting = [], [root]
     while waiting:
         node = waiting.pop()

@@ -44,7 +44,7 @@ def split_turns(rows: GateRows) -> GateRows:
 
 @kernel
 def _find(n_qubits, qubits, gates, starts):  # type: ignore[no-untyped-def]
-    """For each run of one-qubit gates to split: its first gate, the phase of |1> to put before it; and the gates held."""
+    """For each run of one-qubit gates to split its first gate and the phase of |1> to put before; the gates held."""
     total = len(qubits)
     before, phases = np.empty(total, dtype=np.int64), np.empty(total, dtype=np.complex128)
     held = np.zeros(total, dtype=np.bool_)

@@ -36,6 +36,23 @@ def _same(values: FloatArray, errors: FloatArray) -> tuple[FloatArray, FloatArra
     return values, errors
 
 
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Table:
+    """values, errors: (K, R, c) by instance, repeat and column, NaN where there is none."""
+
+    values: FloatArray
+    errors: FloatArray
+
+    def by_instance(self) -> tuple[FloatArray, FloatArray]:
+        """(K, c) means over the repeats, and their shot noise; NaN where it is unknown, as of a single shot."""
+        there = np.isfinite(self.values)
+        count = there.sum(axis=1)
+        some = np.maximum(count, 1)
+        mean = np.where(there, self.values, 0.0).sum(axis=1) / some
+        error = np.sqrt(np.where(there, self.errors**2, 0.0).sum(axis=1)) / some
+        return np.where(count > 0, mean, np.nan), np.where(count > 0, error, np.nan)
+
+
 @dataclass(frozen=True, slots=True)
 class Pool:
     """forward: per-instance values and errors to columns that may be averaged. combine: (..., c) means to (...)."""
@@ -43,6 +60,11 @@ class Pool:
     combine: Callable[[FloatArray], FloatArray]
     forward: Callable[[FloatArray, FloatArray], tuple[FloatArray, FloatArray]] = _same
     linear: bool = False
+
+    def columns(self, table: Table) -> Table:
+        """The table with its values and errors moved to columns that may be averaged."""
+        values, errors = self.forward(table.values, table.errors)
+        return Table(values=values, errors=errors)
 
 
 MEAN = Pool(combine=lambda means: means[..., 0], linear=True)
@@ -69,23 +91,6 @@ def decay_pool(key: str, layers: FloatArray, weights: FloatArray, n_qubits: int)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
-class Table:
-    """values, errors: (K, R, c) by instance, repeat and column, NaN where there is none."""
-
-    values: FloatArray
-    errors: FloatArray
-
-    def by_instance(self) -> tuple[FloatArray, FloatArray]:
-        """(K, c) means over the repeats, and their shot noise; NaN where it is unknown, as of a single shot."""
-        there = np.isfinite(self.values)
-        count = there.sum(axis=1)
-        some = np.maximum(count, 1)
-        mean = np.where(there, self.values, 0.0).sum(axis=1) / some
-        error = np.sqrt(np.where(there, self.errors**2, 0.0).sum(axis=1)) / some
-        return np.where(count > 0, mean, np.nan), np.where(count > 0, error, np.nan)
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
 class Difference:
     """A paired difference. stat: its statistical uncertainty, between-run part included.
 
@@ -104,7 +109,7 @@ def interval(pool: Pool, table: Table, confidence: float) -> Interval:
     One column: Student's interval of its mean, carried through `combine`. Several: jackknife over whole instances.
     Fewer than MIN_INSTANCES instances: shot noise alone. Repeats add what runs share (`statistics.between_runs`).
     """
-    columns = Table(values=(moved := pool.forward(table.values, table.errors))[0], errors=moved[1])
+    columns = pool.columns(table)
     values, errors = columns.by_instance()
     means = np.nanmean(values, axis=0)
     slope = np.ones(1) if len(means) == 1 else _slope(pool, means)
@@ -135,15 +140,17 @@ def difference(pool: Pool, table: Table, predicted: Table) -> Difference:
     of the predictions, which is drawn afresh for each circuit; neither is added again.
 
     Args:
-        predicted: (K, 1, c) predictions and their numerical errors, instance for instance.
+        predicted: (K, 1, c) predictions and their numerical errors, instance for instance; NaN where there is none,
+            which leaves that instance out of the difference. One at least must be there.
     """
-    measured = Table(values=(moved := pool.forward(table.values, table.errors))[0], errors=moved[1])
-    expected = Table(values=(moved := pool.forward(predicted.values, predicted.errors))[0], errors=moved[1])
+    measured = pool.columns(table)
+    expected = pool.columns(predicted)
     values, errors = measured.by_instance()
     model, model_errors = expected.by_instance()
-    gone = ~np.isfinite(values + model)
-    values, model = np.where(gone, np.nan, values), np.where(gone, np.nan, model)
-    noise = np.hypot(errors, model_errors)
+    both = np.isfinite(values + model)
+    paired = both.any(axis=1)
+    values, model = (np.where(both, side, np.nan)[paired] for side in (values, model))
+    errors, noise = errors[paired], np.hypot(errors, model_errors)[paired]
     count = len(values)
     means, model_means = np.nanmean(values, axis=0), np.nanmean(model, axis=0)
     value = float(pool.combine(means) - pool.combine(model_means))
@@ -162,7 +169,7 @@ def difference(pool: Pool, table: Table, predicted: Table) -> Difference:
 
 def run_variation(pool: Pool, table: Table) -> BetweenRuns:
     """The variation between repeats of the same circuits, in units of the pooled value."""
-    columns = Table(values=(moved := pool.forward(table.values, table.errors))[0], errors=moved[1])
+    columns = pool.columns(table)
     means = np.nanmean(columns.by_instance()[0], axis=0)
     return _runs(columns, np.ones(1) if pool.linear else _slope(pool, means))
 

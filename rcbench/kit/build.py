@@ -126,7 +126,6 @@ def _row(plan: Plan, run: Entry, made: Facts) -> RosterRow:
     experiment, expander = campaign.experiments[run.experiment], plan.expanders[run.experiment]
     assert expander is not None
     physical = campaign.device.physical
-    params = {**made["params"], "anchor": True} if run.anchor else made["params"]
     return RosterRow(
         circuit_id=plan.circuit_id(run),
         experiment=experiment.name,
@@ -146,7 +145,7 @@ def _row(plan: Plan, run: Entry, made: Facts) -> RosterRow:
         run_order=run.run_order,
         batch=run.batch,
         target=made["target"],
-        params=params,
+        params=made["params"],
         two_qubit_gates=made["two_qubit_gates"],
         native_layers=made["native_layers"],
         duration_ns=made["duration_ns"],

@@ -12,6 +12,8 @@ Besides, every batch holds
 - an anchor of each experiment: its first circuit (shallowest depth, instance 0), run again as a further repeat, so
   that batches can be told apart. Anchors take at most a tenth of a batch, experiments in the order of the campaign;
   batches of fewer than ten circuits have none.
+
+Both have repeat numbers from the experiment's `repeats` on, which tells them from the repeats that were asked for.
 """
 
 from __future__ import annotations

@@ -16,7 +16,8 @@ from rcbench.signatures.registry import signature
 from rcbench.tables import FINDINGS
 
 MOST_DEPARTURES = 60
-_COLUMNS = "depth>, instances>, measured [interval]>, ideal>, noise model>, difference [interval]>, finding"
+_COLUMNS = "depth>, instances>, measured [interval]>, ideal>, noise model>, control>, difference [interval]>, finding"
+_SAID_ELSEWHERE = ("control value of", "further controls", "between ")  # parts of a note; the rest says why
 _WORST_FIRST = ("departs", "undecided", "not-tested", "agrees")
 
 
@@ -76,7 +77,7 @@ def _block(experiment: Experiment, key: str, rows: pd.DataFrame) -> list[Row]:
 def _line(rows: pd.DataFrame, scale: float, digits: int) -> Row:
     first, several = rows.iloc[0], len(rows) > 1
     used, planned = _count(rows["instances"].min()), _count(first["instances_planned"])
-    mean = rows[["measured", "ideal", "noise_model"]].mean() * scale
+    mean = rows[["measured", "ideal", "noise_model", "control_value"]].mean() * scale
     if several:
         by = counts(rows)
         mark = next(name for name in _WORST_FIRST if by[name])
@@ -89,7 +90,8 @@ def _line(rows: pd.DataFrame, scale: float, digits: int) -> Row:
         difference = _with(fixed(widest["difference"] * scale, digits), "largest")
     else:
         mark = str(first["finding"])
-        said = finding_text(mark, str(first["direction"])) + (f": {first['note']}" if first["note"] else "")
+        why = [part for part in str(first["note"]).split("; ") if part and not part.startswith(_SAID_ELSEWHERE)]
+        said = finding_text(mark, str(first["direction"])) + (f": {'; '.join(why)}" if why else "")
         ends = first[["ci_low", "ci_high", "diff_ci_low", "diff_ci_high"]].astype(float) * scale
         measured = _with(fixed(mean["measured"], digits), interval(ends["ci_low"], ends["ci_high"], digits))
         bounds = interval(ends["diff_ci_low"], ends["diff_ci_high"], digits)
@@ -102,6 +104,7 @@ def _line(rows: pd.DataFrame, scale: float, digits: int) -> Row:
             measured,
             fixed(mean["ideal"], digits),
             fixed(mean["noise_model"], digits),
+            fixed(mean["control_value"], digits),
             difference,
             said,
         ),

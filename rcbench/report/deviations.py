@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections import Counter
 from collections.abc import Mapping
 
@@ -9,7 +10,8 @@ from rcbench.report.printed import depths_text, whole
 from rcbench.report.source import Source
 from rcbench.report.table import finding_text
 
-_NUMBER = r"\d+(?:\.\d+)?(?:e[-+]?\d+)?"
+_NUMBER = re.compile(r"\d+(?:\.\d+)?(?:e[-+]?\d+)?")
+_SAID_ELSEWHERE = ("would be settled", "more data would not", "control value of", "further controls")
 
 
 def deviations(source: Source) -> list[str]:
@@ -49,17 +51,19 @@ def _dropped(source: Source) -> list[str]:
 
 
 def _notes(source: Source) -> list[str]:
-    """Why rows have no finding of their own; notes that differ in numbers only count as one. What more data would
-    settle is said in the comparison table."""
-    frame = source.comparison
-    rows = frame[[note != "" and not note.startswith("would be settled") for note in frame["note"]]]
-    alike = rows["note"].astype(str).str.replace(_NUMBER, "#", regex=True)
-    found = []
-    for _, same in rows.groupby([rows["experiment"], rows["finding"], alike], sort=False):
-        count, name, finding = len(same), str(same["experiment"].iloc[0]), str(same["finding"].iloc[0])
-        as_in = " (as in one of them)" if same["note"].nunique() > 1 else ""
-        depths = same["depth"].dropna()
-        at = f" at {depths_text(depths, source.campaign.experiment(name).depths)}" if len(depths) else ""
-        rows_text = f"{whole(count)} {'row' if count == 1 else 'rows'}"
-        found.append(f"{name}: {rows_text} {finding_text(finding)}{at}: {same['note'].iloc[0]}{as_in}.")
-    return found
+    """Why rows have no finding of their own, and what else is noted of them; notes that differ in numbers only count as
+    one. What more data would settle is said in the comparison table."""
+    found: dict[tuple[str, str, str], list[tuple[str, float]]] = {}
+    columns = ("experiment", "finding", "note", "depth")
+    for name, finding, note, depth in zip(*(source.comparison[column] for column in columns), strict=True):
+        for part in str(note).split("; "):
+            if part and not part.startswith(_SAID_ELSEWHERE):
+                found.setdefault((name, finding, _NUMBER.sub("#", part)), []).append((part, depth))
+    sentences = []
+    for (name, finding, _), entries in found.items():
+        parts, depths = {part for part, _ in entries}, [depth for _, depth in entries if depth == depth]
+        at = f" at {depths_text(depths, source.campaign.experiment(name).depths)}" if depths else ""
+        count = f"{whole(len(entries))} {'row' if len(entries) == 1 else 'rows'}"
+        as_in = " (as in one of them)" if len(parts) > 1 else ""
+        sentences.append(f"{name}: {count} {finding_text(finding)}{at}: {entries[0][0]}{as_in}.")
+    return sentences

@@ -71,9 +71,11 @@ def _trail(axes: Axes, part: pd.DataFrame, family: str) -> None:
     for at, row in enumerate(rows):
         # controls hardly move along the path's axis: only the first and the last are labelled
         if device or at in (0, len(part) - 1):
+            # a control at its bound has no bar to its left, a measured one gets its label beyond its bar
+            beside = (row.spread if device or bound else row.spread_high, row.kept)
             axes.annotate(
-                f"{row.depth:g}", (row.spread, row.kept), xytext=(-5, -4) if device else (8, 0),
-                textcoords="offset points", fontsize=8, ha="right" if device else "left",
+                f"{row.depth:g}", beside, xytext=(-5, -4) if device else (-7, 0) if bound else (4, 0),
+                textcoords="offset points", fontsize=8, ha="right" if device or bound else "left",
                 va="top" if device else "center", weight="bold" if device else "normal",
             )  # fmt: skip
 

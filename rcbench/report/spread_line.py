@@ -73,7 +73,7 @@ def _spread_from_otoc(source: Source, group: Group, experiment: Experiment) -> L
         return line("undecided", "spread undecided", f"The control that cannot spread ({fallen}) fell as well.")
     depth = int(points.depth[0]) if at.value == -math.inf else first_layer(at.value)
     text = f"spread complete by depth {depth} {ends(at, points, level, up=True)}"
-    return line("complete", text, f"It is {last}.{beyond}", depth, at)
+    return line("complete", text, f"Last with a living reference: {last}.{beyond}", depth, at)
 
 
 def _fallen_controls(source: Source, group: Group, margin: float, depth: float) -> str:

@@ -23,7 +23,7 @@ from rcbench.report.deviations import deviations
 from rcbench.report.device_table import device_facts, device_table
 from rcbench.report.locate import suspects
 from rcbench.report.page import inline, render
-from rcbench.report.printed import fixed, whole
+from rcbench.report.printed import fixed, interval, whole
 from rcbench.report.rule import DISCLAIMER, KEPT_ABOVE, LIMITS, RULE
 from rcbench.report.source import Source, groups, read_source
 from rcbench.report.table import SIGNS, Row, Table, finding_text, table
@@ -136,8 +136,10 @@ def _paths(source: Source, lines: list[BottomLine], folder: Path) -> tuple[list[
                 cells=(
                     row.family,
                     f"{row.depth:g}",
-                    f"{fixed(row.spread, 3)} [{fixed(row.spread_low, 3)}, {fixed(row.spread_high, 3)}]",
-                    f"{fixed(row.kept, 3)} [{fixed(row.kept_low, 3)}, {fixed(row.kept_high, 3)}]",
+                    f"at most {fixed(row.spread, 3)}"
+                    if row.constructed
+                    else f"{fixed(row.spread, 3)} {interval(row.spread_low, row.spread_high)}",
+                    f"{fixed(row.kept, 3)} {interval(row.kept_low, row.kept_high)}",
                 )
             )
             for row in points
@@ -177,8 +179,9 @@ def _section(source: Source, experiment: Experiment, folder: Path) -> Section:
 
 def _suspects(source: Source) -> list[str]:
     return [
-        f"{source.qubit_name(found.coupler[0])}–{source.qubit_name(found.coupler[1])} ({found.experiment}): echo lost "
-        f"beyond the noise model {fixed(found.excess, 4)} ± {fixed(found.std_error, 4)} a gate."
+        f"{source.qubit_name(found.coupler[0])}–{source.qubit_name(found.coupler[1])}: average infidelity "
+        f"{fixed(found.excess, 3)} ± {fixed(found.std_error, 3)} above the stated one, if its errors are depolarising "
+        f"(from {found.experiment})."
         for found in suspects(source)
     ]
 

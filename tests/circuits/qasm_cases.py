@@ -8,7 +8,7 @@ import qiskit.qasm3
 from qiskit.quantum_info import Operator
 
 from rcbench.circuits.circuit import Circuit
-from rcbench.circuits.gates import CODE, KINDS
+from rcbench.circuits.gates import KINDS
 from rcbench.circuits.qasm import read_qasm
 
 HEAD2 = 'OPENQASM 2.0;\ninclude "qelib1.inc";\n'
@@ -38,10 +38,3 @@ def layered_rows(circuit: Circuit) -> list[tuple]:
             zip(circuit.layer.tolist(), circuit.kind.tolist(), circuit.qubits.tolist(), strict=True)
         )
     ]
-
-
-def without_barriers(circuit: Circuit) -> list[tuple]:
-    """The rows but barriers, their layers numbered anew."""
-    kept = [row for row in layered_rows(circuit) if row[1] != KINDS[CODE["barrier"]].name]
-    number = {layer: place for place, layer in enumerate(sorted({row[0] for row in kept}))}
-    return [(number[row[0]], *row[1:]) for row in kept]

@@ -98,7 +98,10 @@ def test_other_qubits_are_numbered_in_the_order_of_cirq():
         (cirq.Circuit(cirq.measure(LINE[0], key="m"), cirq.X(LINE[1]).with_classical_controls("m")), "outcomes"),
         (cirq.Circuit(cirq.X(LINE[0]), cirq.reset(LINE[0])), "t: moment 1: .*resets before the first gate"),
         (cirq.Circuit(cirq.measure(LINE[0], key="m", invert_mask=(True,))), "no inverted"),
-        (cirq.Circuit(cirq.X(cirq.LineQid(0, 3)) if False else cirq.IdentityGate(1, (3,))(cirq.LineQid(0, 3))), "qudits"),
+        (
+            cirq.Circuit(cirq.X(cirq.LineQid(0, 3)) if False else cirq.IdentityGate(1, (3,))(cirq.LineQid(0, 3))),
+            "qudits",
+        ),
     ],
 )
 def test_what_has_no_rows_is_refused_with_its_moment(circuit, message):
@@ -108,5 +111,5 @@ def test_what_has_no_rows_is_refused_with_its_moment(circuit, message):
 
 @pytest.mark.parametrize("text", ["", "{", "[1, 2]", '{"cirq_type": "NoSuchThing"}', cirq.to_json(cirq.X)])
 def test_text_that_is_no_circuit_of_cirq_is_refused(text):
-    with pytest.raises(InputError, match="t: circuit: .*a circuit in Cirq's JSON"):
+    with pytest.raises(InputError, match=r"t: circuit: .*a circuit in Cirq's JSON"):
         read_cirq_json(text, name="t")

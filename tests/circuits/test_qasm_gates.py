@@ -1,4 +1,4 @@
-"""Gates that a program or its include files define: against hand-derived matrices, and against qiskit where it can read."""
+"""Gates that a program or its include files define: against hand-derived matrices, and qiskit where it can read."""
 
 from __future__ import annotations
 
@@ -50,9 +50,9 @@ def test_a_gate_of_no_kind_is_one_row_with_its_matrix():
 
 
 def test_a_one_qubit_gate_of_no_kind_is_u_and_a_diagonal_one_is_virtual():
-    text = f"""OPENQASM 2.0;
-gate first(a, b) q {{ U(a*b, sin(a), b^2) q; U(b, 0, a) q; }}
-gate second(a, b) q {{ U(pi, 0, pi) q; U(0, 0, a - b) q; U(pi, 0, pi) q; }}
+    text = """OPENQASM 2.0;
+gate first(a, b) q { U(a*b, sin(a), b^2) q; U(b, 0, a) q; }
+gate second(a, b) q { U(pi, 0, pi) q; U(0, 0, a - b) q; U(pi, 0, pi) q; }
 qreg q[1];
 first(0.3, -1.2) q[0];
 second(0.3, -1.2) q[0];
@@ -66,7 +66,10 @@ second(0.3, -1.2) q[0];
 def test_many_calls_of_one_gate_each_get_their_own_angles():
     """Their matrices are worked out together; qiskit works them out one by one."""
     rng = np.random.default_rng(5)
-    lines = [f"g({a:.6f}, {b:.6f}) q[{q}];" for a, b, q in zip(*rng.uniform(-3, 3, (2, 40)), rng.integers(0, 2, 40), strict=True)]
+    lines = [
+        f"g({a:.6f}, {b:.6f}) q[{q}];"
+        for a, b, q in zip(*rng.uniform(-3, 3, (2, 40)), rng.integers(0, 2, 40), strict=True)
+    ]
     pairs = [f"h2({a:.6f}) q[0], q[1];" for a in rng.uniform(-3, 3, 10)]
     text = (
         f"{HEAD2}gate g(s, t) a {{ rx(s/2 + t) a; rz(s*t) a; ry(cos(t)) a; }}\n"
@@ -115,7 +118,7 @@ def test_a_gate_with_one_of_our_names_and_another_matrix_keeps_its_matrix():
 
 
 def test_a_definition_hides_a_standard_gate_of_its_name():
-    text = "OPENQASM 3.0;\ninclude \"stdgates.inc\";\ngate h a { x a; }\nqubit q;\nh q;"
+    text = 'OPENQASM 3.0;\ninclude "stdgates.inc";\ngate h a { x a; }\nqubit q;\nh q;'
     assert rows(text) == [("x", (0,), ())]
 
 
@@ -165,7 +168,11 @@ g(0.37) q[0], q[1];
         ("gate g(a, a) b { x b; }", "", r"gate g: found 'a'; allowed: different names"),
         ("gate g(a) { }", "", r"gate g: found 'gate g\(a\)'; allowed: at least one qubit"),
         ("gate g a { x a; }\ngate g a { y a; }", "", r"t.qasm:4: gate: found 'g'; .* \(the first is at t.qasm:3\)"),
-        ("opaque magic(t) a, b;", "magic(1) q[0], q[1]", r"t.qasm:5: gate: found 'magic'; .* it is opaque.*\(t.qasm:3\)"),
+        (
+            "opaque magic(t) a, b;",
+            "magic(1) q[0], q[1]",
+            r"t.qasm:5: gate: found 'magic'; .* it is opaque.*\(t.qasm:3\)",
+        ),
     ],
 )
 def test_a_definition_that_cannot_be_used_is_refused_with_its_line(definitions, call, message):

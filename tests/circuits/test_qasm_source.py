@@ -36,7 +36,7 @@ def test_an_include_is_looked_for_beside_the_file_that_includes_it_first(tmp_pat
     path.write_text(MAIN)
     circuit = read_circuit_file(path)
     assert circuit.row_parameters(0) == (0.1,)
-    with pytest.raises(InputError, match="native.inc:1: "):
+    with pytest.raises(InputError, match=r"native.inc:1: "):
         read_program(MAIN, name="a.qasm", include_dirs=[tmp_path / "shared"])
 
 
@@ -49,7 +49,8 @@ def test_a_standard_file_in_an_include_folder_takes_the_place_of_ours(tmp_path):
 
 
 def test_a_missing_include_is_named_with_the_gates_that_nothing_defines():
-    text = 'OPENQASM 2.0;\n\ninclude "qelib1.inc";\ninclude "native.inc";\nqreg q[2];\nh q[0];\nRZ(0.1) q[0];\nENT q[0],q[1];\nRZ(2) q[1];\n'
+    head = 'OPENQASM 2.0;\n\ninclude "qelib1.inc";\ninclude "native.inc";\nqreg q[2];\n'
+    text = head + "h q[0];\nRZ(0.1) q[0];\nENT q[0],q[1];\nRZ(2) q[1];\n"
     with pytest.raises(InputError) as caught:
         read_qasm(text, name="a.qasm")
     assert str(caught.value) == (
@@ -64,14 +65,17 @@ def test_a_missing_include_is_an_error_even_where_nothing_of_it_is_used():
 
 
 def test_an_error_inside_an_include_file_names_that_file_and_line(tmp_path):
-    (tmp_path / "native.inc").write_text("gate RZ(angle) a { U(0,0,angle) a; }\n\ngate ENT a,b {\n  CX a,b;\n  foo b;\n}\n")
+    (tmp_path / "native.inc").write_text(
+        "gate RZ(angle) a { U(0,0,angle) a; }\n\ngate ENT a,b {\n  CX a,b;\n  foo b;\n}\n"
+    )
     with pytest.raises(InputError, match=r"^native.inc:5: gate: found 'foo'"):
         read_program(MAIN, name="a.qasm", include_dirs=[tmp_path])
 
 
 def test_lines_after_an_include_and_many_comments_are_still_counted_right(tmp_path):
     (tmp_path / "native.inc").write_text("gate RZ(angle) a { U(0,0,angle) a; }\n" * 1 + "\n" * 30)
-    text = '// one\nOPENQASM 2.0; /* two\nthree */ include "native.inc"; // four\nqreg q[1];\n/* x; */ RZ(1) q[0]; foo q[0];'
+    head = '// one\nOPENQASM 2.0; /* two\nthree */ include "native.inc"; // four\nqreg q[1];\n'
+    text = head + "/* x; */ RZ(1) q[0]; foo q[0];"
     with pytest.raises(InputError, match=r"^a.qasm:5: gate: found 'foo'"):
         read_program(text, name="a.qasm", include_dirs=[tmp_path])
 
@@ -79,7 +83,8 @@ def test_lines_after_an_include_and_many_comments_are_still_counted_right(tmp_pa
 def test_comments_hide_statements_and_includes_and_strings_hide_comment_signs(tmp_path):
     (tmp_path / "a//b.inc").parent.mkdir()
     (tmp_path / "a" / "b.inc").write_text("gate g a { U(pi,0,pi) a; }")
-    text = 'OPENQASM 2.0;\n// include "no.inc";\n/* include "no.inc"; x q[9]; */\ninclude "a//b.inc";\nqreg q[1];\ng q[0]; // x q[0];\n'
+    head = 'OPENQASM 2.0;\n// include "no.inc";\n/* include "no.inc"; x q[9]; */\ninclude "a//b.inc";\n'
+    text = head + "qreg q[1];\ng q[0]; // x q[0];\n"
     program = read_program(text, name="a.qasm", include_dirs=[tmp_path])
     assert rows(program.text) == [("x", (0,), ())]
 
@@ -93,7 +98,9 @@ def test_either_line_end_a_byte_order_mark_and_one_long_line_read_alike(line_end
 def test_includes_in_a_circle_are_refused_where_the_circle_closes(tmp_path):
     (tmp_path / "a.inc").write_text('include "b.inc";\n')
     (tmp_path / "b.inc").write_text('\ninclude "a.inc";\n')
-    with pytest.raises(InputError, match=r"^b.inc:2: include: found 'a.inc'; allowed: a file that does not include itself"):
+    with pytest.raises(
+        InputError, match=r"^b.inc:2: include: found 'a.inc'; allowed: a file that does not include itself"
+    ):
         read_program('include "a.inc";\nqubit q;\n', name="m.qasm", include_dirs=[tmp_path])
 
 

@@ -95,6 +95,16 @@ def test_the_same_campaign_gives_the_same_bytes(kit, tmp_path):
     assert again.hash == kit.hash == read_provenance(kit.folder)["kit_hash"]
 
 
+def test_another_experiment_changes_no_other_circuit(kit, tmp_path):
+    path = tmp_path / "more.toml"
+    first = CAMPAIGN.index("[[experiment]]")
+    more = '[[experiment]]\nname = "before"\nprotocol = "mirror-echo"\ndepths = [2]\ninstances = 3\n\n'
+    path.write_text((CAMPAIGN[:first] + more + CAMPAIGN[first:]).format(limits=""))
+    again = build_kit(load_campaign(path), tmp_path / "more")
+    shas = {row.circuit_id: row.sha256 for row in again.rows}
+    assert all(shas[row.circuit_id] == row.sha256 for row in kit.rows)
+
+
 def test_a_kit_that_is_complete_is_left_alone(kit, tmp_path):
     before = {path: path.stat().st_mtime_ns for path in kit.folder.rglob("*")}
     again = build_kit(small_campaign(tmp_path), kit.folder)

@@ -59,6 +59,7 @@ def test_each_batch_holds_the_anchors_once_and_at_most_a_tenth_of_it(tmp_path):
         assert sum(run.anchor for run in runs) <= 3
     anchor_repeats = sorted(run.repeat for run in plan.runs if run.experiment == 1 and run.anchor)
     assert anchor_repeats == list(range(2, 2 + len(batches) - 1))  # after the two repeats that the campaign asks for
+    assert all((run.repeat >= (2 if run.experiment == 1 else 1)) == run.anchor for run in plan.runs)
 
 
 def test_small_batches_have_no_anchors_and_cut_an_instance_between_depths(tmp_path):

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from protocol_cases import (
@@ -21,6 +23,8 @@ from protocol_cases import (
 
 from rcbench.campaign import Circuits
 from rcbench.circuits.families import draw_circuits
+from rcbench.circuits.gates import N_QUBITS
+from rcbench.device import Limits
 from rcbench.errors import InputError
 from rcbench.kit import duration_ns
 from rcbench.protocol import circuit_id, load_protocol, place, plan
@@ -133,6 +137,16 @@ def test_circuits_side_by_side_take_no_longer_than_one():
     assert slow.n_layers - both.n_layers == 7  # three two-qubit layers and four one-qubit layers
     timings = on.timings
     assert duration_ns(slow, timings) - duration_ns(both, timings) == 3 * timings.two_qubit + 4 * timings.one_qubit
+
+
+def test_side_by_side_respects_the_limit_on_gates_at_once():
+    on = replace(device(ladder(4)), limits=Limits(parallel_gates=1))
+    of = campaign(on, depths=(3,), sites={"output": (3,)})
+    circuit = circuits(protocol_of(RECOVERY), of)[0].circuit
+    free = circuits(protocol_of(RECOVERY), campaign(device(ladder(4)), depths=(3,), sites={"output": (3,)}))[0].circuit
+    together = [np.bincount(one.layer[N_QUBITS[one.kind] == 2]).max() for one in (circuit, free)]
+    assert together == [1, 2]
+    assert np.allclose(outcome_probabilities(circuit), outcome_probabilities(free), atol=1e-12)
 
 
 def test_a_register_that_the_couplers_cannot_host_is_refused_with_the_couplers_it_lacks():

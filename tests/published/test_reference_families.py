@@ -103,7 +103,7 @@ def test_dual_unitary_gates_are_unitary_in_space(j):
     gates = dressed(dual_unitary.interaction(j))(50, np.random.default_rng(1))
     assert dual_unitary.departure(gates).max() < 1e-14
     assert_allclose(strings.occupation_rule(dual_unitary.interaction(j)), dual_unitary.occupation_rule(j), atol=1e-14)
-    assert dual_unitary.departure(haar(4)(50, np.random.default_rng(1))).min() > 0.2
+    assert dual_unitary.departure(haar(4)(50, np.random.default_rng(1))).mean() > 0.5
 
 
 def test_the_dual_unitary_rule_by_number():
@@ -131,7 +131,7 @@ def test_dual_unitary_front_moves_with_the_light(j):
     for depth in range(1, 7):
         assert_allclose(found[depth, depth], dual_unitary.EDGE_OTOC, atol=1e-12)
         assert_allclose(found[depth, depth + 1 :], 1, atol=1e-12)
-    assert dual_unitary.BUTTERFLY_VELOCITY > spreading.butterfly_velocity()
+    assert spreading.butterfly_velocity() < dual_unitary.BUTTERFLY_VELOCITY
     u = sampled_unitaries(5, 3, 300, 4, dressed(dual_unitary.interaction(j)))
     for x, value in enumerate(dual_unitary.otoc_map(5, 0, 3, j=j)[-1]):
         samples = otocs(u, pauli_at(1, x, 5), pauli_at(3, 0, 5))
@@ -252,7 +252,7 @@ def test_otocs_of_sampled_matchgate_brickworks():
         assert_mean(samples, matchgate.late_otoc(4, (name, 0), (name, 3)))
     u = sampled_unitaries(4, 3, 400, 10, matchgates)
     values = matchgate.edge_otoc_map(4, 3)[-1]
-    assert_allclose(values, [0.5, 0.5, 0.5, 0.5], atol=1e-15)
+    assert_allclose(values, [0.25, 0.25, 0.75, 0.75], atol=1e-15)
     for x, value in enumerate(values):
         assert_mean(otocs(u, pauli_at(3, x, 4), pauli_at(1, 0, 4)), value)
 

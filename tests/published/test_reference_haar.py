@@ -121,7 +121,7 @@ def test_choi_purity_of_haar_unitaries(n, a, c, value):
     ("n", "size", "bits", "bound"), [(4, 2, -2.1749, -4), (4, 1, -1.1499, -2), (6, 3, -4.0447, -6), (6, 1, -1.1899, -2)]
 )  # fmt: skip
 def test_operator_tripartite_information_of_haar_unitaries(n, size, bits, bound):
-    """Annealed Renyi-2 in bits; Hosur et al., arXiv:1511.04021. Sampled von Neumann values lie between it and the bound."""
+    """Annealed Renyi-2 in bits; Hosur et al., arXiv:1511.04021. The bound is of that paper too."""
     assert_allclose(reference.operator_tmi_renyi2(size, size, n) / BITS, bits, atol=6e-5)
     assert_allclose(reference.operator_tmi_bound(size, size, n) / BITS, bound, atol=1e-12)
 
@@ -227,7 +227,7 @@ def test_white_noise_gives_the_elementary_values():
 
 
 def test_spectra_of_circular_ensembles():
-    """Haake et al., J. Phys. A 29, 3641 (1996), d = 16 (4 sigma); Atas et al., PRL 110, 084101 (2013), d = 64 (0.01)."""
+    """Haake et al., J. Phys. A 29, 3641 (1996), 4 sigma; Atas et al., PRL 110, 084101 (2013), within 0.012."""
     phases = np.angle(np.linalg.eigvals(unitary_group.rvs(16, size=1000, random_state=np.random.default_rng(1))))
     times = np.array([1, 2, 4, 8, 16, 24])
     for t, value in zip(times, spectrum.form_factor(times, 16), strict=True):

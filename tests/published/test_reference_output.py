@@ -1,4 +1,4 @@
-"""Collision probability, cross-entropy, frame potential and noise of the Haar brickwork: exact numbers, sampled circuits."""
+"""Collisions, cross-entropy, frame potential and noise of the Haar brickwork: exact numbers, sampled circuits."""
 
 from __future__ import annotations
 
@@ -13,6 +13,7 @@ from sampled_brickwork import (
     haar,
     sampled_states,
     sampled_unitaries,
+    wall,
     zeros,
 )
 
@@ -125,6 +126,27 @@ def test_second_frame_potential_has_closed_forms_at_three_and_four_sites(depth):
     assert_allclose(frame_potential.frame_potential_k2(4, depth), 2 + 2 * (8 / 25) ** (depth - 1), rtol=1e-12)
 
 
+def label_layer(n: int, pairs: list[tuple[int, int]], q: int) -> np.ndarray:
+    """(2^n, 2^n) what the gates of a layer do to the labels, as the rule is written down."""
+    gate = np.zeros((2, 2, 2, 2))  # after, after, before, before
+    gate[0, 0, 0, 0] = gate[1, 1, 1, 1] = 1
+    for label in (0, 1):
+        gate[label, label, 0, 1] = gate[label, label, 1, 0] = q / (q * q + 1)
+    out = np.eye(2**n).reshape((2,) * n + (2**n,))
+    for pair in pairs:
+        out = np.moveaxis(np.tensordot(gate, out, ((2, 3), pair)), (0, 1), pair)
+    return out.reshape(2**n, 2**n)
+
+
+@pytest.mark.parametrize(("n", "ring", "q"), [(4, True, 2), (6, True, 2), (5, False, 3), (7, False, 2)])
+def test_second_frame_potential_is_the_trace_of_dense_layers(n, ring, q):
+    """Odd lines, rings and other dimensions, against 2^n x 2^n matrices."""
+    layers = [label_layer(n, wall(n, layer, ring=ring), q) for layer in range(1, 5)]
+    for depth in (1, 2, 4):
+        product = np.linalg.multi_dot([np.eye(2**n), *layers[:depth], *layers[1 : depth - 1][::-1]])
+        assert_allclose(frame_potential.frame_potential_k2(n, depth, q=q, ring=ring), np.trace(product), rtol=1e-12)
+
+
 @pytest.mark.parametrize(("n", "factor"), [(5, 0.41889), (6, 0.48), (8, 0.54627)])
 def test_second_frame_potential_approaches_two_by_the_square_of_the_purity_factor(n, factor):
     left = [frame_potential.frame_potential_k2(n, depth) - 2 for depth in (20, 21)]
@@ -186,7 +208,7 @@ def noisy_run(rho: np.ndarray, gates: list, n: int, p: float) -> np.ndarray:
 
 
 def test_noisy_averages_of_sampled_density_matrices():
-    """4 qubits, 6 layers, p = 0.1, 300 circuits, 4 sigma; also with noise in one layer only."""
+    """4 qubits, 6 layers, p = 0.1, 300 circuits, 4 sigma."""
     n, depth, circuits = 4, 6, 300
     gates = draw_gates(n, depth, circuits, np.random.default_rng(6), haar(4))
     start = zeros(n, circuits)

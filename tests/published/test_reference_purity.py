@@ -1,4 +1,4 @@
-"""Averaged purity and Choi purity of the Haar brickwork: exact numbers, recursions against each other, sampled circuits."""
+"""Averaged purity and Choi purity of the Haar brickwork: exact numbers, four recursions, sampled circuits."""
 
 from __future__ import annotations
 
@@ -126,7 +126,7 @@ def test_purity_approaches_haar_by_one_factor_a_layer(n, factor):
 
 
 def test_choi_purity_at_small_depth():
-    """4 sites: 0.4000 (2 layers, halves), 0.304 (3, one site), 0.208 (5, halves), at last 2/17; sampled with 4 sigma."""
+    """4 sites: 0.4000 (2 layers, halves), 0.304 (3, one site), 0.208 (5, halves), at last 2/17; sampled, 4 sigma."""
     halves = operators.operator_purity(4, (0, 1), (0, 1), 40)
     ones = operators.operator_purity(4, (0,), (0,), 3)
     assert_allclose([halves[2], ones[3], halves[5]], [0.4, 0.304, 0.208], rtol=1e-12)

@@ -88,7 +88,7 @@ def test_best_recovery_and_the_swap_that_looks_like_it():
 
 @pytest.mark.parametrize(("survival", "noise"), [(1, 1), (0.7, 0.775), (0.3, 0.475), (0, 0.25)])
 def test_decoherence_lowers_the_noise_parameter(survival, noise):
-    """Yoshida and Yao, PRX 9, 011006 (2019): white noise on all outputs, density matrix of 3 qubits, one of them read."""
+    """Yoshida and Yao, PRX 9, 011006 (2019): white noise on all outputs, density matrix of 3 qubits, one read."""
     u = haar(8)(1, np.random.default_rng(31))[0].reshape(4, 2, 2, 4)
     state = np.einsum("cdrb,CDsb->rscCdD", u, u.conj()).reshape(4, 16, 4) / 4  # (R R', C C', D D')
     rho = np.einsum("rcd,sCD->rcdsCD", state, state.conj())

@@ -121,8 +121,8 @@ def test_the_rule_of_cz_and_of_the_mean_over_haar_gates():
     """CZ keeps Z and grows X, Y: 01 stays with 1/3 and grows with 2/3. Haar: any of 15 to any of 15."""
     assert_allclose(strings.occupation_rule(CZ)[1], [0, 1 / 3, 0, 2 / 3], atol=1e-12)
     assert_allclose(strings.occupation_rule(np.eye(4)), np.eye(4), atol=1e-12)
-    mean = np.mean([strings.occupation_rule(u) for u in haar(4)(2000, np.random.default_rng(2))], axis=0)
-    assert_allclose(mean, strings.HAAR_RULE, atol=0.012)
+    mean = np.mean([strings.occupation_rule(u) for u in haar(4)(800, np.random.default_rng(2))], axis=0)
+    assert_allclose(mean, strings.HAAR_RULE, atol=0.02)
 
 
 def test_clifford_brickworks_have_the_same_mean_otoc_and_single_values_of_plus_or_minus_one():
@@ -153,6 +153,12 @@ def test_butterfly_velocity_and_front_variance_of_the_exact_ends():
     assert_allclose([mean, variance], [0.6, 0.64], rtol=1e-6)
     assert_allclose([spreading.butterfly_velocity(), spreading.front_variance()], [0.6, 0.64], rtol=1e-14)
     assert_allclose(spreading.front_width(100), 8, rtol=1e-14)
+
+
+def test_profile_of_a_thousand_sites_is_that_of_a_short_line_inside_the_light_cone():
+    """40 layers from the middle of 1000 sites and of 100."""
+    long, short = spreading.otoc_profile(1000, 500, 40), spreading.otoc_profile(100, 50, 40)
+    assert_allclose(long[455:545], short[5:95], atol=1e-12)
 
 
 def test_velocity_fitted_to_the_exact_front_of_200_sites():

@@ -60,8 +60,10 @@ def region_purity(n_qubits: int, depth: int, *, q: int = 2) -> FloatArray:
     for layer in range(1, whole("depth", depth, 0) + 1):
         start = 2 - layer % 2
         moved, below, above = slice(start, n, 2), slice(start - 1, n - 1, 2), slice(start + 1, n + 1, 2)
-        table[moved] = rate * (table[below] + table[above])
-        table[:, moved] = rate * (table[:, below] + table[:, above])
+        np.add(table[below], table[above], out=table[moved])
+        np.add(table[:, below], table[:, above], out=table[:, moved])
+        table[moved] *= rate
+        table[:, moved] *= rate
         np.fill_diagonal(table, 1.0)  # no sites, and both moves of a cut pair that met
     return table
 

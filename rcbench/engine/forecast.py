@@ -1,0 +1,119 @@
+"""What a prediction will cost, before it starts: operators counted on a sample of the circuits, speed measured here."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Sequence
+
+import numpy as np
+
+from rcbench.circuits.circuit import Circuit, CircuitBuilder
+from rcbench.engine import memory, mixture
+from rcbench.engine.noise import SOURCES, NoiseModel
+from rcbench.engine.predict import batch_count
+from rcbench.engine.state import compile_circuit
+from rcbench.engine.threads import Pool, thread_count
+from rcbench.engine.trajectories import BLOCK_QUBITS, noisy_program
+from rcbench.engine.tree import Node, build_tree, walk
+from rcbench.engine.work import Work
+
+SAMPLE = 8  # circuits of each size that are looked at closely
+_TRIAL_QUBITS = 20  # speed does not change much above
+_SUMMING = 4  # adding up the probabilities of a trajectory takes as long as so many operators
+_FIXED_SECONDS = 1.5e-3  # of each circuit with trajectories, whatever its size
+
+
+def expected(
+    circuits: Sequence[Circuit],
+    noise: NoiseModel | None,
+    *,
+    trajectories: int = 200,
+    dtype: str = "complex64",
+    threads: int | None = None,
+) -> Work:
+    """What `predict.distributions` will take for these circuits, within about a factor of two.
+
+    The speed of this machine is measured for a few hundredths of a second; arguments as in `predict.distributions`.
+    """
+    total = Work()
+    for n_qubits in sorted({circuit.n_qubits for circuit in circuits}):
+        members = [circuit for circuit in circuits if circuit.n_qubits == n_qubits]
+        total.circuits += len(members)
+        _add_size(total, members, noise, trajectories, dtype, thread_count(threads))
+    return total
+
+
+def _add_size(
+    total: Work, circuits: list[Circuit], noise: NoiseModel | None, trajectories: int, dtype: str, threads: int
+) -> None:
+    n = circuits[0].n_qubits
+    root = build_tree(circuits)
+    gates = _gates_in(root)
+    sample = circuits[:: max(1, len(circuits) // SAMPLE)][:SAMPLE]
+    sample_gates = max(1, sum(int(np.count_nonzero(circuit.gate_rows)) for circuit in sample))
+    speed = _speed(n, dtype, threads)
+    with Work().timed():
+        start = time.perf_counter()
+        operators = sum(len(compile_circuit(circuit, dtype).operators) for circuit in sample)
+        compiling = time.perf_counter() - start
+    evolved = 2.0**n * operators * gates / sample_gates
+    total.amplitudes += evolved
+    total.seconds += evolved / speed + compiling * gates / sample_gates
+    total.holds(memory.bytes_needed(n, dtype, states=root.states))
+    if noise is None:
+        return
+    batches = batch_count(n)
+    run = batches * -(-trajectories // batches)
+    start = time.perf_counter()
+    steps = sum(_steps_of_a_trajectory(circuit, noise, dtype) for circuit in sample) / len(sample)
+    preparing = (time.perf_counter() - start) / len(sample)
+    amplitudes = 2.0**n * steps * run * len(circuits)
+    total.trajectories += run * len(circuits)
+    total.amplitudes += amplitudes
+    parallel = min(threads, batches) if n <= BLOCK_QUBITS else 1
+    summing = 2.0**n * _SUMMING * run * len(circuits)
+    total.seconds += (amplitudes + summing) / speed / parallel + (preparing + _FIXED_SECONDS) * len(circuits)
+    saved = min(mixture.SAVED_BYTES, int(operators / len(sample)) * memory.bytes_needed(n, dtype))
+    total.holds(mixture.bytes_needed(n, dtype, batches, len(SOURCES)) + saved)
+
+
+def _gates_in(root: Node) -> int:
+    """Gates that a walk applies."""
+    gates, waiting = 0, [root]
+    while waiting:
+        node = waiting.pop()
+        gates += node.stop - node.start
+        waiting += node.branches.values()
+    return gates
+
+
+def _steps_of_a_trajectory(circuit: Circuit, noise: NoiseModel, dtype: str) -> float:
+    """Mean number of operators from the first error on, given that there is one."""
+    noisy = noisy_program(circuit, noise, dtype)
+    if not len(noisy.places):
+        return 0.0
+    first = np.exp(-noisy.hazard[:-1]) * noisy.places.probability
+    return float(len(noisy.program) - first @ noisy.op / first.sum())
+
+
+def _speed(n_qubits: int, dtype: str, threads: int) -> float:
+    """Amplitudes times operators a second, of one state: a small one on one thread, a large one on all."""
+    n = min(n_qubits, _TRIAL_QUBITS)
+    builder = CircuitBuilder(n)
+    for layer in range(4):
+        for qubit in range(n):
+            builder.add("u", [qubit], [1 + qubit + layer, 2, 3])
+        builder.next_layer()
+        for qubit in range(layer % 2, n - 1, 2):
+            builder.add("iswap", [qubit, qubit + 1])
+        builder.next_layer()
+    circuit = builder.build()
+    rates = []
+    for _ in range(3):
+        work = Work()
+        list(walk([circuit], dtype=dtype, threads=threads, work=work))
+        start = time.perf_counter()
+        compile_circuit(circuit, dtype)
+        work.seconds = max(work.seconds - (time.perf_counter() - start), 0.2 * work.seconds)
+        rates.append(work.rate)
+    return max(rates)

@@ -1,0 +1,344 @@
+"""Many runs at once, to ask in which order their bits come: one order fits all of them, so their evidence adds up."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from typing import Protocol
+
+import numpy as np
+
+from rcbench.arrays import FloatArray, IntArray
+from rcbench.randomness import Draw
+from rcbench.shots.evidence import scores
+from rcbench.shots.evidence.cases import Case, ones_of
+from rcbench.shots.evidence.orders import Order, identity
+
+POOL_SIZE = 2**24  # probabilities held at once; more runs than that allows add nothing that matters
+SEARCH_ENTRIES = 40_000  # outcomes that the search climbs on; the decision uses all
+SEARCH_FIDELITY = 0.2
+
+
+class Pool(Protocol):
+    """Runs of one lane, whatever they should give."""
+
+    n_bits: int
+
+    def by_run(self, order: Order) -> FloatArray:
+        """(runs, hypotheses) log-likelihood ratio to the floor if bits come in this order."""
+
+    def depth_groups(self) -> IntArray:
+        """(runs,) number of the depth of each: runs of one depth share their fidelity."""
+
+    def split(self, draw: Draw) -> tuple[Pool, Pool]:
+        """Two halves of the shots of every run."""
+
+    def matched(self) -> tuple[int, ...]:
+        """The order that moves low-order correlations where the circuits have them."""
+
+    def objective(self, source: Sequence[int]) -> Climb:
+        """What a search climbs on, from a start."""
+
+
+class Climb(Protocol):
+    """A search's place: the score of an order, and of those that exchange two of its bits."""
+
+    def score(self) -> float:
+        """Score here."""
+
+    def exchanged(self, a: int, b: int) -> float:
+        """Score with the sources of bits a and b exchanged."""
+
+    def exchange(self, a: int, b: int) -> None:
+        """Go there."""
+
+
+def evidence(pool: Pool, order: Order) -> tuple[float, float]:
+    """Log-likelihood ratio to the floor, fidelity shared within a depth: mixture over it, and best."""
+    total = np.zeros((int(pool.depth_groups().max()) + 1, 1))
+    found = pool.by_run(order)
+    total = np.zeros((total.shape[0], found.shape[1]))
+    np.add.at(total, pool.depth_groups(), found)
+    return float(scores.mixture(total).sum()), float(scores.best(total).sum())
+
+
+def halves(counts: IntArray, draw: Draw) -> tuple[IntArray, IntArray]:
+    """Each shot to one of two halves by the toss of a coin; counts: (k,)."""
+    first = draw.generator().binomial(counts, 0.5)
+    return first, counts - first
+
+
+@dataclass(slots=True, eq=False)
+class SampledPool:
+    """Runs of sampled circuits.
+
+    Args:
+        n_bits: bits. index, counts, at: (k,) outcomes, how often, 1 / g of each. starts: (runs,).
+        offset: (k,) where the probabilities of the outcome's circuit start in `flat`, those of all circuits in turn.
+        depth: (runs,) number of the depth. mean_z: (n,) of the floor.
+    """
+
+    n_bits: int
+    index: IntArray
+    counts: IntArray
+    at: FloatArray
+    starts: IntArray
+    offset: IntArray
+    flat: FloatArray
+    depth: IntArray
+    mean_z: FloatArray
+
+    def by_run(self, order: Order) -> FloatArray:
+        """As Pool."""
+        return scores.log_likelihoods(self._ratio(order.mended(self.index)), self.counts, self.starts)
+
+    def depth_groups(self) -> IntArray:
+        """As Pool."""
+        return self.depth
+
+    def split(self, draw: Draw) -> tuple[Pool, Pool]:
+        """As Pool."""
+        first, second = halves(self.counts, draw)
+        return replace(self, counts=first), replace(self, counts=second)
+
+    def objective(self, source: Sequence[int]) -> Climb:
+        """As Pool."""
+        step = max(1, -(-len(self.index) // SEARCH_ENTRIES))
+        order = Order("", tuple(source))
+        return SampledClimb(
+            self.n_bits, order.mended(self.index[::step]), self.counts[::step], self.at[::step],
+            self.offset[::step], self.flat,
+        )  # fmt: skip
+
+    def fidelity(self, order: Order) -> float:
+        """X over v of all runs together, if bits come in this order."""
+        ratio = self._ratio(order.mended(self.index))
+        mean = float(self.counts @ (np.asarray(ratio, dtype=np.float64) - 1))
+        shots = np.add.reduceat(self.counts, self.starts)
+        size = 2**self.n_bits
+        v = np.square(self.flat.reshape(-1, size), dtype=np.float64).sum(axis=1) * size - 1
+        return mean / max(float(shots @ v), 1e-12)
+
+    def _ratio(self, index: IntArray) -> FloatArray:
+        return self.flat[self.offset + index] * self.at
+
+    def matched(self) -> tuple[int, ...]:
+        """As Pool: marginals by assignment, then pairs by exchanging."""
+        n, size = self.n_bits, 2**self.n_bits
+        ends = np.append(self.starts[1:], len(self.index))
+        single = np.zeros((n, n))
+        pair = np.zeros((n, n, n, n))
+        upper = np.triu_indices(n, 1)
+        places = 1 << (n - 1 - np.arange(n))
+        joint = places[:, None] | places[None, :]
+        for run, (start, end) in enumerate(zip(self.starts, ends, strict=True)):
+            walsh = walsh_transform(self.flat[run * size : (run + 1) * size].astype(np.float64))
+            z = 1.0 - 2.0 * ((self.index[start:end, None] & places) > 0)
+            weights = self.counts[start:end].astype(np.float64)
+            shots = max(float(weights.sum()), 1.0)
+            m = (weights @ z) / shots - self.mean_z
+            c = (z * weights[:, None]).T @ z / shots - np.multiply.outer(self.mean_z, self.mean_z)
+            ideal = walsh[joint]
+            np.fill_diagonal(c, 0.0)
+            np.fill_diagonal(ideal, 0.0)
+            single += shots * np.multiply.outer(m, walsh[places])
+            pair += shots * np.multiply.outer(c, ideal)
+        del upper
+        return match(single, pair)
+
+
+@dataclass(slots=True, eq=False)
+class SampledClimb:
+    """Search among orders by exchanging two bits at a time."""
+
+    n_bits: int
+    index: IntArray
+    counts: IntArray
+    at: FloatArray
+    offset: IntArray
+    flat: FloatArray
+
+    def score(self) -> float:
+        """As Climb."""
+        return self._of(self.index)
+
+    def exchanged(self, a: int, b: int) -> float:
+        """As Climb."""
+        return self._of(self._swap(a, b))
+
+    def exchange(self, a: int, b: int) -> None:
+        """As Climb."""
+        self.index = self._swap(a, b)
+
+    def _swap(self, a: int, b: int) -> IntArray:
+        high, low = self.n_bits - 1 - a, self.n_bits - 1 - b
+        differ = (self.index >> high ^ self.index >> low) & 1
+        return self.index ^ (differ << high | differ << low)
+
+    def _of(self, index: IntArray) -> float:
+        excess = self.flat[self.offset + index] * self.at - 1
+        return float(self.counts @ np.log1p(SEARCH_FIDELITY * excess))
+
+
+@dataclass(slots=True, eq=False)
+class ReturnPool:
+    """Runs that should each return one string. bits: (k, n) outcomes; targets: (runs, n)."""
+
+    n_bits: int
+    bits: IntArray
+    counts: IntArray
+    starts: IntArray
+    targets: IntArray
+    depth: IntArray
+
+    def by_run(self, order: Order) -> FloatArray:
+        """As Pool."""
+        mended = self.bits[:, list(order.source)]
+        if order.flipped:
+            mended = mended.copy()
+            mended[:, list(order.flipped)] ^= 1
+        distance = (mended != self._target_of_each()).sum(axis=1)
+        return scores.returned_log_likelihoods(distance, self.counts, self.starts, self.n_bits)
+
+    def depth_groups(self) -> IntArray:
+        """As Pool."""
+        return self.depth
+
+    def split(self, draw: Draw) -> tuple[Pool, Pool]:
+        """As Pool."""
+        first, second = halves(self.counts, draw)
+        return replace(self, counts=first), replace(self, counts=second)
+
+    def agreement(self) -> FloatArray:
+        """(n, n) sum over shots of the product of Z of a delivered bit and of a target bit."""
+        z = (1.0 - 2.0 * self.bits) * self.counts[:, None]
+        return z.T @ (1.0 - 2.0 * self._target_of_each())
+
+    def matched(self) -> tuple[int, ...]:
+        """As Pool: exact here, since a return is a product over bits."""
+        return match(self.agreement(), None)
+
+    def objective(self, source: Sequence[int]) -> Climb:
+        """As Pool; the match is the top already."""
+        return ReturnClimb(self.agreement(), list(source))
+
+    def fidelity(self, order: Order) -> float:
+        """Mean product of Z of bits and targets, if bits come in this order."""
+        sign = np.ones(self.n_bits)
+        sign[list(order.flipped)] = -1
+        picked = self.agreement()[list(order.source), np.arange(self.n_bits)]
+        return float((sign * picked).mean() / max(int(self.counts.sum()), 1))
+
+    def _target_of_each(self) -> IntArray:
+        return np.repeat(self.targets, np.diff(np.append(self.starts, len(self.bits))), axis=0)
+
+
+@dataclass(slots=True, eq=False)
+class ReturnClimb:
+    """Search among orders of bits that should return strings."""
+
+    table: FloatArray
+    source: list[int]
+
+    def score(self) -> float:
+        """As Climb."""
+        return float(self.table[self.source, np.arange(len(self.source))].sum())
+
+    def exchanged(self, a: int, b: int) -> float:
+        """As Climb."""
+        s, t = self.source, self.table
+        return self.score() + float(t[s[b], a] + t[s[a], b] - t[s[a], a] - t[s[b], b])
+
+    def exchange(self, a: int, b: int) -> None:
+        """As Climb."""
+        self.source[a], self.source[b] = self.source[b], self.source[a]
+
+
+def match(single: FloatArray, pair: FloatArray | None) -> tuple[int, ...]:
+    """Source of each bit: assignment on single bits, then exchanges that raise the agreement of pairs too.
+
+    Args:
+        single: (n, n) agreement of a delivered bit with an asked one. pair: (n, n, n, n), the same of two and two.
+    """
+    from scipy.optimize import linear_sum_assignment
+
+    n = len(single)
+    _, source = linear_sum_assignment(-single.T)
+    source = np.asarray(source, dtype=np.int64)
+    if pair is None:
+        return tuple(source.tolist())
+    bits = np.arange(n)
+
+    def score(s: IntArray) -> float:
+        return float(single[s, bits].sum() + pair[s[:, None], s, bits[:, None], bits].sum() / 2)
+
+    here = score(source)
+    for _ in range(4 * n):
+        top, move = here, None
+        for a in range(n):
+            for b in range(a):
+                source[[a, b]] = source[[b, a]]
+                found = score(source)
+                source[[a, b]] = source[[b, a]]
+                if found > top + 1e-9 * abs(top):
+                    top, move = found, (a, b)
+        if move is None:
+            break
+        a, b = move
+        source[[a, b]] = source[[b, a]]
+        here = top
+    return tuple(source.tolist())
+
+
+def walsh_transform(values: FloatArray) -> FloatArray:
+    """(2**n,) sum over x of (-1)**(x.s) values[x], for every s."""
+    out = values.copy()
+    size, step = len(out), 1
+    while step < size:
+        view = out.reshape(-1, 2, step)
+        view[:, 0], view[:, 1] = view[:, 0] + view[:, 1], view[:, 0] - view[:, 1]
+        step *= 2
+    return out
+
+
+def sampled_pool(
+    cases: Sequence[Case], probabilities: Sequence[FloatArray], inverse_floor: FloatArray, bias: FloatArray
+) -> SampledPool:
+    """A pool of sampled runs; probabilities: (2**n,) of each run's circuit."""
+    n = cases[0].n_bits
+    lengths = [len(case.index) for case in cases]
+    index = np.concatenate([case.index for case in cases])
+    return SampledPool(
+        n_bits=n,
+        index=index,
+        counts=np.concatenate([case.counts for case in cases]),
+        at=inverse_floor[index],
+        starts=np.concatenate([[0], np.cumsum(lengths)[:-1]]).astype(np.int64),
+        offset=np.repeat(np.arange(len(cases), dtype=np.int64) << n, lengths),
+        flat=np.concatenate(probabilities),
+        depth=_numbered([case.row.depth for case in cases]),
+        mean_z=bias,
+    )
+
+
+def return_pool(cases: Sequence[Case]) -> ReturnPool:
+    """A pool of runs that should return their targets."""
+    n = cases[0].n_bits
+    shifts = np.arange(n - 1, -1, -1)
+    index = np.concatenate([case.index for case in cases])
+    targets = np.array([case.target for case in cases], dtype=np.int64)
+    return ReturnPool(
+        n_bits=n,
+        bits=(index[:, None] >> shifts & 1).astype(np.int8),
+        counts=np.concatenate([case.counts for case in cases]),
+        starts=np.concatenate([[0], np.cumsum([len(case.index) for case in cases])[:-1]]).astype(np.int64),
+        targets=(targets[:, None] >> shifts & 1).astype(np.int8),
+        depth=_numbered([case.row.depth for case in cases]),
+    )
+
+
+def _numbered(values: Sequence[int]) -> IntArray:
+    return np.unique(np.array(values), return_inverse=True)[1].reshape(-1)
+
+
+__all__ = ["Pool", "ReturnPool", "SampledPool", "evidence", "identity", "ones_of", "return_pool", "sampled_pool"]

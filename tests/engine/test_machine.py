@@ -1,0 +1,92 @@
+"""Threads, memory limits and the cache of compiled code."""
+
+from __future__ import annotations
+
+import os
+import subprocess
+import sys
+import threading
+from pathlib import Path
+
+import pytest
+
+import rcbench
+from rcbench.engine import memory, threads
+from rcbench.engine.threads import Pool
+from rcbench.errors import InputError
+
+
+def test_default_threads_are_the_cores_this_process_may_use():
+    assert threads.thread_count(None) <= len(os.sched_getaffinity(0))
+    assert threads.thread_count(5) == 5
+    with pytest.raises(InputError, match="threads"):
+        threads.thread_count(0)
+
+
+@pytest.mark.parametrize(("text", "cores"), [("150000 100000", 1.5), ("max 100000", float("inf"))])
+def test_cgroup_quota_is_read(tmp_path, monkeypatch, text, cores):
+    (tmp_path / "cpu.max").write_text(text)
+    monkeypatch.setattr(threads, "_cgroup_folders", lambda controller: [tmp_path])
+    assert threads.cpu_quota() == cores
+
+
+def test_older_cgroup_quota_is_read(tmp_path, monkeypatch):
+    (tmp_path / "cpu.cfs_quota_us").write_text("50000")
+    (tmp_path / "cpu.cfs_period_us").write_text("100000")
+    (tmp_path / "memory.limit_in_bytes").write_text("123456")
+    monkeypatch.setattr(threads, "_cgroup_folders", lambda controller: [tmp_path])
+    assert threads.cpu_quota() == 0.5
+    assert memory.available_memory() == 123456
+
+
+def test_memory_is_counted_in_states_and_numbers():
+    assert memory.bytes_needed(10) == 8 * 1024
+    assert memory.bytes_needed(10, "complex128", states=3, float64=2) == 1024 * (48 + 16)
+
+
+def test_pool_takes_each_item_once():
+    seen: list[int] = []
+    lock = threading.Lock()
+
+    def task(item: int) -> None:
+        with lock:
+            seen.append(item)
+
+    with Pool(3) as pool:
+        pool.run(task, range(100))
+    assert sorted(seen) == list(range(100))
+
+
+def test_an_error_in_a_task_is_raised_by_the_pool():
+    def task(item: int) -> None:
+        if item == 3:
+            raise KeyError("three")
+
+    with Pool(2) as pool, pytest.raises(KeyError, match="three"):
+        pool.run(task, range(5))
+
+
+@pytest.mark.slow
+def test_a_package_folder_and_home_that_cannot_be_written_still_give_a_state(tmp_path):
+    """Root can write anywhere, so the folders are files: nothing can be made inside them."""
+    home = tmp_path / "home"
+    home.write_text("")
+    code = (
+        "from rcbench.circuits.circuit import CircuitBuilder\n"
+        "from rcbench.engine.state import final_state\n"
+        "b = CircuitBuilder(2); b.add('h', [0]); print(abs(final_state(b.build())[2]) ** 2)\n"
+    )
+    package = tmp_path / "site" / "rcbench"
+    package.parent.mkdir()
+    source = Path(rcbench.__file__).parent
+    for folder in ("", "circuits", "engine"):
+        (package / folder).mkdir()
+        for file in (source / folder).glob("*.py"):
+            (package / folder / file.name).write_bytes(file.read_bytes())
+    (package / "engine" / "__pycache__").write_text("")
+    environment = {**os.environ, "PYTHONPATH": str(package.parent), "HOME": str(home), "XDG_CACHE_HOME": str(home)}
+    environment["TMPDIR"] = str(tmp_path)
+    environment.pop("NUMBA_CACHE_DIR", None)
+    done = subprocess.run([sys.executable, "-c", code], env=environment, capture_output=True, text=True, check=False)
+    assert done.returncode == 0, done.stderr
+    assert abs(float(done.stdout) - 0.5) < 1e-6
