@@ -1,4 +1,4 @@
-"""rcbench: random circuit benchmarks. Does a quantum processor scramble as its circuits say, and keep what it scrambles?
+"""rcbench: random circuit benchmarks. Does a quantum processor scramble as its circuits say, and keep it?
 
 The public verbs, each fetched on first use: `load_campaign`, `build_kit`, `predict`, `read_shots`, `check_shots`,
 `compare`, `write_report`. The modules hold the rest: one noun, one module.

@@ -18,8 +18,8 @@ from rcbench.device import (
     NativeGate,
     Pair,
     Rate,
-    Timings,
     Times,
+    Timings,
 )
 from rcbench.errors import InputError, suggest
 from rcbench.tomlfile import Section

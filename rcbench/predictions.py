@@ -1,7 +1,7 @@
-"""Predictions: what an ideal device and a device of the stated error budget would give, for the very circuits of the kit.
+"""Predictions: what an ideal device and a device of the stated error budget would give, for the circuits of the kit.
 
-Each circuit is simulated gate for gate as compiled; the same estimator that will read the measured bitstrings is applied
-to the simulated distribution, so that a prediction is always of the quantity that is measured.
+Each circuit is simulated gate for gate as compiled; the same estimator that will read the measured bitstrings is
+applied to the simulated distribution, so that a prediction is always of the quantity that is measured.
 """
 
 from __future__ import annotations
@@ -143,7 +143,7 @@ def group_runs(
 
 
 def trajectories_for(experiment: Experiment) -> int:
-    """Trajectories a circuit that make the Monte Carlo error of a mean over instances a fifth of the smallest margin."""
+    """Trajectories a circuit for a Monte Carlo error of the mean over instances of a fifth of the smallest margin."""
     margins = [
         margin.value
         for key, margin in experiment.margins.items()
@@ -243,11 +243,11 @@ def predict_instance(
                 for value in family.apply(group):
                     if not math.isfinite(value.value) or not math.isfinite(value.std_error):
                         continue
-                    place = (value.signature, value.region)
+                    name = (value.signature, value.region)
                     deltas = {
-                        source: moved[place] - value.value
+                        source: moved[name] - value.value
                         for source, moved in shifts.items()
-                        if math.isfinite(moved.get(place, math.nan))
+                        if math.isfinite(moved.get(name, math.nan))
                     }
                     writer.add(group.depth, group.instance, model, value, deltas, method)
 

@@ -136,7 +136,7 @@ class Section:
         if not isinstance(value, kind) or (kind is not bool and isinstance(value, bool)):
             self.error(key, value, words)
             return None if default is ... else default
-        if kind is float and not abs(value) < float("inf"):
+        if isinstance(value, float) and not abs(value) < float("inf"):
             self.error(key, value, "a finite number")
             return None if default is ... else default
         return value

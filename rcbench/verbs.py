@@ -1,4 +1,4 @@
-"""The verbs that go from files to files: compare, and the whole job in one. The command line is a thin face on these."""
+"""The verbs that go from files to files: compare, and the whole job in one; the command line is a face on these."""
 
 from __future__ import annotations
 
@@ -30,7 +30,7 @@ class Compared:
 
 
 class IdealProbabilities:
-    """Ideal outcome probabilities by circuit, simulated an instance at a time so that circuits share their beginnings."""
+    """Ideal outcome probabilities by circuit, an instance at a time, since circuits share their beginnings."""
 
     def __init__(self, kit: Kit, options: Options) -> None:
         self._options = options
@@ -177,7 +177,7 @@ def run(
     options: Options | None = None,
     progress: Callable[[str], Progress | None] | None = None,
 ) -> tuple[Compared, Path]:
-    """The whole job: kit, predictions, comparison and report under one folder; returns the result and the report's path."""
+    """The whole job under one folder: kit, predictions, comparison, report; gives the result and the report's path."""
     from rcbench.campaign import load_campaign
     from rcbench.kit import build_kit
     from rcbench.report.write import write_report

@@ -30,15 +30,17 @@ def find_targets(found: Sequence[Adopted], progress: Progress | None = None) -> 
     out, errors = {}, []
     for done, one in enumerate(found, start=1):
         qubits = one.circuit.measured_qubits
-        shares = measured(probabilities(final_state(one.circuit)), qubits)
+        kept = sorted(qubits)
+        shares = measured(probabilities(final_state(one.circuit)), kept)  # in their own order: nothing is moved
         best = int(np.argmax(shares))
+        bits = format(best, f"0{len(kept)}b")
         likely = float(shares[best] / shares.sum(dtype=np.float64))
         if likely < CERTAIN:
             allowed = f"one bitstring with probability {CERTAIN:g} or more, for the protocol mirror-return"
             errors.append(
                 InputError("ideal outcome", f"the likeliest has {likely:.6g}", allowed, f"{one.circuit_id}: ")
             )
-        out[one.circuit_id] = format(best, f"0{len(qubits)}b")
+        out[one.circuit_id] = "".join(bits[kept.index(qubit)] for qubit in qubits)
         if progress:
             progress(done, len(found), "simulated")
     raise_all(errors[:MOST_ERRORS])

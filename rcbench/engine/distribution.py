@@ -39,7 +39,8 @@ class Distribution:
         """(2**n_bits,) the distribution itself."""
         if self.batches is None:
             return self.exact
-        return self.weight * self.exact + (1 - self.weight) * self.batches.mean(axis=0)
+        rest: FloatArray = self.batches.mean(axis=0)
+        return self.weight * self.exact + (1 - self.weight) * rest
 
     def _linear(self, apply: FloatArray) -> Value:
         exact = float(self.exact @ apply)

@@ -9,16 +9,20 @@ import numpy as np
 
 from rcbench.circuits.circuit import Circuit, CircuitBuilder
 from rcbench.engine import memory, mixture
+from rcbench.engine.blocks import apply_plan
+from rcbench.engine.kernels import DENSE
 from rcbench.engine.noise import SOURCES, NoiseModel
+from rcbench.engine.operators import COSTS
 from rcbench.engine.predict import batch_count
-from rcbench.engine.state import compile_circuit
+from rcbench.engine.state import compile_circuit, zero_state
 from rcbench.engine.threads import Pool, thread_count
 from rcbench.engine.trajectories import BLOCK_QUBITS, noisy_program
-from rcbench.engine.tree import Node, build_tree, walk
+from rcbench.engine.tree import Node, build_tree
 from rcbench.engine.work import Work
 
 SAMPLE = 8  # circuits of each size that are looked at closely
 _TRIAL_QUBITS = 20  # speed does not change much above
+_TRIALS = 5
 _SUMMING = 4  # adding up the probabilities of a trajectory takes as long as so many operators
 _FIXED_SECONDS = 1.5e-3  # of each circuit with trajectories, whatever its size
 
@@ -52,13 +56,13 @@ def _add_size(
     sample = circuits[:: max(1, len(circuits) // SAMPLE)][:SAMPLE]
     sample_gates = max(1, sum(int(np.count_nonzero(circuit.gate_rows)) for circuit in sample))
     speed = _speed(n, dtype, threads)
-    with Work().timed():
-        start = time.perf_counter()
-        operators = sum(len(compile_circuit(circuit, dtype).operators) for circuit in sample)
-        compiling = time.perf_counter() - start
-    evolved = 2.0**n * operators * gates / sample_gates
-    total.amplitudes += evolved
-    total.seconds += evolved / speed + compiling * gates / sample_gates
+    start = time.perf_counter()
+    plans = [compile_circuit(circuit, dtype) for circuit in sample]
+    compiling = time.perf_counter() - start
+    operators = sum(len(plan.operators) for plan in plans)
+    cost = sum(float(COSTS[plan.operators.kind].sum()) for plan in plans) / COSTS[DENSE]
+    total.amplitudes += 2.0**n * operators * gates / sample_gates
+    total.seconds += (2.0**n * cost / speed + compiling) * gates / sample_gates
     total.holds(memory.bytes_needed(n, dtype, states=root.states))
     if noise is None:
         return
@@ -68,11 +72,12 @@ def _add_size(
     steps = sum(_steps_of_a_trajectory(circuit, noise, dtype) for circuit in sample) / len(sample)
     preparing = (time.perf_counter() - start) / len(sample)
     amplitudes = 2.0**n * steps * run * len(circuits)
+    cheaper = cost / max(1, operators)
     total.trajectories += run * len(circuits)
     total.amplitudes += amplitudes
     parallel = min(threads, batches) if n <= BLOCK_QUBITS else 1
     summing = 2.0**n * _SUMMING * run * len(circuits)
-    total.seconds += (amplitudes + summing) / speed / parallel + (preparing + _FIXED_SECONDS) * len(circuits)
+    total.seconds += (amplitudes * cheaper + summing) / speed / parallel + (preparing + _FIXED_SECONDS) * len(circuits)
     saved = min(mixture.SAVED_BYTES, int(operators / len(sample)) * memory.bytes_needed(n, dtype))
     total.holds(mixture.bytes_needed(n, dtype, batches, len(SOURCES)) + saved)
 
@@ -97,23 +102,20 @@ def _steps_of_a_trajectory(circuit: Circuit, noise: NoiseModel, dtype: str) -> f
 
 
 def _speed(n_qubits: int, dtype: str, threads: int) -> float:
-    """Amplitudes times operators a second, of one state: a small one on one thread, a large one on all."""
+    """Amplitudes times dense operators a second, of one state: a small one on one thread, a large one on all."""
     n = min(n_qubits, _TRIAL_QUBITS)
     builder = CircuitBuilder(n)
-    for layer in range(4):
+    for layer in range(6):
         for qubit in range(n):
             builder.add("u", [qubit], [1 + qubit + layer, 2, 3])
         builder.next_layer()
         for qubit in range(layer % 2, n - 1, 2):
             builder.add("iswap", [qubit, qubit + 1])
         builder.next_layer()
-    circuit = builder.build()
-    rates = []
-    for _ in range(3):
-        work = Work()
-        list(walk([circuit], dtype=dtype, threads=threads, work=work))
-        start = time.perf_counter()
-        compile_circuit(circuit, dtype)
-        work.seconds = max(work.seconds - (time.perf_counter() - start), 0.2 * work.seconds)
-        rates.append(work.rate)
-    return max(rates)
+    trial, state, best = compile_circuit(builder.build(), dtype), zero_state(n, dtype), 0.0
+    with Pool(threads) as pool:
+        for _ in range(_TRIALS):
+            start = time.perf_counter()
+            apply_plan(state, trial, pool)
+            best = max(best, 2.0**n * len(trial.operators) / (time.perf_counter() - start))
+    return best

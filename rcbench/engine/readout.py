@@ -7,6 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from rcbench.arrays import FloatArray
+from rcbench.engine.compiled import kernel
 
 
 def measured(probabilities: FloatArray, qubits: Sequence[int]) -> FloatArray:
@@ -25,16 +26,29 @@ def measured(probabilities: FloatArray, qubits: Sequence[int]) -> FloatArray:
 
 def flip(probabilities: FloatArray, confusion: FloatArray) -> FloatArray:
     """The distribution as read; probabilities: (..., 2**k), confusion: (k, 2, 2) as [bit, read, true]."""
-    shape, k = probabilities.shape, len(confusion)
-    out = probabilities
-    for bit in range(k):
-        if np.array_equal(confusion[bit], np.eye(2)):
-            continue
-        part = out.reshape(-1, 2, 2 ** (k - 1 - bit))
-        zero, one = part[:, 0], part[:, 1]
-        table = confusion[bit].astype(part.dtype)
-        new = np.empty_like(part)
-        new[:, 0] = table[0, 0] * zero + table[0, 1] * one
-        new[:, 1] = table[1, 0] * zero + table[1, 1] * one
-        out = new
-    return out.reshape(shape)
+    size = probabilities.shape[-1]
+    out = np.array(probabilities, order="C")
+    _flip(out.reshape(-1, size), confusion.astype(out.dtype))
+    return out
+
+
+@kernel
+def _flip(rows, confusion):  # type: ignore[no-untyped-def]
+    bits = len(confusion)
+    for row in range(len(rows)):
+        values = rows[row]
+        for bit in range(bits):
+            stay0, to0, to1, stay1 = (
+                confusion[bit, 0, 0],
+                confusion[bit, 0, 1],
+                confusion[bit, 1, 0],
+                confusion[bit, 1, 1],
+            )
+            if to0 == 0 and to1 == 0:
+                continue
+            half = 1 << (bits - 1 - bit)
+            for start in range(0, len(values), 2 * half):
+                for place in range(start, start + half):
+                    zero, one = values[place], values[place + half]
+                    values[place] = stay0 * zero + to0 * one
+                    values[place + half] = to1 * zero + stay1 * one

@@ -23,7 +23,7 @@ from rcbench.engine.turns import split_turns
 from rcbench.errors import InputError
 from rcbench.randomness import Draw
 
-BLOCK_QUBITS = 15  # up to here a state is one block, and each thread runs trajectories of its own
+BLOCK_QUBITS = 16  # up to here a state is one block, and each thread runs trajectories of its own
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -12,6 +12,8 @@ from rcbench.report.source import NOT_STATED, Source
 from rcbench.report.table import Row, Table, table
 
 _AUDITED = ("asked", "returned", "complete", "short", "missing", "repeats", "shots_asked", "shots_returned")
+_FIRST = ("started", "ended", "device", "physical_qubits", "kit_hash", "calibration", "calibrated")
+TREND = 3.0  # sigmas
 _SHOWN = 40  # entries of a list; the rest is in audit.json
 
 
@@ -47,9 +49,10 @@ def audit_facts(source: Source) -> list[tuple[str, str]]:
         ("Bad rows set aside", whole(audit.get("set_aside"))),
     ]
     trends = audit.get("trend_z")
-    if isinstance(trends, Mapping) and trends:
-        listed = "; ".join(f"{name} {value:.1f}" for name, value in trends.items())
-        facts.append(("Trend of losses with depth, in sigmas", listed))
+    if isinstance(trends, Mapping):
+        steep = {str(name): float(z) for name, z in trends.items() if abs(float(z)) > TREND}
+        listed = "; ".join(f"{name} ({z:.1f} sigmas)" for name, z in steep.items())
+        facts.append(("Losses that grow with depth", listed or f"none above {TREND:g} sigmas"))
     return facts
 
 
@@ -79,7 +82,8 @@ def execution_facts(source: Source) -> list[tuple[str, str]]:
     """What the device team stated about the execution; the rest is 'not stated'."""
     stated = source.audit.get("execution")
     facts = stated if isinstance(stated, Mapping) else {}
-    return [(str(key).replace("_", " ").capitalize(), str(value or NOT_STATED)) for key, value in facts.items()]
+    order = [*(key for key in _FIRST if key in facts), *(key for key in facts if key not in _FIRST)]
+    return [(key.replace("_", " ").capitalize(), str(facts[key] or NOT_STATED)) for key in order]
 
 
 def wall_time(source: Source) -> str:

@@ -11,7 +11,14 @@ from rcbench.report.source import Source
 from rcbench.report.table import finding_text
 
 _NUMBER = re.compile(r"\d+(?:\.\d+)?(?:e[-+]?\d+)?")
-_SAID_ELSEWHERE = ("would be settled", "more data would not", "control value of", "further controls")
+_SAID_ELSEWHERE = (
+    "would be settled",
+    "more data would not",
+    "control value of",
+    "further controls",
+    "between ",
+    "fit to ",
+)
 
 
 def deviations(source: Source) -> list[str]:

@@ -13,8 +13,10 @@ from matplotlib.figure import Figure
 from rcbench.campaign import Experiment
 from rcbench.regions import read_setting
 from rcbench.report import figures as look
+from rcbench.report.printed import MINUS
 from rcbench.report.source import Source
 
+NEGATIVE = -0.15  # cells below it carry a minus sign: the colours end at 0
 MOST_SITES = 4  # rows of maps that still fit a page
 
 
@@ -51,7 +53,7 @@ def _words(experiment: Experiment, rows: pd.DataFrame, left_out: list[int]) -> t
         f"OTOC of {experiment.name} by probe and depth. Light is 1: the butterfly has not arrived. Dark is 0 or below: "
         f"it has spread over the probe. The reference, the same echo without a butterfly, must stay light for this to "
         f"mean anything. Cells marked × depart from the {experiment.against.replace('-', ' ')}; cells marked ? are "
-        f"undecided.{rest}"
+        f"undecided; − stands for values below {MINUS}{-NEGATIVE:g}.{rest}"
     )
     alt = "OTOC maps. " + "; ".join(
         f"butterfly {site}, depth {depth:g}: mean {part['measured'].mean():.2f}"
@@ -78,12 +80,16 @@ def _map(axes: Axes, rows: pd.DataFrame, column: str) -> None:
     axes.set(xlabel="", ylabel="")
     axes.tick_params(rotation=0, length=0)
     axes.invert_yaxis()
-    if column != "measured":
-        return
-    found = rows.pivot_table(index="depth", columns="probe", values="finding", aggfunc="first")
-    for (at, probe), finding in np.ndenumerate(found.to_numpy(dtype=object)):
-        sign = {"departs": "×", "undecided": "?"}.get(str(finding))
-        if sign:
-            dark = float(np.nan_to_num(table.to_numpy()[at, probe])) < 0.45
-            axes.text(probe + 0.5, at + 0.5, sign, ha="center", va="center", fontsize=8, weight="bold",
-                      color="white" if dark else "black")  # fmt: skip
+    signs = np.where(table.to_numpy(dtype=float) < NEGATIVE, "−", "").astype(object)
+    if column == "measured":
+        found = rows.pivot_table(index="depth", columns="probe", values="finding", aggfunc="first")
+        for at, finding in np.ndenumerate(found.to_numpy(dtype=object)):
+            signs[at] += {"departs": "×", "undecided": "?"}.get(str(finding), "")
+    for (at, probe), sign in np.ndenumerate(signs):
+        if not sign:
+            continue
+        dark = float(np.nan_to_num(table.to_numpy()[at, probe])) < 0.45
+        axes.text(
+            probe + 0.5, at + 0.5, sign, ha="center", va="center", fontsize=8, weight="bold",
+            color="white" if dark else "black",
+        )  # fmt: skip

@@ -26,7 +26,8 @@ def uncertainty_table(source: Source) -> Table:
             if combined.empty:
                 continue
             margin = source.compared(experiment.name, key)["margin"].median()
-            known = {name: value for name, value in parts.items() if math.isfinite(value)}
+            # the scatter between runs is of single runs and is shown beside the others, not among them
+            known = {name: u for name, u in parts.items() if math.isfinite(u) and name != "between runs"}
             largest = max(known, key=lambda name: known[name]) if known else MISSING
             cells = [signature(key).title, *(number(parts[name], 2) for name in _PARTS)]
             cells += [number(combined.median(), 2), number(combined.max(), 2), number(margin, 2), largest]
@@ -50,7 +51,8 @@ def _parts(source: Source, experiment: str, key: str) -> dict[str, float]:
     return {
         "statistical": _median(source.compared(experiment, key)["u_stat"]),
         "between runs": between_runs(source.estimated(experiment, key)),
-        "stated rates": _median(noise["u_model"]),
+        # fits over all depths have no prediction of their own: the comparison carried the rates through the fit
+        "stated rates": _median(noise["u_model"] if len(noise) else source.compared(experiment, key)["u_syst"]),
         "Monte Carlo": _median(noise["std_error"]),
         "numerical": _median(ideal["std_error"]),
     }

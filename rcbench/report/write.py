@@ -23,6 +23,7 @@ from rcbench.report.deviations import deviations
 from rcbench.report.device_table import device_facts, device_table
 from rcbench.report.locate import suspects
 from rcbench.report.page import inline, render
+from rcbench.report.predicted_table import predicted_table
 from rcbench.report.printed import fixed, interval, whole
 from rcbench.report.rule import DISCLAIMER, KEPT_ABOVE, LIMITS, RULE
 from rcbench.report.source import Source, groups, read_source
@@ -42,6 +43,7 @@ class Section:
     counts: dict[str, int]
     pictures: list[Any]
     fits: Table | None
+    predicted: Table | None
 
 
 def write_report(folder: Path | str) -> Path:
@@ -86,7 +88,7 @@ def report_context(source: Source, figures: Path) -> dict[str, Any]:
         disagreements(source), experiments_table(source), margins_table(source), comparison_table(source),
         departures(source), usage_table(source), files_table(source), uncertainty_table(source),
         device_table(source), *path_tables,
-        *(section.fits for section in sections if section.fits is not None),
+        *(shown for section in sections for shown in (section.fits, section.predicted) if shown is not None),
     ]  # fmt: skip
     return {
         "title": source.campaign.title,
@@ -174,6 +176,7 @@ def _section(source: Source, experiment: Experiment, folder: Path) -> Section:
         counts=counts(rows),
         pictures=[picture for picture in pictures if picture is not None],
         fits=fits_table(source, experiment.name),
+        predicted=predicted_table(source, experiment.name),
     )
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Collection, Iterable, Mapping
+from collections.abc import Callable, Collection, Iterable, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -86,10 +86,13 @@ class Intake:
 
     Args:
         runs: the runs of the kit. reading: how bitstrings are written. keep_all: read on however many rows are bad.
+        collector: what takes the rows in; a Tally adds them up.
     """
 
-    def __init__(self, runs: Runs, reading: Reading, *, keep_all: bool) -> None:
-        self.runs, self.reading, self.keep_all = runs, reading, keep_all
+    def __init__(
+        self, runs: Runs, reading: Reading, *, keep_all: bool, collector: Callable[[int], Tally] = Tally
+    ) -> None:
+        self.runs, self.reading, self.keep_all, self.collector = runs, reading, keep_all, collector
 
     def read(self, batches: Iterable[Batch], repeat: int | None) -> Part:
         """All rows of a file; repeat: number of the repeat that the whole file holds, None where it is not stated.
@@ -97,7 +100,7 @@ class Intake:
         Raises:
             Irregular: a bad row in a batch that cannot name its place.
         """
-        part = Part(Tally(self.runs.max_bits))
+        part = Part(self.collector(self.runs.max_bits))
         for batch in batches:
             _Rows(self, batch, part, repeat).take()
             if len(part.bad) >= AT_ONCE and not self.keep_all:

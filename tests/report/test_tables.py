@@ -13,6 +13,8 @@ import pytest
 from rcbench.report.campaign_table import rule_fixed
 from rcbench.report.comparison_table import comparison_table
 from rcbench.report.device_table import device_table
+from rcbench.report.path import path_data, spread_bound
+from rcbench.report.predicted_table import predicted_table
 from rcbench.report.printed import decimals_for, depths_text, duration, fixed, interval, number, small_power, whole
 from rcbench.report.source import groups
 from rcbench.report.uncertainty_table import between_runs, uncertainty_table
@@ -119,3 +121,34 @@ def test_different_qubits_or_gates_are_never_joined(source):
     other = replace(source.campaign.experiment("echo"), qubits=(0, 1, 2, 3))
     experiments = tuple(other if e.name == "echo" else e for e in source.campaign.experiments)
     assert len(groups(replace(source, campaign=replace(source.campaign, experiments=experiments)))) == 2
+
+
+def test_a_control_without_otocs_stands_at_the_most_its_circuits_can_spread(source):
+    """2 of 20 pairs have the probe on the butterfly, 2 more on its partner in the maximum matching of the line."""
+    (group,) = groups(source)
+    assert spread_bound(source, group, "product") == pytest.approx(2 / 20)
+    assert spread_bound(source, group, "dimers") == pytest.approx(4 / 20)
+    data = path_data(source, group)
+    assert data is not None
+    assert data.measured
+    control = data.points[data.points["family"] == "product"]
+    assert control["constructed"].all()
+    assert (control["spread"] == 0.1).all()
+
+
+def test_the_path_moves_right_as_it_spreads_and_down_as_it_loses(source):
+    (group,) = groups(source)
+    points = path_data(source, group).points
+    path = points[points["family"] == "brickwork"].sort_values("depth")
+    assert path["spread"].iloc[-1] - path["spread"].iloc[0] > 0.5
+    assert path["kept"].iloc[0] - path["kept"].iloc[-1] > 0.3
+
+
+def test_what_was_predicted_only_has_its_own_table(source):
+    rows = source.predictions[source.predictions["signature"] == "xeb_fidelity"].assign(signature="porter_thomas_ks")
+    more = replace(source, predictions=pd.concat([source.predictions, rows], ignore_index=True))
+    shown = predicted_table(more, "sampling")
+    assert shown is not None
+    assert shown.rows[0].head == "Porter-Thomas distance"
+    assert len(shown.rows) == len(compared_folder.DEPTHS)
+    assert predicted_table(source, "sampling") is None

@@ -22,12 +22,12 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-import numpy as np
-
+from rcbench.arrays import FloatArray
 from rcbench.randomness import Draw
 from rcbench.shots.evidence.finding import ALPHA
 from rcbench.shots.evidence.orders import Order, identity, named_orders
 from rcbench.shots.evidence.pools import Pool, evidence
+from rcbench.shots.evidence import scores
 
 KEPT = 0.8
 RANDOM_STARTS = 3
@@ -85,7 +85,7 @@ def accepted(half: Pool, other: Pool, order: Order, log_candidates: float, than:
     if gain <= limit:
         return None
     held_out, held_limit = evidence(other, order)[0] - evidence(other, before)[1], math.log(1 / ALPHA)
-    if held_out <= held_limit or half.fidelity(before) > KEPT * half.fidelity(order):  # type: ignore[attr-defined]
+    if held_out <= held_limit or half.fidelity(before) > KEPT * half.fidelity(order):
         return None
     return FoundOrder(order, gain, limit, held_out, held_limit)
 
@@ -124,8 +124,7 @@ def _with_ties(pool: Pool, found: FoundOrder) -> FoundOrder:
     return FoundOrder(found.order, found.gain, found.limit, found.held_out, found.held_limit, tuple(alike))
 
 
-def gains_by_run(pool: Pool, order: Order) -> np.ndarray:
-    """(runs,) nats by which each run prefers an order to the one asked for."""
-    from rcbench.shots.evidence import scores
-
-    return scores.mixture(pool.by_run(order)) - scores.best(pool.by_run(identity(pool.n_bits)))
+def gains_by_run(pool: Pool, order: Order) -> tuple[FloatArray, FloatArray]:
+    """(runs,) nats by which each run prefers an order to the one asked for, and (runs,) the other way round."""
+    found, asked = pool.by_run(order), pool.by_run(identity(pool.n_bits))
+    return scores.mixture(found) - scores.best(asked), scores.mixture(asked) - scores.best(found)

@@ -167,12 +167,14 @@ class Lane:
 
     Args:
         cases: without the dropped bits. dropped: bits that say nothing. n_bits: what is left.
-        bias: (n_bits,) mean Z of the floor.
+        bias: (n_bits,) mean Z of the floor of the likelihoods. pair_bias: the same for coincidences; it differs where a
+            string should return, since the likelihood then flips bits of its own.
     """
 
     cases: list[Case]
     dropped: tuple[int, ...]
     bias: FloatArray
+    pair_bias: FloatArray
 
     @property
     def n_bits(self) -> int:
@@ -208,13 +210,27 @@ class Lane:
         """(2**n_bits,) 1 / g, float64."""
         return 1 / scores.floor(self.bias)
 
+    def inverse_floor_at(self, bias: FloatArray) -> FloatArray:
+        """(k,) 1 / g of all outcomes of all runs, g the floor of a given mean Z; for any number of bits."""
+        bias = np.clip(bias, -scores.LARGEST_BIAS, scores.LARGEST_BIAS)
+        index, out = self.index, np.ones(sum(len(case.index) for case in self.cases))
+        for bit in range(self.n_bits):
+            one = index >> (self.n_bits - 1 - bit) & 1
+            out *= np.where(one == 1, 2 / (1 - bias[bit]), 2 / (1 + bias[bit]))
+        return out
+
+    def collisions(self) -> scores.Collisions:
+        """Coincidences of each run."""
+        at = self.inverse_floor_at(self.pair_bias)
+        return scores.collisions(at, self.counts, self.starts, 2.0**self.n_bits)
+
     def some(self, places: Sequence[int]) -> Lane:
         """Some of the runs."""
         return replace(self, cases=[self.cases[place] for place in places])
 
 
 def common_bias(cases: Sequence[Case], ideals: Ideals, dropped: tuple[int, ...] = ()) -> FloatArray:
-    """(n_bits,) mean Z that the runs share beyond what their circuits give them: the median over runs.
+    """(n_bits,) mean Z that runs share beyond what their circuits give them: the median over runs.
 
     With one or two runs their own mean Z is taken whole: a little power is lost, no false finding made.
     """
@@ -230,4 +246,32 @@ def common_bias(cases: Sequence[Case], ideals: Ideals, dropped: tuple[int, ...] 
                 share = float(np.clip((size * float(p[case.index] @ case.counts) / case.shots - 1) / v, 0, 1))
             z = z - share * (1 - 2 * marginal_ones(p))
         rest.append(z)
-    return np.median(np.array(rest), axis=0)
+    return np.asarray(np.median(np.array(rest), axis=0))
+
+
+def returned_bias(cases: Sequence[Case]) -> FloatArray:
+    """(n_bits,) mean Z of bits that return strings, beyond the strings; 0 where a bit should always return one value."""
+    z = 1 - 2 * np.array([case.ones() for case in cases])
+    shifts = np.arange(cases[0].n_bits - 1, -1, -1)
+    up = (np.array([case.target for case in cases], dtype=np.int64)[:, None] >> shifts & 1) == 0
+    both = up.any(axis=0) & ~up.all(axis=0)
+    mean_up = (z * up).sum(axis=0) / np.maximum(up.sum(axis=0), 1)
+    mean_down = (z * ~up).sum(axis=0) / np.maximum((~up).sum(axis=0), 1)
+    return np.where(both, (mean_up + mean_down) / 2, 0.0)
+
+
+def make_lanes(cases: Sequence[Case]) -> list[list[Case]]:
+    """Runs by what they must share to share a floor."""
+    found: dict[LaneKey, list[Case]] = defaultdict(list)
+    for case in cases:
+        found[lane_key(case)].append(case)
+    return list(found.values())
+
+
+def lane_of(cases: Sequence[Case], ideals: Ideals, dropped: tuple[int, ...] = ()) -> Lane:
+    """A lane of runs that share a floor, without some bits that say nothing."""
+    kept = [case.without(dropped) for case in cases]
+    if kept[0].target is not None:
+        return Lane(kept, dropped, np.zeros(kept[0].n_bits), returned_bias(kept))
+    bias = common_bias(kept, ideals, dropped)
+    return Lane(kept, dropped, bias, bias)

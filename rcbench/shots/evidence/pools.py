@@ -11,8 +11,8 @@ import numpy as np
 from rcbench.arrays import FloatArray, IntArray
 from rcbench.randomness import Draw
 from rcbench.shots.evidence import scores
-from rcbench.shots.evidence.cases import Case, ones_of
-from rcbench.shots.evidence.orders import Order, identity
+from rcbench.shots.evidence.cases import Case
+from rcbench.shots.evidence.orders import Order
 
 POOL_SIZE = 2**24  # probabilities held at once; more runs than that allows add nothing that matters
 SEARCH_ENTRIES = 40_000  # outcomes that the search climbs on; the decision uses all
@@ -39,6 +39,9 @@ class Pool(Protocol):
     def objective(self, source: Sequence[int]) -> Climb:
         """What a search climbs on, from a start."""
 
+    def fidelity(self, order: Order) -> float:
+        """How much of the circuits' signal is there if bits come in this order; for comparing orders."""
+
 
 class Climb(Protocol):
     """A search's place: the score of an order, and of those that exchange two of its bits."""
@@ -55,9 +58,8 @@ class Climb(Protocol):
 
 def evidence(pool: Pool, order: Order) -> tuple[float, float]:
     """Log-likelihood ratio to the floor, fidelity shared within a depth: mixture over it, and best."""
-    total = np.zeros((int(pool.depth_groups().max()) + 1, 1))
     found = pool.by_run(order)
-    total = np.zeros((total.shape[0], found.shape[1]))
+    total = np.zeros((int(pool.depth_groups().max()) + 1, found.shape[1]))
     np.add.at(total, pool.depth_groups(), found)
     return float(scores.mixture(total).sum()), float(scores.best(total).sum())
 
@@ -128,7 +130,6 @@ class SampledPool:
         ends = np.append(self.starts[1:], len(self.index))
         single = np.zeros((n, n))
         pair = np.zeros((n, n, n, n))
-        upper = np.triu_indices(n, 1)
         places = 1 << (n - 1 - np.arange(n))
         joint = places[:, None] | places[None, :]
         for run, (start, end) in enumerate(zip(self.starts, ends, strict=True)):
@@ -143,7 +144,6 @@ class SampledPool:
             np.fill_diagonal(ideal, 0.0)
             single += shots * np.multiply.outer(m, walsh[places])
             pair += shots * np.multiply.outer(c, ideal)
-        del upper
         return match(single, pair)
 
 
@@ -339,6 +339,3 @@ def return_pool(cases: Sequence[Case]) -> ReturnPool:
 
 def _numbered(values: Sequence[int]) -> IntArray:
     return np.unique(np.array(values), return_inverse=True)[1].reshape(-1)
-
-
-__all__ = ["Pool", "ReturnPool", "SampledPool", "evidence", "identity", "ones_of", "return_pool", "sampled_pool"]

@@ -1,0 +1,189 @@
+"""Shots of one circuit filed under another: every doubtful run against every circuit, then an assignment.
+
+A run is doubtful where its own circuit does not explain it. That run comes from a circuit c if
+
+- its cross-entropy with c is significant, the null widened by the overlap of different ideal distributions: data of a
+  foreign circuit have a cross-entropy of F s_off with c, s_off the spread of such overlaps, 2^(-n/2) for deep circuits;
+- c explains at least half of the coincidences among its shots;
+- its likelihood under c exceeds that under its own circuit, and every other, by more than ln(candidates / ALPHA) nats.
+
+Runs that exchange places are judged together: the runs are assigned to places so that the total likelihood is greatest,
+and a cycle of m among S runs is told where it gains more than m ln S - ln m + ln(1 / ALPHA) nats.
+
+Doubtful runs times circuits times outcomes set the cost; a campaign in which every run is explained pays only for the
+circuits of the same instance, which all runs are compared with.
+
+Sources: likelihood as in Rinott, Shoham, Kalai, Stat. Sci. 37, 322 (2022); the widened null and the limits are
+derived here.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from rcbench.arrays import FloatArray, IntArray
+from rcbench.shots.evidence import orphans, scores
+from rcbench.shots.evidence.cases import Lane
+from rcbench.shots.evidence.finding import ALPHA
+from rcbench.shots.evidence.scores import Collisions
+
+WORTH_LOOKING = 3.0  # sigmas of cross-entropy from which a likelihood is worked out
+OWN_BONUS = 1e-6  # nats that break exact ties in favour of a run's own place
+NOWHERE = -1
+_NEVER = -1e12
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Fit:
+    """How runs fit one circuit each. mixed, best: (runs,) nats over the floor; -inf and 0 where it is no candidate."""
+
+    mixed: FloatArray
+    best: FloatArray
+
+
+def sampled_fit(
+    lane: Lane, p: FloatArray, inverse_floor: FloatArray, found: Collisions, overlap: float, tests: int = 1
+) -> Fit:
+    """How runs of a lane fit a sampled circuit.
+
+    Args:
+        lane: the runs. p: (2**n,) ideal probabilities. inverse_floor: (2**n,) 1 / g. found: coincidences of the runs.
+        overlap: spread of D sum p p' - 1 over pairs of different circuits. tests: candidates in all.
+    """
+    from scipy.stats import norm
+
+    index, counts, starts = lane.index, lane.counts, lane.starts
+    ratio = p[index] * inverse_floor[index]
+    v = float(np.square(p, dtype=np.float64) @ inverse_floor) - 1
+    runs = len(starts)
+    mixed, best = np.full(runs, -np.inf), np.zeros(runs)
+    if v < scores.LEAST_EXCESS:
+        return Fit(mixed, best)
+    cross = scores.crossed(ratio, counts, starts, np.full(runs, v))
+    self_fidelity = np.clip((found.excess + found.error) / v, 0, 1)
+    z = cross.mean / np.sqrt(v / lane.shots + self_fidelity * overlap**2)
+    look = np.flatnonzero(cross.mean > WORTH_LOOKING * np.sqrt(v / lane.shots))
+    if not len(look):
+        return Fit(mixed, best)
+    picked, sub_starts = entries(starts, len(index), look)
+    likelihood = scores.log_likelihoods(ratio[picked], counts[picked], sub_starts)
+    best[look] = scores.best(likelihood)
+    can = (z > norm.isf(ALPHA / tests)) & orphans.consistent(found, cross)
+    mixed[look] = np.where(can[look], scores.mixture(likelihood), -np.inf)
+    return Fit(mixed, best)
+
+
+def returned_fit(lane: Lane, target: int) -> Fit:
+    """How runs of a lane fit a circuit that should return a string."""
+    counts, starts = lane.counts, lane.starts
+    distance = np.bitwise_count(lane.index ^ target).astype(np.int64)
+    likelihood = scores.returned_log_likelihoods(distance, counts, starts, lane.n_bits)
+    if lane.bias.any():  # that was over the uniform floor; the lane's own is another
+        likelihood += np.add.reduceat(counts * np.log(lane.inverse_floor_at(lane.bias) / 2.0**lane.n_bits), starts)[:, None]
+    return Fit(scores.mixture(likelihood), scores.best(likelihood))
+
+
+def entries(starts: IntArray, size: int, runs: IntArray) -> tuple[IntArray, IntArray]:
+    """Positions of the outcomes of some runs, and where each of these starts among them."""
+    ends = np.append(starts[1:], size)
+    lengths = (ends - starts)[runs]
+    picked = np.concatenate([np.arange(starts[run], ends[run]) for run in runs])
+    return picked, np.concatenate([[0], np.cumsum(lengths)[:-1]]).astype(np.int64)
+
+
+def overlap_spread(samples: FloatArray, n_bits: int) -> float:
+    """Spread of D sum p p' - 1 over pairs of different circuits, its tails included; at least 2^(-n/2).
+
+    Args:
+        samples: (circuits, k) D p at the same k outcomes drawn evenly, or at all of them.
+    """
+    least = 2.0 ** (-n_bits / 2)
+    circuits, k = samples.shape
+    if circuits < 3:
+        return least
+    gram = (samples - 1) @ (samples - 1).T / k
+    pairs = gram[np.triu_indices(circuits, 1)]
+    # of what a sample of the outcomes leaves uncertain
+    noise = float(np.median(np.diagonal(gram))) / math.sqrt(k) if k < 2**n_bits else 0.0
+    spread = max(float(pairs.std()), float(np.quantile(np.abs(pairs), 0.95)) / 1.96)
+    return max(math.sqrt(max(spread**2 - noise**2, 0.0)), least)
+
+
+def assign(value: FloatArray, own: FloatArray) -> IntArray:
+    """(runs,) the place each run goes to so that the total is greatest; NOWHERE where no place fits.
+
+    Args:
+        value: (runs, places) nats of each run in each place, the first places those of the runs themselves; -inf: cannot be.
+        own: (runs,) nats in its own place, at least 0.
+    """
+    from scipy.optimize import linear_sum_assignment
+
+    runs, places = value.shape
+    table = np.where(np.isfinite(value), value, _NEVER)
+    table[np.arange(runs), np.arange(runs)] = own + OWN_BONUS
+    table = np.concatenate([table, np.zeros((runs, runs))], axis=1)
+    _, column = linear_sum_assignment(table, maximize=True)
+    return np.where(column < places, column, NOWHERE)
+
+
+@dataclass(frozen=True, slots=True)
+class Move:
+    """Runs that belong elsewhere, in the order in which each takes the place of the next. closed: a cycle.
+
+    gain, limit: nats.
+    """
+
+    runs: tuple[int, ...]
+    places: tuple[int, ...]
+    closed: bool
+    gain: float
+    limit: float
+
+
+def moves(goes: IntArray, value: FloatArray, own: FloatArray, circuits: int) -> list[Move]:
+    """The cycles and chains of an assignment that gain enough.
+
+    Args:
+        goes: (runs,) from `assign`. value, own: as there. circuits: candidates that each run was compared with.
+    """
+    runs = len(goes)
+    moved = {run: int(goes[run]) for run in range(runs) if goes[run] not in (run, NOWHERE)}
+    taken = set(moved.values())
+    found = []
+    starts = [run for run in moved if run not in taken] + list(moved)
+    seen: set[int] = set()
+    for start in starts:
+        if start in seen:
+            continue
+        chain, here = [], start
+        while here in moved and here not in seen:
+            seen.add(here)
+            chain.append(here)
+            here = moved[here]
+        closed = here == start
+        gain = float(sum(value[run, moved[run]] - own[run] for run in chain))
+        m = len(chain)
+        if closed:
+            limit = m * math.log(runs) - math.log(m) + math.log(1 / ALPHA)
+        else:
+            limit = m * math.log(runs * circuits) + math.log(1 / ALPHA)
+        if gain > limit:
+            found.append(Move(tuple(chain), tuple(moved[run] for run in chain), closed, gain, limit))
+    return found
+
+
+def exchanged_with_reference(
+    as_filed: Sequence[FloatArray], crosswise: Sequence[FloatArray]
+) -> float:
+    """Nats by which an echo and its butterfly fit better exchanged, one fidelity for both: the reference gives it.
+
+    Args:
+        as_filed: log-likelihoods of the reference's and the butterfly's shots under their own circuits, each (hypotheses,).
+        crosswise: (len(FIDELITIES),) each, the reference's shots under the butterfly's circuit and the other way round.
+    """
+    alone = sum(float(scores.best(one)) for one in as_filed)
+    return float(scores.mixture(crosswise[0] + crosswise[1])) - alone
