@@ -11,6 +11,8 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+from rcbench.circuits.families import ADOPTED, CONTROLS, FAMILIES, MODELS, family_of
+from rcbench.circuits.families.family import Family, Value
 from rcbench.device import Device
 from rcbench.device_file import device_table, read_device
 from rcbench.errors import InputError, InputErrors, raise_all, suggest
@@ -18,8 +20,6 @@ from rcbench.regions import read_regions, write_regions
 from rcbench.signatures.registry import signature
 from rcbench.tomlfile import Section, read_toml
 
-FAMILIES = ("brickwork", "product", "dimers")
-ADOPTED = "adopted"  # circuits that were not drawn but imported, by `rcbench adopt`
 TWO_QUBIT = ("haar", "clifford", "cz", "iswap", "sqrt-iswap", "fsim", "zz")
 ONE_QUBIT = ("none", "haar", "quarter-turns", "azimuth", "clifford")
 REFERENCES = ("ideal", "noise-model")
@@ -32,28 +32,50 @@ _NAME = re.compile(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,59}")
 class Circuits:
     """The circuit family of an experiment.
 
-    family: brickwork (layers of the device's schedule), product (no entangling gate, the same one-qubit layers) or
-    dimers (the same two-qubit gates, count and duration, but every qubit keeps one fixed partner). ADOPTED stands for
-    imported circuits, of which the other fields say nothing.
-    two_qubit: one of TWO_QUBIT. one_qubit: the layer before each two-qubit layer and after the last, one of
-    ONE_QUBIT; `none` only with haar or clifford two-qubit gates, which hold one-qubit gates of their own.
+    family: brickwork (layers of the device's schedule), one of families.MODELS, product (no entangling gate, the same
+    one-qubit layers) or dimers (the same two-qubit gates, count and duration, but every qubit keeps one fixed partner).
+    ADOPTED stands for imported circuits, of which the other fields say nothing.
+    two_qubit: one of TWO_QUBIT; the family's own name where it is one of MODELS, also in its controls.
+    one_qubit: the layer before each two-qubit layer and after the last, one of ONE_QUBIT; `none` only with haar or
+    clifford two-qubit gates, which hold one-qubit gates of their own. Most MODELS have it once, at the start.
+    model: parameters of a family of MODELS by key; what is left out is filled in.
     """
 
     family: str = "brickwork"
-    two_qubit: str = "cz"
-    one_qubit: str = "quarter-turns"
+    two_qubit: str = ""
+    one_qubit: str = ""
     angle: float | None = None  # zz only, where the device offers any angle
+    model: tuple[tuple[str, Value], ...] = ()
 
     def __post_init__(self) -> None:
-        for key, value, allowed in (
-            ("family", self.family, (*FAMILIES, ADOPTED)),
-            ("two_qubit", self.two_qubit, TWO_QUBIT),
-            ("one_qubit", self.one_qubit, ONE_QUBIT),
-        ):
-            if value not in allowed:
-                raise InputError(key, value, suggest(value, allowed))
+        if self.family not in (*FAMILIES, ADOPTED):
+            raise InputError("family", self.family, suggest(self.family, (*FAMILIES, ADOPTED)))
+        if not self.two_qubit:
+            object.__setattr__(self, "two_qubit", self.family if self.family in MODELS else "cz")
+        self._check_two_qubit()
+        family = family_of(self.two_qubit)
+        if not self.one_qubit:
+            object.__setattr__(self, "one_qubit", family.plain)
+        if self.one_qubit not in family.one_qubit:
+            raise InputError("one_qubit", self.one_qubit, suggest(self.one_qubit, family.one_qubit))
+        object.__setattr__(self, "model", family.resolved(dict(self.model)))
+        if self.two_qubit in MODELS:
+            return
         if self.one_qubit == "none" and self.two_qubit not in ("haar", "clifford"):
             raise InputError("one_qubit", "none", "none only with two_qubit haar or clifford; else a one-qubit layer")
+
+    def _check_two_qubit(self) -> None:
+        if self.two_qubit not in (*TWO_QUBIT, *MODELS):
+            raise InputError("two_qubit", self.two_qubit, suggest(self.two_qubit, TWO_QUBIT))
+        if self.family in MODELS and self.two_qubit != self.family:
+            raise InputError("two_qubit", self.two_qubit, f"no other gates than those of {self.family}; leave it out")
+        if self.two_qubit in MODELS and self.family not in (self.two_qubit, *CONTROLS):
+            raise InputError("two_qubit", self.two_qubit, f"{', '.join(TWO_QUBIT)}, in a {self.family}")
+
+    @property
+    def parameters(self) -> dict[str, Value]:
+        """The parameters of the model by key."""
+        return dict(self.model)
 
     @property
     def gates(self) -> str:
@@ -336,16 +358,25 @@ def _read_qubits(section: Section, device: Device, source: Experiment | None) ->
 
 def _read_circuits(section: Section, like: Circuits | None, device: Device) -> Circuits | None:
     default = like or Circuits()
+    family = section.choice("family", (*FAMILIES, ADOPTED), default.family)
+    gates = family if family in MODELS else default.two_qubit
     facts: dict[str, Any] = {
-        "family": section.choice("family", (*FAMILIES, ADOPTED), default.family),
-        "two_qubit": section.choice("two_qubit", TWO_QUBIT, default.two_qubit),
+        "family": family,
+        "two_qubit": section.choice("two_qubit", (*TWO_QUBIT, *MODELS), gates),
         "angle": section.number("angle", default.angle),
     }
-    if facts["family"] == ADOPTED:
+    if family == ADOPTED:
         return Circuits(family=ADOPTED)
-    plain = "none" if facts["two_qubit"] in ("haar", "clifford") else "quarter-turns"
-    facts["one_qubit"] = section.choice("one_qubit", ONE_QUBIT, like.one_qubit if like else plain)
-    if facts["two_qubit"] not in ("haar", "clifford"):
+    row = family_of(facts["two_qubit"])
+    same = like is not None and like.two_qubit == facts["two_qubit"]
+    plain = "none" if facts["two_qubit"] in ("haar", "clifford") else row.plain
+    facts["one_qubit"] = section.choice(
+        "one_qubit", row.one_qubit, like.one_qubit if like is not None and (same or not row.parameters({})) else plain
+    )
+    facts["model"] = _read_model(section, row, like.parameters if like is not None and same else {})
+    if facts["model"] is None:
+        return None
+    if facts["two_qubit"] not in ("haar", "clifford", *MODELS):
         try:
             device.native(facts["two_qubit"])
         except InputError as error:
@@ -355,6 +386,27 @@ def _read_circuits(section: Section, like: Circuits | None, device: Device) -> C
     except InputError as error:
         section.catch(error)
         return None
+
+
+def _read_model(section: Section, row: Family, like: dict[str, Value]) -> tuple[tuple[str, Value], ...] | None:
+    """The parameters of a family from [experiment.model], each error at its own line; None where there are some."""
+    table = section.section("model")
+    if table is None:
+        return tuple(like.items()) if not section.has("model") else None
+    given: dict[str, object] = like | {key: table.raw(key) for key in table.data}
+    known = {parameter.key: parameter for parameter in row.parameters(given)}
+    errors_before = len(section.errors)
+    for key in table.data:
+        try:
+            if key not in known:
+                names = suggest(key, known) if known else "no key: only families with parameters have a model"
+                raise InputError(key, given[key], names)
+            known[key].checked(given[key])
+        except InputError as error:
+            table.error(key, error.found, error.allowed)
+    if len(section.errors) > errors_before:
+        return None
+    return row.resolved({key: value for key, value in given.items() if key in known})
 
 
 def _read_sites(section: Section) -> dict[str, tuple[int, ...]]:
@@ -415,6 +467,9 @@ def _check_links(sections: list[Section], experiments: list[Experiment]) -> None
         same_gates = experiment.circuits.gates == source.circuits.gates
         if not same_gates:
             section.error("same_circuits_as", source.name, f"an experiment with gates {experiment.circuits.gates}")
+        elif experiment.circuits.model != source.circuits.model:
+            model = ", ".join(f"{key} = {value}" for key, value in experiment.circuits.model)
+            section.error("same_circuits_as", source.name, f"an experiment with the same model, {model}")
 
 
 def dump_campaign(campaign: Campaign) -> str:
@@ -447,6 +502,7 @@ def _experiment_table(experiment: Experiment) -> dict[str, Any]:
         table |= {"two_qubit": circuits.two_qubit, "one_qubit": circuits.one_qubit}
     if circuits.angle is not None:
         table["angle"] = circuits.angle
+    model = circuits.parameters
     table |= {
         "depths": list(experiment.depths),
         "instances": experiment.instances,
@@ -463,6 +519,8 @@ def _experiment_table(experiment: Experiment) -> dict[str, Any]:
     if experiment.regions:
         table["regions"] = [write_regions(region) for region in experiment.regions]
     table["sites"] = {name: list(sites) for name, sites in experiment.sites.items()}
+    if model:
+        table["model"] = model
     table["margins"] = {
         key: {"relative": margin.value} if margin.relative else margin.value
         for key, margin in experiment.margins.items()

@@ -75,6 +75,18 @@ def layers(device: Device, qubits: Sequence[int], depth: int, draw: Draw) -> lis
     return [patterns[index % len(patterns)] for index in range(depth)]
 
 
+def patterns(device: Device, qubits: Sequence[int]) -> tuple[Layer, ...]:
+    """The layers that repeat, every coupler in exactly one of them; none where no qubits are coupled.
+
+    Raises:
+        InputError: a qubit that is repeated or not working; an all-to-all device, whose layers are drawn afresh.
+    """
+    if device.layout == "all-to-all":
+        raise InputError("layout", device.layout, "line, ring, grid or edges, where the same layers repeat")
+    couplers = couplers_among(device, qubits)
+    return _patterns(device.layout, device.columns, couplers, tuple(qubits)) if couplers else ()
+
+
 def dimer_layers(device: Device, qubits: Sequence[int], depth: int, draw: Draw) -> list[Layer]:
     """Layers with as many gates as those of `layers`, but with one fixed partner a qubit: equal loss, no spreading.
 

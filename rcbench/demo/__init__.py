@@ -24,7 +24,7 @@ def run_demo(out: Path, progress: Callable[[str], Any] | None = None) -> tuple[P
     Returns:
         Path of report.html, and the bottom line as text.
     """
-    from rcbench.report.bottom_line import bottom_line_text
+    from rcbench.report.write import bottom_line_text
     from rcbench.verbs import run
 
     try:

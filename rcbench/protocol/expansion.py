@@ -10,7 +10,7 @@ from typing import Any
 from rcbench.campaign import ADOPTED, Campaign, Experiment
 from rcbench.circuits import transform
 from rcbench.circuits.circuit import Circuit
-from rcbench.circuits.families import draw_circuits
+from rcbench.circuits.families import draw_circuits, period
 from rcbench.errors import InputError
 from rcbench.protocol.language import Protocol, Role
 from rcbench.protocol.placement import Placement, place

@@ -35,7 +35,7 @@ def haar_brickwork(n: int, depth: int) -> tuple[Circuit, cirq.Circuit]:
     builder, qubits, layers = CircuitBuilder(n), cirq.LineQubit.range(n), []
     for layer in range(depth):
         for a in range(layer % 2, n - 1, 2):
-            gate = cirq.testing.random_unitary(4, random_state=rng.integers(2**31))
+            gate = cirq.testing.random_unitary(4, random_state=int(rng.integers(2**31)))
             builder.add("matrix2", [a, a + 1], np.ascontiguousarray(gate).reshape(-1).view(np.float64))
             layers.append(cirq.MatrixGate(gate).on(qubits[a], qubits[a + 1]))
         builder.next_layer()
@@ -129,7 +129,7 @@ def test_pauli_trajectories():
     simulator = qsimcirq.QSimSimulator(qsimcirq.QSimOptions(max_fused_gate_size=4, cpu_threads=available_threads()))
 
     def theirs() -> None:
-        for seed in range(count // 20):  # a tenth of the work, to be scaled
+        for seed in range(count // 20):  # a twentieth of the work, to be scaled
             qsimcirq.QSimSimulator(simulator.qsim_options, seed=seed).simulate(noisy)
 
     ours, peer_time = medians(3, lambda: list(distributions([circuit], noise, trajectories=count)), theirs)

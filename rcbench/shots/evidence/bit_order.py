@@ -8,7 +8,8 @@ where
 - half of the shots prefer it to the order asked for by more than ln(candidates / ALPHA) nats: candidates are the named
   ones, or n! for any permutation;
 - the other half, which had no part in the search, prefers it by more than ln(1 / ALPHA);
-- the circuits fit clearly better: the shots as asked keep less than KEPT of the fidelity.
+- the circuits fit clearly better: the shots as asked keep less than KEPT of the fidelity;
+- the circuits then explain orphans.CLAIMED_SHARE of the structure that is there: shots of something else fit some order, too.
 
 A deep circuit keeps 2^-(n - cycles) of its cross-entropy under a permutation, so one exchange halves it. Where
 circuits are symmetric several orders fit alike: exchanges that change nothing are counted and told.
@@ -85,7 +86,7 @@ def accepted(half: Pool, other: Pool, order: Order, log_candidates: float, than:
     if gain <= limit:
         return None
     held_out, held_limit = evidence(other, order)[0] - evidence(other, before)[1], math.log(1 / ALPHA)
-    if held_out <= held_limit or half.fidelity(before) > KEPT * half.fidelity(order):
+    if held_out <= held_limit or half.fidelity(before) > KEPT * half.fidelity(order) or not half.explains(order):
         return None
     return FoundOrder(order, gain, limit, held_out, held_limit)
 

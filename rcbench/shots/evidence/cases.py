@@ -16,6 +16,7 @@ from rcbench.shots.shots import RunKey, Shots
 
 if TYPE_CHECKING:
     from rcbench.kit import RosterRow
+    from rcbench.shots.outcomes import Outcomes
 
 MAX_QUBITS = 20  # circuits up to here are simulated
 MAX_INDEX_BITS = 62
@@ -94,19 +95,17 @@ def target_index(target: str) -> int | None:
 def collect(
     rows: Iterable[RosterRow], shots: Shots, max_qubits: int, files: Mapping[RunKey, tuple[str, ...]]
 ) -> tuple[list[Case], list[str]]:
-    """The runs that can be examined, in the order of the roster, and in words what cannot.
+    """The runs that can be examined, and in words what cannot.
 
-    Repeats beyond the roster's are runs of the same circuit.
+    Repeats beyond the roster's are runs of the same circuit. In order of experiment and instance, so that whoever
+    simulates can share the beginnings of circuits.
     """
     by_id = {row.circuit_id: row for row in rows}
     known = {name for file in shots.files if file.rows for name in [file.name]}
     cases: list[Case] = []
     large: dict[str, int] = defaultdict(int)
-    place = {circuit_id: number for number, circuit_id in enumerate(by_id)}
-    for key, outcomes in sorted(shots.outcomes.items(), key=lambda item: (place.get(item[0][0], 0), item[0][1])):
-        row = by_id.get(key[0])
-        if row is None or not outcomes.shots:
-            continue
+    for row, key in sorted_rows(by_id, shots.outcomes):
+        outcomes = shots.outcomes[key]
         target = target_index(row.target)
         if outcomes.n_bits > MAX_INDEX_BITS or (target is None and row.n_qubits > max_qubits):
             large[row.experiment] += 1
@@ -120,6 +119,17 @@ def collect(
         for name, count in large.items()
     ]
     return cases, notes
+
+
+def sorted_rows(by_id: Mapping[str, RosterRow], outcomes: Mapping[RunKey, Outcomes]) -> list[tuple[RosterRow, RunKey]]:
+    """Roster row and key of every run with shots, by experiment, instance, depth and circuit."""
+    found = [(by_id[key[0]], key) for key, one in outcomes.items() if key[0] in by_id and one.shots]
+    return sorted(found, key=lambda pair: (*place_of(pair[0]), pair[1][1]))
+
+
+def place_of(row: RosterRow) -> tuple[str, int, int, str]:
+    """What rows are sorted by, so that circuits of an instance come together."""
+    return row.experiment, row.instance, row.depth, row.circuit_id
 
 
 class Ideals:

@@ -4,7 +4,7 @@ A run is doubtful where its own circuit does not explain it. That run comes from
 
 - its cross-entropy with c is significant, the null widened by the overlap of different ideal distributions: data of a
   foreign circuit have a cross-entropy of F s_off with c, s_off the spread of such overlaps, 2^(-n/2) for deep circuits;
-- c explains at least half of the coincidences among its shots;
+- c explains orphans.CLAIMED_SHARE of the coincidences among its shots, or is its commonest outcome where it returns one;
 - its likelihood under c exceeds that under its own circuit, and every other, by more than ln(candidates / ALPHA) nats.
 
 Runs that exchange places are judged together: the runs are assigned to places so that the total likelihood is greatest,
@@ -72,7 +72,7 @@ def sampled_fit(
     picked, sub_starts = entries(starts, len(index), look)
     likelihood = scores.log_likelihoods(ratio[picked], counts[picked], sub_starts)
     best[look] = scores.best(likelihood)
-    can = (z > norm.isf(ALPHA / tests)) & orphans.consistent(found, cross)
+    can = (z > norm.isf(ALPHA / tests)) & orphans.consistent(found, cross, orphans.CLAIMED_SHARE)
     mixed[look] = np.where(can[look], scores.mixture(likelihood), -np.inf)
     return Fit(mixed, best)
 
@@ -84,7 +84,14 @@ def returned_fit(lane: Lane, target: int) -> Fit:
     likelihood = scores.returned_log_likelihoods(distance, counts, starts, lane.n_bits)
     if lane.bias.any():  # that was over the uniform floor; the lane's own is another
         likelihood += np.add.reduceat(counts * np.log(lane.inverse_floor_at(lane.bias) / 2.0**lane.n_bits), starts)[:, None]
-    return Fit(scores.mixture(likelihood), scores.best(likelihood))
+    can = orphans.is_mode(*at_mode(distance, counts, starts))
+    return Fit(np.where(can, scores.mixture(likelihood), -np.inf), scores.best(likelihood))
+
+
+def at_mode(distance: IntArray, counts: IntArray, starts: IntArray) -> tuple[FloatArray, FloatArray]:
+    """(runs,) shots at distance 0, and at the commonest outcome."""
+    at_target = np.add.reduceat(np.where(distance == 0, counts, 0), starts)
+    return at_target.astype(np.float64), np.maximum.reduceat(counts, starts).astype(np.float64)
 
 
 def entries(starts: IntArray, size: int, runs: IntArray) -> tuple[IntArray, IntArray]:

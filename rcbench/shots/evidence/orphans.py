@@ -19,6 +19,8 @@ from rcbench.shots.evidence.scores import LEAST_EXCESS, Collisions, Crossed
 
 LEAST_SIGMAS = 3.0
 SHARE = 0.5  # a circuit that explains at least half of the structure is not doubted for the rest of it
+CLAIMED_SHARE = 0.75  # but what is said instead must explain more: among many wrong answers one may explain half
+MODE_SIGMAS = 5.0
 ONE_SIDED = 1.645
 
 
@@ -41,10 +43,19 @@ def explained_excess(own: Crossed) -> tuple[FloatArray, FloatArray]:
     return explained, np.where(usable, 2 * np.abs(own.mean) * own.error / v, 0.0)
 
 
-def consistent(found: Collisions, own: Crossed) -> BoolArray:
-    """(runs,) whether the circuit can be the source: it explains half of the structure that is surely there."""
+def consistent(found: Collisions, own: Crossed, share: float = SHARE) -> BoolArray:
+    """(runs,) whether the circuit can be the source: it explains a share of the structure that is surely there."""
     explained, error = explained_excess(own)
-    return np.asarray(explained + error >= SHARE * (found.excess - ONE_SIDED * found.error))
+    return np.asarray(explained + error >= share * (found.excess - ONE_SIDED * found.error))
+
+
+def is_mode(at_target: FloatArray, most: FloatArray) -> BoolArray:
+    """(runs,) whether a string that should return is the commonest outcome, or may be.
+
+    Args:
+        at_target, most: (runs,) shots that gave it, and that gave the commonest outcome.
+    """
+    return np.asarray(most - at_target <= MODE_SIGMAS * np.sqrt(most + at_target))
 
 
 def is_orphan(found: Collisions, own: Crossed, limit: float) -> BoolArray:

@@ -12,6 +12,7 @@ from rcbench.arrays import BoolArray, FloatArray
 from rcbench.shots.evidence import orphans, scores
 from rcbench.shots.evidence.cases import Case, Ideals, Lane
 from rcbench.shots.evidence.finding import ALPHA
+from rcbench.shots.evidence.identity import at_mode
 from rcbench.shots.evidence.scores import Collisions, Crossed
 
 
@@ -46,12 +47,12 @@ def own_evidence(lane: Lane, ideals: Ideals, runs_in_all: int) -> Own:
     """Each run of a lane against its own circuit; runs_in_all: of the campaign, for the limits."""
     from scipy.stats import norm
 
-    known, mixed, best, cross = _returned(lane) if lane.returns else _sampled(lane, ideals)
+    known, mixed, best, cross, can = _returned(lane) if lane.returns else _sampled(lane, ideals)
     collided = lane.collisions()
     limit = norm.isf(ALPHA / runs_in_all)
     unexplained = orphans.unexplained(collided, cross)
     structure = orphans.structure(collided)
-    confirmed = known & (mixed > math.log(runs_in_all / ALPHA))
+    confirmed = known & can & (mixed > math.log(runs_in_all / ALPHA))
     if not lane.returns:
         confirmed &= orphans.consistent(collided, cross)
         orphan = known & orphans.is_orphan(collided, cross, limit)
@@ -60,7 +61,7 @@ def own_evidence(lane: Lane, ideals: Ideals, runs_in_all: int) -> Own:
     return Own(known, mixed, best, cross, collided, structure, unexplained, confirmed & ~orphan, orphan)
 
 
-def _sampled(lane: Lane, ideals: Ideals) -> tuple[BoolArray, FloatArray, FloatArray, Crossed]:
+def _sampled(lane: Lane, ideals: Ideals) -> tuple[BoolArray, FloatArray, FloatArray, Crossed, BoolArray]:
     inverse = lane.inverse_floor()
     runs = len(lane.cases)
     known = np.zeros(runs, dtype=np.bool_)
@@ -79,17 +80,18 @@ def _sampled(lane: Lane, ideals: Ideals) -> tuple[BoolArray, FloatArray, FloatAr
         if v > scores.LEAST_EXCESS:
             likelihood = scores.log_likelihoods(ratio, case.counts, zero)
             mixed[place], best[place] = scores.mixture(likelihood)[0], scores.best(likelihood)[0]
-    return known, mixed, best, Crossed(mean, error, excess)
+    return known, mixed, best, Crossed(mean, error, excess), known
 
 
-def _returned(lane: Lane) -> tuple[BoolArray, FloatArray, FloatArray, Crossed]:
+def _returned(lane: Lane) -> tuple[BoolArray, FloatArray, FloatArray, Crossed, BoolArray]:
     runs, starts, counts = len(lane.cases), lane.starts, lane.counts
     lengths = np.diff(np.append(starts, len(counts)))
     targets = np.repeat(np.array([case.target for case in lane.cases], dtype=np.int64), lengths)
     distance = np.bitwise_count(lane.index ^ targets).astype(np.int64)
     likelihood = scores.returned_log_likelihoods(distance, counts, starts, lane.n_bits)
     nothing = Crossed(np.zeros(runs), np.ones(runs), np.zeros(runs))
-    return np.ones(runs, dtype=np.bool_), scores.mixture(likelihood), scores.best(likelihood), nothing
+    can = orphans.is_mode(*at_mode(distance, counts, starts))
+    return np.ones(runs, dtype=np.bool_), scores.mixture(likelihood), scores.best(likelihood), nothing, can
 
 
 def ideal_ones(cases: Sequence[Case], ideals: Ideals) -> FloatArray:

@@ -10,7 +10,7 @@ import numpy as np
 
 from rcbench.arrays import FloatArray, IntArray
 from rcbench.randomness import Draw
-from rcbench.shots.evidence import scores
+from rcbench.shots.evidence import orphans, scores
 from rcbench.shots.evidence.cases import Case
 from rcbench.shots.evidence.orders import Order
 
@@ -41,6 +41,9 @@ class Pool(Protocol):
 
     def fidelity(self, order: Order) -> float:
         """How much of the circuits' signal is there if bits come in this order; for comparing orders."""
+
+    def explains(self, order: Order) -> bool:
+        """Whether the circuits explain what structure is surely there if bits come in this order."""
 
 
 class Climb(Protocol):
@@ -121,6 +124,19 @@ class SampledPool:
         v = np.square(self.flat.reshape(-1, size), dtype=np.float64).sum(axis=1) * size - 1
         return mean / max(float(shots @ v), 1e-12)
 
+    def explains(self, order: Order) -> bool:
+        """As Pool: the coincidences of all runs together."""
+        size = 2**self.n_bits
+        v = np.square(self.flat.reshape(-1, size), dtype=np.float64).sum(axis=1) * size - 1
+        cross = scores.crossed(self._ratio(order.mended(self.index)), self.counts, self.starts, v)
+        found = scores.collisions(self.at, self.counts, self.starts, float(size))
+        explained, _ = orphans.explained_excess(cross)
+        # weighed by precision, or one run of few shots would decide
+        weight = 1 / np.square(found.error)
+        error = float(weight.sum()) ** -0.5
+        there = float(weight @ found.excess / weight.sum()) - orphans.ONE_SIDED * error
+        return float(weight @ explained / weight.sum()) >= orphans.CLAIMED_SHARE * there
+
     def _ratio(self, index: IntArray) -> FloatArray:
         return self.flat[self.offset + index] * self.at
 
@@ -193,12 +209,22 @@ class ReturnPool:
 
     def by_run(self, order: Order) -> FloatArray:
         """As Pool."""
+        distance = self._distance(order)
+        return scores.returned_log_likelihoods(distance, self.counts, self.starts, self.n_bits)
+
+    def explains(self, order: Order) -> bool:
+        """As Pool: the targets are the commonest outcomes."""
+        at_target = np.add.reduceat(np.where(self._distance(order) == 0, self.counts, 0), self.starts)
+        most = np.maximum.reduceat(self.counts, self.starts)
+        sure = np.maximum(most - orphans.MODE_SIGMAS * np.sqrt(most), 0)
+        return float(at_target.sum()) >= orphans.CLAIMED_SHARE * float(sure.sum())
+
+    def _distance(self, order: Order) -> IntArray:
         mended = self.bits[:, list(order.source)]
         if order.flipped:
             mended = mended.copy()
             mended[:, list(order.flipped)] ^= 1
-        distance = (mended != self._target_of_each()).sum(axis=1)
-        return scores.returned_log_likelihoods(distance, self.counts, self.starts, self.n_bits)
+        return np.asarray((mended != self._target_of_each()).sum(axis=1))
 
     def depth_groups(self) -> IntArray:
         """As Pool."""

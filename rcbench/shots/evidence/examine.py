@@ -1,0 +1,296 @@
+"""The examination: every question in turn, each with what the ones before have settled.
+
+Stuck bits come first, since they are left out of what follows; then the order of bits, since nothing matches in a wrong
+one; then which circuit a run is of; then what is left without an explanation. Repeated blocks and drift ask for nothing of
+this. See `find_evidence`.
+"""
+
+from __future__ import annotations
+
+import math
+from collections import defaultdict
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from rcbench.arrays import BoolArray, FloatArray
+from rcbench.shots.evidence import exchange, repeats, wording
+from rcbench.shots.evidence.bit_order import FoundOrder, find_order, gains_by_run
+from rcbench.shots.evidence.cases import (
+    FEWEST_BITS,
+    MAX_QUBITS,
+    Case,
+    Ideals,
+    Lane,
+    Probabilities,
+    collect,
+    lane_of,
+    make_lanes,
+)
+from rcbench.shots.evidence.finding import ALPHA, Finding
+from rcbench.shots.evidence.matching import match_circuits
+from rcbench.shots.evidence.orders import Order
+from rcbench.shots.evidence.own import Own, ideal_ones, own_evidence
+from rcbench.shots.evidence.pools import POOL_SIZE, Pool, return_pool, sampled_pool
+from rcbench.shots.evidence.seed import other_kit
+from rcbench.shots.evidence.series import Series
+from rcbench.shots.evidence.stuck import StuckBit, inverted_bits, stuck_bits
+from rcbench.shots.shots import RunKey, Shots
+
+if TYPE_CHECKING:
+    from rcbench.kit import Kit
+
+Progress = Callable[[int, int, str], None]
+MOST_ORDERS = 3  # different wrong orders in one lane
+CLEAR = math.log(1 / ALPHA)
+POOLED_STRUCTURE = 3.0  # sigmas of structure, all doubtful runs of a lane together, that make a search worth while
+
+
+@dataclass(slots=True, eq=False)
+class LaneStudy:
+    """A lane and what has become known of it.
+
+    Args:
+        lane: its runs, bits in order as far as an order was found. own: against their own circuits.
+        orders: the order found of each run that comes in another one. explained: runs that a circuit explains.
+    """
+
+    lane: Lane
+    own: Own
+    orders: dict[RunKey, Order] = field(default_factory=dict)
+    explained: set[RunKey] = field(default_factory=set)
+
+    @property
+    def doubtful(self) -> list[int]:
+        """Places of runs that nothing explains yet."""
+        return [
+            place
+            for place in np.flatnonzero(self.own.doubtful).tolist()
+            if self.lane.cases[place].key not in self.explained
+        ]
+
+
+def find_evidence(
+    kit: Kit,
+    shots: Shots,
+    ideal: Probabilities,
+    *,
+    series: Series | None = None,
+    max_qubits: int = MAX_QUBITS,
+    progress: Progress | None = None,
+) -> list[Finding]:
+    """What the shots themselves say against the kit, worst first.
+
+    Args:
+        kit: the kit that was asked for. shots: what came back.
+        ideal: circuit_id to (2**bits,) ideal probabilities over the measured bits, or None where they are not known.
+        series: the shots in order and the files they came from, where they were read so; without it nothing is said about
+            the order of shots, and files are named only where there is one.
+        max_qubits: larger circuits are left out, and it is said so; those that return a string need no simulation.
+        progress: called with (done, in all, what).
+
+    Cost: the ideal circuits are simulated once (again where they do not fit cases.CACHE_BYTES); all else grows with the
+    number of shots, and, for runs that their own circuit does not explain, with their number times that of the circuits.
+    """
+    step = progress or (lambda done, total, what: None)
+    series = series or Series()
+    cases, notes = collect(kit.rows, shots, max_qubits, series.files)
+    ideals = Ideals(ideal, max_qubits)
+    findings = [wording.not_examined(note) for note in notes]
+    studies = []
+    lanes = make_lanes(cases)
+    for number, members in enumerate(lanes):
+        step(number, len(lanes), members[0].row.experiment)
+        lane, stuck = _without_stuck_bits(members, ideals, len(lanes))
+        findings += [wording.stuck(lane, members, bit) for bit in stuck]
+        if lane is None or lane.n_bits < FEWEST_BITS:
+            continue
+        study = LaneStudy(lane, own_evidence(lane, ideals, len(cases)))
+        findings += _orders(study, ideals, len(cases))
+        studies.append(study)
+    settled = match_circuits(kit, shots, studies, ideals, len(cases), step)
+    findings += settled
+    findings += exchange.with_reference(cases, ideals)
+    findings += _left_over(studies, len(cases))
+    findings += repeats.same_shots(cases, series)
+    findings += repeats.drifting(cases, studies, ideals, series, shots)
+    return sorted(wording.joined(findings), key=lambda f: (not f.told, f.kind == "not-examined", f.kind == "drift"))
+
+
+def _without_stuck_bits(
+    members: Sequence[Case], ideals: Ideals, lanes: int
+) -> tuple[Lane | None, list[StuckBit]]:
+    """A lane without the bits that keep one value in it, and these."""
+    ones = np.array([case.ones() for case in members])
+    shots = np.array([case.shots for case in members], dtype=np.float64)
+    stuck = stuck_bits(ones, shots, ideal_ones(members, ideals), lanes)
+    dropped = tuple(bit.bit for bit in stuck)
+    if len(dropped) == members[0].n_bits:
+        return None, stuck
+    return lane_of(members, ideals, dropped), stuck
+
+
+def make_pool(lane: Lane, places: Sequence[int], ideals: Ideals) -> Pool | None:
+    """A pool of some runs of a lane, as many as fit; None where nothing can be said of any."""
+    cases = [lane.cases[place] for place in places]
+    if lane.returns:
+        return return_pool(cases)
+    held, probabilities = [], []
+    for case in cases[: max(1, POOL_SIZE >> lane.n_bits)]:
+        p = ideals.get(case.row, lane.dropped)
+        if p is not None:
+            held.append(case)
+            probabilities.append(p)
+    return sampled_pool(held, probabilities, lane.inverse_floor(), lane.bias) if held else None
+
+
+def _orders(study: LaneStudy, ideals: Ideals, runs_in_all: int) -> list[Finding]:
+    """The wrong orders of a lane: found, applied to what is examined further, and told."""
+    findings = []
+    for _ in range(MOST_ORDERS):
+        doubtful = [p for p in study.doubtful if study.lane.cases[p].key not in study.orders]
+        if not doubtful:
+            break
+        own = study.own
+        # those with most structure first: not all may fit into a pool
+        doubtful.sort(key=lambda place: -float(own.structure[place]))
+        pool = make_pool(study.lane, doubtful, ideals)
+        if pool is None:
+            break
+        strength = float(own.structure[doubtful].sum()) / math.sqrt(len(doubtful))
+        labels = _labels(study.lane)
+        thorough = study.lane.returns or strength > POOLED_STRUCTURE or bool(own.orphan[doubtful].any())
+        answers = [inverted_bits(pool), find_order(pool, labels, thorough=thorough)]
+        told = [answer for answer in answers if answer is not None]
+        if not told:
+            break
+        found = max(told, key=lambda answer: answer.gain - answer.limit)
+        takes = _who_takes(study, found.order, ideals)
+        if not takes:
+            break
+        before = [study.lane.cases[place] for place in takes]
+        for place in takes:
+            study.lane.cases[place] = study.lane.cases[place].mended(found.order)
+        whole = _over_all_bits(found.order, study.lane.dropped)
+        study.orders |= {case.key: whole for case in before}
+        study.own = own_evidence(study.lane, ideals, runs_in_all)
+        findings.append(_told(study, found, before, whole))
+    return findings
+
+
+def _told(study: LaneStudy, found: FoundOrder, cases: Sequence[Case], whole: Order) -> Finding:
+    in_all = len(cases) == len(study.lane.cases)
+    return wording.wrong_order(found, cases, whole, in_all)
+
+
+def _labels(lane: Lane) -> list[str]:
+    row = lane.cases[0].row
+    if not row.physical_qubits:
+        return []
+    labels = [row.physical_qubits[qubit] for qubit in row.measured_qubits]
+    return [label for bit, label in enumerate(labels) if bit not in lane.dropped]
+
+
+def _over_all_bits(order: Order, dropped: Sequence[int]) -> Order:
+    """An order of the bits that were kept as one of all bits."""
+    if not dropped:
+        return order
+    kept = [bit for bit in range(len(order.source) + len(dropped)) if bit not in dropped]
+    source = list(range(len(kept) + len(dropped)))
+    for bit, place in enumerate(order.source):
+        source[kept[bit]] = kept[place]
+    return Order(order.name, tuple(source), tuple(kept[bit] for bit in order.flipped))
+
+
+def _who_takes(study: LaneStudy, order: Order, ideals: Ideals) -> list[int]:
+    """Places of the runs that come in an order: those that prefer it, and the undecided where nearly all others do."""
+    lane, size = study.lane, max(1, POOL_SIZE >> study.lane.n_bits)
+    open_places = [p for p, case in enumerate(lane.cases) if case.key not in study.orders and study.own.known[p]]
+    gain = np.full(len(lane.cases), -np.inf)
+    loss = np.full(len(lane.cases), -np.inf)
+    step = len(open_places) if lane.returns else size
+    for start in range(0, len(open_places), max(step, 1)):
+        part = open_places[start : start + step]
+        pool = make_pool(lane, part, ideals)
+        if pool is not None:
+            gain[part], loss[part] = gains_by_run(pool, order)
+    takes, keeps = gain > CLEAR, loss > CLEAR
+    if takes.sum() >= 9 * keeps.sum():
+        takes = takes | ((gain > -np.inf) & ~keeps)
+    return np.flatnonzero(takes).tolist()
+
+
+def _left_over(studies: Sequence[LaneStudy], runs_in_all: int) -> list[Finding]:
+    """Another kit, orphans, and what cannot be told."""
+    findings: list[Finding] = []
+    alone = []
+    for study in studies:
+        found = None
+        places = np.flatnonzero(study.own.known)
+        if len(places):
+            explained = _explained(study)
+            size = 2.0**study.lane.n_bits - 1
+            v = np.where(study.own.cross.excess > 0.01, study.own.cross.excess, size)
+            square = study.own.collided.excess / v
+            found = other_kit(
+                study.own.structure[places], study.own.unexplained[places], square[places], explained[places]
+            )
+        if found is not None:
+            findings.append(wording.of_another_kit(study.lane, found, runs_in_all))
+            continue
+        alone.append(study)
+    for study in alone:
+        orphans = [p for p in study.doubtful if study.own.orphan[p]]
+        if orphans:
+            findings.append(wording.orphans(study.lane, study.own, orphans, runs_in_all))
+        findings += _cannot_tell(study, runs_in_all)
+    return findings
+
+
+def _explained(study: LaneStudy) -> BoolArray:
+    moved = [case.key in study.explained for case in study.lane.cases]
+    return study.own.confirmed | np.array(moved, dtype=np.bool_)
+
+
+def _cannot_tell(study: LaneStudy, runs_in_all: int) -> list[Finding]:
+    """By depth, the runs of which nothing can be said, and what would tell."""
+    by_depth: dict[int, list[int]] = defaultdict(list)
+    for place in study.doubtful:
+        if not study.own.orphan[place]:
+            by_depth[study.lane.cases[place].row.depth].append(place)
+    of_depth = np.array([case.row.depth for case in study.lane.cases])
+    out = []
+    for depth, places in sorted(by_depth.items()):
+        alike = np.flatnonzero((of_depth == depth) & study.own.known)
+        out.append(wording.cannot_tell(study.lane, study.own, places, alike, shots_that_tell(study, alike, runs_in_all)))
+    return out
+
+
+def shots_that_tell(study: LaneStudy, places: Sequence[int] | FloatArray, runs_in_all: int) -> tuple[int | None, bool]:
+    """Shots a circuit with which nine of ten such runs would be told; whether that is only a bound from below.
+
+    None where no number would: the ideal outcome is the floor. For sampled circuits M = v ((z_a + z_b) / (F v))^2, with F
+    the mean over runs; where it is not clear of 0, its upper limit, and the answer is a bound.
+    """
+    from scipy.stats import norm
+
+    own, lane = study.own, study.lane
+    chosen = np.asarray(places, dtype=np.int64)
+    if lane.returns:
+        nats = float(own.best[chosen].sum()) / float(lane.shots[chosen].sum())
+        needed = 1.5 * (math.log(runs_in_all / ALPHA) + 4)
+        return (math.ceil(needed / nats), False) if nats > 0 else (int(10 * lane.shots[chosen].max()), True)
+    v = own.cross.excess[chosen]
+    usable = v > 0.01
+    if not usable.any():
+        return None, False
+    fidelity = own.cross.fidelity[chosen][usable]
+    weight = np.square(v[usable] / own.cross.error[chosen][usable])
+    mean, error = float(fidelity @ weight / weight.sum()), float(weight.sum()) ** -0.5
+    bound = mean < 2 * error
+    f = mean + 1.645 * error if bound else mean
+    v0 = float(v[usable].mean())
+    z = float(norm.isf(ALPHA / runs_in_all)) + 1.28
+    return math.ceil(v0 * (z / (max(min(f, 1.0), 1e-4) * v0)) ** 2), bound
