@@ -11,7 +11,8 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
-from rcbench.circuits.families import ADOPTED, CONTROLS, FAMILIES, MODELS, family_of
+from rcbench.circuits.families import ADOPTED as ADOPTED
+from rcbench.circuits.families import CONTROLS, FAMILIES, MODELS, family_of
 from rcbench.circuits.families.family import Family, Value
 from rcbench.device import Device
 from rcbench.device_file import device_table, read_device
@@ -282,7 +283,7 @@ def _read_experiment(section: Section, device: Device, before: list[Experiment],
         "control_for": section.text("control_for", ""),
         "same_circuits_as": source_name,
         "sites": _read_sites(section),
-        "regions": _read_regions(section),
+        "regions": _read_regions(section, len(qubits)),
     }
     stated = _read_margins(section)
     section.close()
@@ -370,9 +371,8 @@ def _read_circuits(section: Section, like: Circuits | None, device: Device) -> C
     row = family_of(facts["two_qubit"])
     same = like is not None and like.two_qubit == facts["two_qubit"]
     plain = "none" if facts["two_qubit"] in ("haar", "clifford") else row.plain
-    facts["one_qubit"] = section.choice(
-        "one_qubit", row.one_qubit, like.one_qubit if like is not None and (same or not row.parameters({})) else plain
-    )
+    start = like.one_qubit if like is not None and like.one_qubit in row.one_qubit else plain
+    facts["one_qubit"] = section.choice("one_qubit", row.one_qubit, start)
     facts["model"] = _read_model(section, row, like.parameters if like is not None and same else {})
     if facts["model"] is None:
         return None
@@ -414,11 +414,14 @@ def _read_sites(section: Section) -> dict[str, tuple[int, ...]]:
     return {} if table is None else {name: table.wholes(name, ()) for name in table.data}
 
 
-def _read_regions(section: Section) -> tuple[tuple[int, ...], ...]:
+def _read_regions(section: Section, n_qubits: int) -> tuple[tuple[int, ...], ...]:
+    """Regions as labels, or by name: quarters, halves, cuts."""
+    from rcbench.signatures.tmi import NAMED
+
     out: list[tuple[int, ...]] = []
     for label in section.texts("regions", ()):
         try:
-            out += read_regions(label)
+            out += NAMED[label](n_qubits) if label in NAMED else read_regions(label)
         except InputError as error:
             section.error("regions", label, error.allowed)
     return tuple(out)

@@ -20,6 +20,7 @@ from rcbench.campaign import Campaign, Experiment
 from rcbench.circuits.circuit import Circuit
 from rcbench.device import Device
 from rcbench.engine.distribution import Distribution
+from rcbench.errors import InputError
 from rcbench.estimators import estimator
 from rcbench.estimators.sample import Group, Measured, Run
 from rcbench.files import output_folder, read_csv, sha256_bytes, write_csv, write_parquet
@@ -31,6 +32,8 @@ if TYPE_CHECKING:
 
     from rcbench.kit import Kit
     from rcbench.protocol import Protocol
+    from rcbench.signatures.ensemble import Gathering
+    from rcbench.signatures.found import Found
 
 Progress = Callable[[int, int, str], None]
 # The scatter of a signature between single error trajectories, as a share of its range: sets how many are drawn
@@ -171,7 +174,24 @@ class _Writer:
         self._deltas[value.signature, value.region, depth, model].append(deltas)
         self._row(depth, instance, model, value, u_model, method)
 
-    def _row(self, depth: int, instance: int | None, model: str, value: Measured, u: float, method: str) -> None:
+    def ensemble(self, found: Found, model: str) -> None:
+        """One value of all instances together, at a depth or of all depths."""
+        value = Measured(
+            signature=found.key, region=found.region, value=found.value, std_error=found.std_error, shots=0
+        )
+        self._row(found.depth, None, model, value, 0.0, found.method)
+
+    def scrambled(self) -> None:
+        """Beside every quantity its value for Haar-random states or unitaries of the same size, where it is known."""
+        from rcbench.signatures.scrambled import METHOD, haar_value
+
+        for key, region, depth in dict.fromkeys((row["signature"], row["region"], row["depth"]) for row in self.rows):
+            value = haar_value(key, region, self.experiment.n_qubits)
+            if value is not None:
+                measured = Measured(signature=key, region=region, value=value, std_error=0.0, shots=0)
+                self._row(depth, None, "haar", measured, 0.0, METHOD)
+
+    def _row(self, depth: int | None, instance: int | None, model: str, value: Measured, u: float, method: str) -> None:
         row = signature(value.signature)
         self.rows.append(
             {
@@ -266,31 +286,54 @@ def _shift(sample: Any, source: str) -> Any:
     return sample.shifted(source) if source in sample.tilts else sample
 
 
-def predict_states(writer: _Writer, device: Device, seed: int, instance: int, options: Options) -> None:
-    """The ideal values of an experiment without a protocol: signatures of the states themselves."""
+def predict_states(
+    writer: _Writer, device: Device, seed: int, instance: int, options: Options, gathering: Gathering
+) -> None:
+    """The ideal values of an experiment without a protocol, of one instance; the gathering takes up what it needs."""
     from rcbench.circuits.families import draw_circuits
-    from rcbench.engine.tree import walk
-    from rcbench.signatures import of_state
+    from rcbench.signatures.instance import of_instance
 
-    experiment = writer.experiment
-    circuits = draw_circuits(experiment, device, seed, instance)
-    depths = list(circuits)
-    regions = experiment.regions or (tuple(range(experiment.n_qubits // 2)),)
-    states = walk(
-        list(circuits.values()),
-        dtype=options.dtype,
-        memory_limit=options.memory_limit,
-        threads=options.threads,
-    )
-    found: list[tuple[int, Measured]] = []
-    for place, state in states:
-        for key in experiment.signatures:
-            for region, value in of_state(key, state, regions):
-                found.append(
-                    (depths[place], Measured(signature=key, region=region, value=value, std_error=0.0, shots=0))
-                )
-    for depth, value in sorted(found, key=lambda item: item[0]):
-        writer.add(depth, instance, "ideal", value, {}, f"state vector, {options.dtype}")
+    circuits = draw_circuits(writer.experiment, device, seed, instance)
+    for found in of_instance(gathering.question, circuits, instance=instance, gathering=gathering):
+        assert found.depth is not None
+        value = Measured(
+            signature=found.key, region=found.region, value=found.value, std_error=found.std_error, shots=0
+        )
+        writer.add(found.depth, instance, "ideal", value, {}, found.method)
+
+
+def _predict_without_protocol(
+    campaign: Campaign, experiment: Experiment, options: Options, progress: Callable[[int], None]
+) -> _Writer:
+    """States, operators and ensembles of the ideal circuits, and the Haar value beside each."""
+    from rcbench.signatures import check_keys
+    from rcbench.signatures.ensemble import Gathering, of_ensemble
+    from rcbench.signatures.found import Question
+
+    writer = _Writer(experiment, "")
+    try:
+        check_keys(experiment.signatures)
+        question = Question(
+            keys=experiment.signatures,
+            n_qubits=experiment.n_qubits,
+            regions=experiment.regions,
+            sites=experiment.sites,
+            seed=campaign.seed,
+            dtype=options.dtype,
+            memory_limit=options.memory_limit,
+            threads=options.threads,
+        )
+        gathering = Gathering(question, experiment.depths, experiment.instances)
+        for instance in range(experiment.instances):
+            predict_states(writer, campaign.device, campaign.seed, instance, options, gathering)
+            progress(instance + 1)
+        writer.averages()
+        for found in of_ensemble(gathering):
+            writer.ensemble(found, "ideal")
+    except InputError as error:
+        raise error.at(f"experiment {experiment.name}: ") from None
+    writer.scrambled()
+    return writer
 
 
 def predict(
@@ -369,25 +412,25 @@ def _predict_experiment(
     from rcbench.protocol import load_protocol
 
     if experiment.protocol is None:
-        writer = _Writer(experiment, "")
-        for instance in range(experiment.instances):
-            predict_states(writer, campaign.device, campaign.seed, instance, options)
-            if progress:
-                progress(done + instance + 1, total, experiment.name)
-    else:
-        protocol = kit.protocol(experiment) if kit is not None else load_protocol(experiment.protocol)
-        writer = _Writer(experiment, protocol.name)
-        stated = campaign.device.errors is not None
-        noise = NoiseModel.from_device(campaign.device, experiment.qubits) if stated else None
-        batches: Iterator[list[PlannedRun]] | list[list[PlannedRun]] = (
-            list(runs_of_kit(kit, experiment.name).values())
-            if kit is not None
-            else runs_of_campaign(campaign, experiment, protocol)
-        )
-        for place, runs in enumerate(batches):
-            predict_instance(writer, protocol, runs, noise, options, campaign.seed)
-            if progress:
-                progress(done + place + 1, total, experiment.name)
+        return _predict_without_protocol(
+            campaign,
+            experiment,
+            options,
+            lambda made: progress(done + made, total, experiment.name) if progress else None,
+        ).rows
+    protocol = kit.protocol(experiment) if kit is not None else load_protocol(experiment.protocol)
+    writer = _Writer(experiment, protocol.name)
+    stated = campaign.device.errors is not None
+    noise = NoiseModel.from_device(campaign.device, experiment.qubits) if stated else None
+    batches: Iterator[list[PlannedRun]] | list[list[PlannedRun]] = (
+        list(runs_of_kit(kit, experiment.name).values())
+        if kit is not None
+        else runs_of_campaign(campaign, experiment, protocol)
+    )
+    for place, runs in enumerate(batches):
+        predict_instance(writer, protocol, runs, noise, options, campaign.seed)
+        if progress:
+            progress(done + place + 1, total, experiment.name)
     writer.averages()
     return writer.rows
 

@@ -14,6 +14,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from rcbench.campaign import Experiment
+from rcbench.circuits.families import CONTROLS
 from rcbench.comparison.cells import read_cells, returned_instances
 from rcbench.comparison.depths import ExperimentRows
 from rcbench.comparison.row import Terms
@@ -105,7 +106,7 @@ def add_controls(experiments: Sequence[Experiment], rows: list[dict[str, Any]]) 
         if row["measured"] is not None
     }
     controls: dict[str, list[str]] = {}
-    for experiment in sorted(experiments, key=lambda e: e.circuits.family == "brickwork"):
+    for experiment in sorted(experiments, key=lambda e: e.circuits.family not in CONTROLS):
         controls.setdefault(experiment.control_for, []).append(experiment.name)
     for row in rows:
         place = (row["signature"], row["region"], row["depth"])

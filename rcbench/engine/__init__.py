@@ -1,14 +1,21 @@
 """Evolution of states through the rows of circuits, and the distributions that follow.
 
+For callers:
+
     state.py         one circuit to its final state
     tree.py          many circuits at once; what they share from the start is evolved once
     predict.py       circuits to distributions over measured bits: ideal, and under the stated error model
     distribution.py  what a prediction is
     noise.py         the stated rates as Pauli errors, idle errors and readout flips
-    trajectories.py  sampled error patterns and the mixture they make
-    program.py       rows fused into few operators, the form that the kernels take
-    blocks.py        programs cut into sweeps of cache-sized blocks
-    kernels.py       compiled loops over vectors of amplitudes (lanes.py); reference.py is the slow and obvious twin
+    forecast.py      what a prediction will cost; work.py: what it did cost
+
+Inside, from rows to numbers:
+
+    program.py       rows fused into few operators; turns.py: quarter turns split so that additions do
+    operators.py     the cheapest exact kernel of each operator
+    blocks.py        operators cut into sweeps over cache-sized blocks
+    kernels.py       compiled loops over registers of amplitudes (lanes.py); reference.py is the slow and obvious twin
+    trajectories.py  sampled error patterns; mixture.py: their runs added up; readout.py: measured bits and flips
     memory.py, threads.py, compiled.py   what the machine gives
 
 Call `tree.walk` for states of several circuits, `state.final_state` for one, `predict.distributions` for probabilities.

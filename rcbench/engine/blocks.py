@@ -40,8 +40,13 @@ def own_block(bits: int, dtype: np.dtype[np.floating]) -> FloatArray:
     kept: dict[tuple[int, str], FloatArray] = _local.__dict__.setdefault("blocks", {})
     key = (bits, dtype.name)
     if key not in kept:
-        kept[key] = aligned(2 << bits, dtype)
+        kept[key] = aligned((2 << bits) + scratch(dtype), dtype)
     return kept[key]
+
+
+def scratch(dtype: np.dtype[np.floating]) -> int:
+    """Floats that the kernels need beyond the end of a block."""
+    return 8 * LANES[dtype.name]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -75,18 +80,62 @@ def plan(operators: Operators, stretches: IntArray, block_bits: int | None = Non
         count = len(stretches) - 1
         return Plan(operators, np.arange(len(operators)), stretches, np.full(count, 2**n - 1), np.arange(count + 1))
     masks = (np.int64(1) << operators.high) | (np.int64(1) << operators.low)
-    parts = [
-        _sweeps(masks[first:last], COSTS[operators.kind[first:last]], n, block_bits, run_bits)
-        for first, last in pairwise(stretches.tolist())
-    ]
-    order = np.concatenate([part[0] + first for part, first in zip(parts, stretches, strict=False)])
-    start = np.concatenate(
-        [*(part[1][:-1] + first for part, first in zip(parts, stretches, strict=False)), stretches[-1:]]
+    order, start, active, stretch = np.arange(len(masks)), [0], [], [0]
+    room = (
+        np.empty(len(masks), dtype=np.int64),
+        np.empty(len(masks) + 1, dtype=np.int64),
+        np.empty(len(masks), dtype=np.int64),
     )
-    active = np.concatenate([part[2] for part in parts])
-    high, low = _inside(operators.high[order], operators.low[order], start, active)
-    inside = Operators(n, operators.kind[order], high, low, operators.numbers[order])
-    return Plan(inside, order, start, active, np.cumsum([0, *(len(part[2]) for part in parts)]))
+    for first, last in pairwise(stretches.tolist()):
+        part = order[first:last]
+        count = _sweeps(masks[first:last], COSTS[operators.kind[first:last]], n, block_bits, run_bits, part, *room)
+        part += first
+        start += (first + room[1][1 : count + 1]).tolist()
+        active += room[2][:count].tolist()
+        stretch.append(len(active))
+    inside = _inside(operators, order, np.array(start), np.array(active, dtype=np.int64))
+    return Plan(inside, order, np.array(start), np.array(active, dtype=np.int64), np.array(stretch))
+
+
+def _inside(operators: Operators, order: IntArray, start: IntArray, active: IntArray) -> Operators:
+    """The operators in order, their positions counted among the active ones of their sweep."""
+    is_active = active[:, None] >> np.arange(operators.n_qubits) & 1
+    rank = np.cumsum(is_active, axis=1) - is_active
+    sweep = np.repeat(np.arange(len(active)), np.diff(start))
+    high, low = rank[sweep, operators.high[order]], rank[sweep, operators.low[order]]
+    return Operators(operators.n_qubits, operators.kind[order], high, low, operators.numbers[order])
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Layout:
+    """Where the blocks of a sweep lie in a state.
+
+    Args:
+        bits: positions inside a block. run: floats that lie side by side.
+        offsets: (runs,) floats from a block's first amplitude to each run. base: (blocks,) to each first amplitude.
+    """
+
+    bits: int
+    run: int
+    offsets: IntArray
+    base: IntArray
+
+    @classmethod
+    def of(cls, n_qubits: int, active: int) -> Layout:
+        """The layout of a sweep with these active positions."""
+        run_bits = (~active & (active + 1)).bit_length() - 1
+        positions = range(run_bits, n_qubits)
+        outer = [position for position in positions if active >> position & 1]
+        others = [position for position in positions if not active >> position & 1]
+        return cls(active.bit_count(), 2 << run_bits, _spread(outer), _spread(others))
+
+
+def _spread(positions: list[int]) -> IntArray:
+    """(2**k,) twice the numbers whose bits are 0 but at k positions, in rising order."""
+    out = np.zeros(1, dtype=np.int64)
+    for position in positions:
+        out = np.concatenate([out, out + (2 << position)])
+    return out
 
 
 def apply_plan(state: ComplexArray, sweeps: Plan, pool: Pool, begin: int = 0, end: int | None = None) -> None:
@@ -102,16 +151,16 @@ def apply_plan(state: ComplexArray, sweeps: Plan, pool: Pool, begin: int = 0, en
         view[: len(target)] = target
     for sweep in range(begin, len(sweeps.active) if end is None else end):
         active = max(int(sweeps.active[sweep]), LANES[real.name] - 1)
-        blocks = 2 ** (n - active.bit_count())
+        layout = Layout.of(n, active)
+        blocks = len(layout.base)
         portions = min(blocks, TASKS)
 
-        def task(
-            portion: int, sweep: int = sweep, active: int = active, blocks: int = blocks, portions: int = portions
-        ) -> None:
-            first, last = blocks * portion // portions, blocks * (portion + 1) // portions
+        def task(portion: int, sweep: int = sweep, layout: Layout = layout, portions: int = portions) -> None:
+            blocks = len(layout.base)
+            base = layout.base[blocks * portion // portions : blocks * (portion + 1) // portions]
             _sweep(
-                view, n, active, first, last, sweeps.start[sweep], sweeps.start[sweep + 1],
-                operators.kind, operators.high, operators.low, operators.numbers, own_block(active.bit_count(), real),
+                view, layout.bits, layout.run, layout.offsets, base, sweeps.start[sweep], sweeps.start[sweep + 1],
+                operators.kind, operators.high, operators.low, operators.numbers, own_block(layout.bits, real),
             )  # fmt: skip
 
         if portions == 1:
@@ -120,15 +169,6 @@ def apply_plan(state: ComplexArray, sweeps: Plan, pool: Pool, begin: int = 0, en
             pool.run(task, range(portions))
     if view is not target and len(view) > len(target):
         target[:] = view[: len(target)]
-
-
-@part
-def _spread(index, positions):  # type: ignore[no-untyped-def]
-    """The bits of an index put at positions, lowest first."""
-    out = 0
-    for place in range(len(positions)):
-        out |= (index >> place & 1) << positions[place]
-    return out
 
 
 @part
@@ -141,48 +181,19 @@ def _count_bits(mask):  # type: ignore[no-untyped-def]
 
 
 @kernel
-def _sweep(state, n, active, first, last, start, stop, kind, high, low, numbers, block):  # type: ignore[no-untyped-def]
-    run_bits = 0
-    while active >> run_bits & 1:
-        run_bits += 1
-    bits = _count_bits(active)
-    outer = np.empty(bits - run_bits, dtype=np.int64)
-    spectators = np.empty(n - bits, dtype=np.int64)
-    a, s = 0, 0
-    for position in range(run_bits, n):
-        if active >> position & 1:
-            outer[a] = position
-            a += 1
-        else:
-            spectators[s] = position
-            s += 1
-    runs, length, step = 1 << (bits - run_bits), 2 << run_bits, 2 * lanes(block)
-    offsets = np.empty(runs, dtype=np.int64)
-    for run in range(runs):
-        offsets[run] = 2 * _spread(run, outer)
-    for index in range(first, last):
-        base = 2 * _spread(index, spectators)
-        for run in range(runs):
-            source, target = base + offsets[run], run * length
-            for i in range(0, length, step):
+def _sweep(state, bits, run, offsets, base, start, stop, kind, high, low, numbers, block):  # type: ignore[no-untyped-def]
+    step = 2 * lanes(block)
+    for index in range(len(base)):
+        for place in range(len(offsets)):
+            source, target = base[index] + offsets[place], place * run
+            for i in range(0, run, step):
                 store(block, target + i, load_pairs(state, source + i))
         for op in range(start, stop):
             apply_operator(block, bits, kind[op], high[op], low[op], numbers[op])
-        for run in range(runs):
-            source, target = base + offsets[run], run * length
-            for i in range(0, length, step):
+        for place in range(len(offsets)):
+            source, target = base[index] + offsets[place], place * run
+            for i in range(0, run, step):
                 store_pairs(state, source + i, load(block, target + i))
-
-
-@kernel
-def _inside(high, low, start, active):  # type: ignore[no-untyped-def]
-    """Positions counted among the active ones of their sweep."""
-    new_high, new_low = high.copy(), low.copy()
-    for sweep in range(len(active)):
-        for op in range(start[sweep], start[sweep + 1]):
-            new_high[op] = _count_bits(active[sweep] & ((1 << high[op]) - 1))
-            new_low[op] = _count_bits(active[sweep] & ((1 << low[op]) - 1))
-    return new_high, new_low
 
 
 @part
@@ -219,12 +230,15 @@ def _grow(masks, waiting, count, active, block_bits):  # type: ignore[no-untyped
 
 
 @kernel
-def _sweeps(masks, costs, n, block_bits, run_bits):  # type: ignore[no-untyped-def]
-    """Sweep after sweep the active positions that take in the most: windows, and sets grown from operators in reach."""
+def _sweeps(masks, costs, n, block_bits, run_bits, order, waiting, starts, actives):  # type: ignore[no-untyped-def]
+    """Sweep after sweep the active positions that take in the most: windows, and sets grown from operators in reach.
+
+    Fills `order`, `starts` and `actives`, needs `waiting` to work in, and returns the number of sweeps.
+    """
     total = len(masks)
-    waiting = np.arange(total)
-    order = np.empty(total, dtype=np.int64)
-    starts, actives = np.zeros(total + 1, dtype=np.int64), np.zeros(total, dtype=np.int64)
+    for op in range(total):
+        waiting[op] = op
+    starts[0] = 0
     lowest = (1 << run_bits) - 1
     count, taken, sweeps = total, 0, 0
     while count:
@@ -261,4 +275,4 @@ def _sweeps(masks, costs, n, block_bits, run_bits):  # type: ignore[no-untyped-d
         actives[sweeps] = best
         sweeps += 1
         starts[sweeps] = taken
-    return order, starts[: sweeps + 1], actives[:sweeps]
+    return sweeps

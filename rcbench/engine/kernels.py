@@ -1,8 +1,9 @@
 """Compiled loops that apply operators to a block of amplitudes.
 
-A block is a contiguous array of floats, 2**bits amplitudes in chunks (see lanes.py). A qubit is known here by its
-position, the bit of the amplitude's index that it is; `high` and `low` are positions with high > low. The numbers `c`
-of an operator are real and imaginary parts in turn, row by row, the qubit at `high` the more significant.
+A block is a contiguous array of floats: 2**bits amplitudes in chunks (see lanes.py), and four chunks to work in. A
+qubit is known here by its position, the bit of the amplitude's index that it is; `high` and `low` are positions with
+high > low. The numbers `c` of an operator are real and imaginary parts in turn, row by row, the qubit at `high` the
+more significant.
 
 There are three cases by where the positions lie: both count chunks, one is inside a chunk, both are. Positions inside
 a chunk are constants of their kernels, since lane exchanges are instructions with a fixed pattern.
@@ -11,8 +12,6 @@ a chunk are constants of their kernels, since lane exchanges are instructions wi
 from __future__ import annotations
 
 from typing import Any
-
-import numpy as np
 
 from rcbench.engine.compiled import kernel, part
 from rcbench.engine.lanes import choose, choose4, entry, exchange, lanes, load, mix2, mix4, store, turn
@@ -157,7 +156,7 @@ def diagonal(block, bits, high, low, c):  # type: ignore[no-untyped-def]
     """Phases on two qubits; c holds the four of them, qubit at `high` first."""
     w = lanes(block)
     step, far, near = 2 * w, 2 << high, 2 << low
-    factors = np.empty(4 * step, dtype=block.dtype)  # a chunk of factors for each value of the bits that count chunks
+    factors = 2 << bits  # behind the block: a chunk of factors for each value of the bits that count chunks
     for chunk in range(4):
         for lane in range(w):
             place = lane
@@ -166,11 +165,11 @@ def diagonal(block, bits, high, low, c):  # type: ignore[no-untyped-def]
             if (1 << low) >= w:
                 place |= (chunk & 1) << low
             which = 2 * (place >> high & 1) + (place >> low & 1)
-            factors[step * chunk + lane] = c[2 * which]
-            factors[step * chunk + w + lane] = c[2 * which + 1]
+            block[factors + step * chunk + lane] = c[2 * which]
+            block[factors + step * chunk + w + lane] = c[2 * which + 1]
     for i in range(0, 2 << bits, step):
-        factor = step * (2 * ((i & far) != 0) + ((i & near) != 0))
-        store(block, i, load(block, i) * load(factors, factor))
+        chunk = 2 * ((i & far) != 0) + ((i & near) != 0)
+        store(block, i, load(block, i) * load(block, factors + step * chunk))
 
 
 @part

@@ -8,7 +8,7 @@ import numpy as np
 
 from rcbench.arrays import ComplexArray, FloatArray, IntArray
 from rcbench.engine import memory
-from rcbench.engine.blocks import Plan, aligned, apply_plan
+from rcbench.engine.blocks import Plan, aligned, apply_plan, scratch
 from rcbench.engine.compiled import kernel
 from rcbench.engine.kernels import DENSE, ONE, apply_operator
 from rcbench.engine.lanes import LANES, lanes, load, store
@@ -72,7 +72,7 @@ def _run_in_blocks(patterns: Patterns, changes: Changes, sweeps: Plan, dtype: st
     real = operators.numbers.dtype
     bits = max(operators.n_qubits, LANES[real.name].bit_length() - 1)
     size, batches, sources = 2**bits, patterns.batches, patterns.scores.shape[1]
-    numbers = write_matrices(changes.matrices).astype(real)
+    numbers = write_matrices(changes.matrices, sweeps.operators.kind[changes.op] == ONE).astype(real)
     every = -(-len(operators) // _saved_count(sweeps, dtype))
     saved = aligned((2 << bits) * (-(-len(operators) // every)), real).reshape(-1, 2 << bits)
     saved[0] = 0
@@ -92,12 +92,12 @@ def _run_in_blocks(patterns: Patterns, changes: Changes, sweeps: Plan, dtype: st
         *table,
         np.zeros(size),
         np.zeros((sources, size)),
-        aligned(2 << bits, real),
+        aligned((2 << bits) + scratch(real), real),
         bits,
     )
 
     def task(batch: int) -> None:
-        block = aligned(2 << bits, real)
+        block = aligned((2 << bits) + scratch(real), real)
         first = batch * each
         _run_block(
             saved, every, False, first, first + each, changes.start, *table, sums[batch], scored[batch], block, bits
@@ -138,7 +138,9 @@ def _run_block(saved, every, record, first, last, start, changed, changed_number
 def _run_in_sweeps(patterns: Patterns, changes: Changes, sweeps: Plan, dtype: str, pool: Pool) -> Sums:
     n, batches = sweeps.operators.n_qubits, patterns.batches
     saved, first_sweep = _error_free_states(sweeps, dtype, pool)
-    numbers = write_matrices(changes.matrices).astype(sweeps.operators.numbers.dtype)
+    numbers = write_matrices(changes.matrices, sweeps.operators.kind[changes.op] == ONE).astype(
+        sweeps.operators.numbers.dtype
+    )
     real = probability_type(n)
     sums, scored = np.zeros((batches, 2**n), real), np.zeros((patterns.scores.shape[1], 2**n), real)
     state: ComplexArray = aligned(2**n, np.dtype(dtype))

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rcbench.arrays import FloatArray, IntArray
+from rcbench.arrays import BoolArray, ComplexArray, FloatArray, IntArray
 from rcbench.engine.compiled import kernel, part
 from rcbench.engine.kernels import DENSE, DIAGONAL, MIDDLE, ONE, QUARTER
 from rcbench.engine.program import Program
@@ -38,7 +38,8 @@ class Operators:
 
 def encode(program: Program, dtype: np.dtype[np.complexfloating]) -> Operators:
     """The operators of a program for states of a type."""
-    kind, numbers = _encode(program.qubits, program.matrices)
+    kind, numbers = np.empty(len(program), dtype=np.int64), np.zeros((len(program), 32))
+    _encode(program.qubits, program.matrices, kind, numbers)
     high = program.n_qubits - 1 - program.qubits[:, 0]
     low = np.where(program.qubits[:, 1] < 0, high, program.n_qubits - 1 - program.qubits[:, 1])
     return Operators(
@@ -52,7 +53,7 @@ def real_of(dtype: np.dtype[np.complexfloating]) -> np.dtype[np.floating]:
 
 
 @part
-def write_numbers(matrix, size, out):  # type: ignore[no-untyped-def]
+def _write_numbers(matrix, size, out):  # type: ignore[no-untyped-def]
     """The leading corner of a matrix as real and imaginary parts, row by row."""
     for i in range(size):
         for j in range(size):
@@ -91,13 +92,11 @@ def _kind_of(matrix):  # type: ignore[no-untyped-def]
 
 
 @kernel
-def _encode(qubits, matrices):  # type: ignore[no-untyped-def]
-    kinds = np.empty(len(qubits), dtype=np.int64)
-    numbers = np.zeros((len(qubits), 32))
+def _encode(qubits, matrices, kinds, numbers):  # type: ignore[no-untyped-def]
     for op in range(len(qubits)):
         if qubits[op, 1] < 0:
             kinds[op] = ONE
-            write_numbers(matrices[op], 2, numbers[op])
+            _write_numbers(matrices[op], 2, numbers[op])
             continue
         kinds[op] = kind = _kind_of(matrices[op])
         if kind in (DIAGONAL, QUARTER):
@@ -106,17 +105,13 @@ def _encode(qubits, matrices):  # type: ignore[no-untyped-def]
                 numbers[op, 2 * i] = value.real
                 numbers[op, 2 * i + 1] = value.imag
         else:
-            write_numbers(matrices[op], 4, numbers[op])
-    return kinds, numbers
+            _write_numbers(matrices[op], 4, numbers[op])
 
 
-@kernel
-def write_matrices(matrices):  # type: ignore[no-untyped-def]
-    """(m, 32) numbers of operators of unknown structure; those on one qubit have a zero outside [:2, :2]."""
+def write_matrices(matrices: ComplexArray, alone: BoolArray) -> FloatArray:
+    """(m, 32) numbers of operators of unknown structure; alone: (m,) true for those on one qubit."""
     numbers = np.zeros((len(matrices), 32))
-    for op in range(len(matrices)):
-        alone = (
-            matrices[op, 3, 3] == 0 and matrices[op, 3, 2] == 0 and matrices[op, 3, 1] == 0 and matrices[op, 3, 0] == 0
-        )
-        write_numbers(matrices[op], 2 if alone else 4, numbers[op])
+    numbers[:] = np.ascontiguousarray(matrices).reshape(-1, 16).view(np.float64)
+    corner = np.ascontiguousarray(matrices[alone, :2, :2]).reshape(-1, 4).view(np.float64)
+    numbers[alone, :8], numbers[alone, 8:] = corner, 0
     return numbers

@@ -66,6 +66,8 @@ def distributions(
         InputError: nothing measured, a reset or a gate after the qubit's measurement, a noise model of another size,
             or too little memory.
     """
+    if noise is not None and trajectories < 1:
+        raise InputError("trajectories", trajectories, "a whole number, 1 or more")
     for circuit in circuits:
         if not circuit.measured_qubits:
             raise InputError("circuit", "no measurement", "at least one measured qubit")

@@ -47,14 +47,14 @@ class GateRows:
 
 def check_order(circuit: Circuit) -> None:
     """Refuse what a pure state cannot follow: a reset or a gate after something else happened to the qubit."""
+    rows = np.flatnonzero(circuit.kind == CODE["measure"])
+    if not np.any(circuit.kind == CODE["reset"]):
+        once = len(set(circuit.qubits[rows, 0].tolist())) == len(rows)
+        if once and not (len(rows) and np.any(circuit.gate_rows[rows[0] :])):
+            return  # the usual case: all measurements at the end, each qubit at most once
     touched: set[int] = set()
     measured: set[int] = set()
     special = {CODE["barrier"]: "barrier", CODE["measure"]: "measure", CODE["reset"]: "reset"}
-    if not np.any(circuit.kind == CODE["reset"]):
-        last = {int(q): row for row, q in enumerate(circuit.qubits[:, 0]) if circuit.kind[row] == CODE["measure"]}
-        rows = np.flatnonzero(circuit.kind == CODE["measure"])
-        if len(last) == len(rows) and (not len(rows) or not np.any(circuit.gate_rows[rows[0] :])):
-            return  # the usual case: all measurements at the end, each qubit at most once
     for kind, pair in zip(circuit.kind.tolist(), circuit.qubits.tolist(), strict=True):
         name = special.get(kind, "")
         if name == "barrier":
@@ -123,24 +123,29 @@ class Program:
 
 def fuse(rows: GateRows) -> Program:
     """The program of a circuit's gates; nothing is fused from one stretch to the next."""
-    qubits, matrices, op_of_row, start = _fuse(rows.n_qubits, rows.qubits, rows.matrices, rows.held, rows.start)
+    m = len(rows)
+    qubits, matrices = np.empty((m, 2), dtype=np.int32), np.zeros((m, 4, 4), dtype=np.complex128)
+    op_of_row, start = np.empty(m, dtype=np.int64), np.empty(len(rows.start), dtype=np.int64)
+    absorbed, last = np.empty(m, dtype=np.int64), np.empty(rows.n_qubits, dtype=np.int64)
+    _fuse(rows.qubits, rows.matrices, rows.held, rows.start, qubits, matrices, op_of_row, start, absorbed, last)
     return Program(rows.n_qubits, qubits[: start[-1]], matrices[: start[-1]], op_of_row, start)
 
 
 @part
-def _multiply(left, right, size):  # type: ignore[no-untyped-def]
-    """left @ right of the leading (size, size) corners, into `right`."""
-    column = (right[0, 0], right[0, 0], right[0, 0], right[0, 0])
+def _multiply(left, right, size, exchanged):  # type: ignore[no-untyped-def]
+    """left @ right of the leading (size, size) corners, into `right`; exchanged: `left` has its qubits swapped."""
     for j in range(size):
+        x0, x1 = right[0, j], right[1, j]
         if size == 2:
-            column = (right[0, j], right[1, j], 0j, 0j)
-        else:
-            column = (right[0, j], right[1, j], right[2, j], right[3, j])
-        for i in range(size):
-            total = left[i, 0] * column[0] + left[i, 1] * column[1]
-            if size == 4:
-                total += left[i, 2] * column[2] + left[i, 3] * column[3]
-            right[i, j] = total
+            right[0, j] = left[0, 0] * x0 + left[0, 1] * x1
+            right[1, j] = left[1, 0] * x0 + left[1, 1] * x1
+            continue
+        x2, x3 = right[2, j], right[3, j]
+        if exchanged:
+            x1, x2 = x2, x1
+        for i in range(4):
+            place = (i & 1) << 1 | i >> 1 if exchanged else i
+            right[place, j] = left[i, 0] * x0 + left[i, 1] * x1 + left[i, 2] * x2 + left[i, 3] * x3
 
 
 @part
@@ -157,34 +162,23 @@ def _multiply_one(gate, operator, stride):  # type: ignore[no-untyped-def]
 @part
 def apply_row(operator, first, second, gate, a, b):  # type: ignore[no-untyped-def]
     """Multiply an operator on qubits first < second (or on `first` alone) by one gate on (a, b) from the left."""
-    if second < 0:
-        _multiply(gate, operator, 2)
-    elif b < 0:
+    if b < 0 <= second:
         _multiply_one(gate, operator, 1 if a == second else 2)
-    elif a > b:
-        # the gate's first qubit is the operator's second: exchange rows and columns |01> and |10> of the gate
-        other = np.empty((4, 4), dtype=np.complex128)
-        for i in range(4):
-            for j in range(4):
-                other[(i & 1) << 1 | i >> 1, (j & 1) << 1 | j >> 1] = gate[i, j]
-        _multiply(other, operator, 4)
     else:
-        _multiply(gate, operator, 4)
+        _multiply(gate, operator, 2 if second < 0 else 4, a > b >= 0)
 
 
 @kernel
-def _fuse(n_qubits, qubits, gates, held, starts):  # type: ignore[no-untyped-def]
-    rows = len(qubits)
-    op_qubits = np.empty((rows, 2), dtype=np.int32)
-    matrices = np.zeros((rows, 4, 4), dtype=np.complex128)
-    absorbed = np.empty(rows, dtype=np.int64)  # the operator that took this one in, -1 where none did
-    op_of_row = np.empty(rows, dtype=np.int64)
-    last = np.empty(n_qubits, dtype=np.int64)  # the last operator on each qubit in this stretch, -1 where there is none
-    op_starts = np.empty(len(starts), dtype=np.int64)
+def _fuse(qubits, gates, held, starts, op_qubits, matrices, op_of_row, op_starts, absorbed, last):  # type: ignore[no-untyped-def]
+    """Fill in the operators (op_qubits, matrices, op_of_row, op_starts).
+
+    absorbed: for each operator the one that took it in, -1 where none did. last: the last operator on each qubit in
+    this stretch, -1 where there is none. Both are there to work in.
+    """
     count, kept = 0, 0
     for stretch in range(len(starts) - 1):
         first = count
-        for qubit in range(n_qubits):
+        for qubit in range(len(last)):
             last[qubit] = -1
         for row in range(starts[stretch], starts[stretch + 1]):
             a, b = qubits[row, 0], qubits[row, 1]
@@ -229,4 +223,3 @@ def _fuse(n_qubits, qubits, gates, held, starts):  # type: ignore[no-untyped-def
                 op = absorbed[op]
             op_of_row[row] = -2 - absorbed[op]
     op_starts[len(starts) - 1] = kept
-    return op_qubits, matrices, op_of_row, op_starts

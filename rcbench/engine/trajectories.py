@@ -196,7 +196,9 @@ def changed_operators(noisy: NoisyProgram, patterns: Patterns) -> Changes:
     new = np.ones(len(op), dtype=bool)
     new[1:] = (op[1:] != op[:-1]) | (owner[1:] != owner[:-1])
     begins = np.append(np.flatnonzero(new), len(op))
-    matrices = _rebuild(
+    matrices = np.zeros((len(begins) - 1, 4, 4), dtype=np.complex128)
+    _rebuild(
+        matrices,
         begins, op, noisy.places.row[patterns.place], noisy.places.qubits[patterns.place], patterns.pauli,
         first_row, order, noisy.rows.qubits, noisy.rows.matrices, noisy.program.qubits,
     )  # fmt: skip
@@ -218,8 +220,7 @@ def _strike(matrix, first, second, qubits, pauli):  # type: ignore[no-untyped-de
 
 
 @kernel
-def _rebuild(begins, op, after, where, pauli, first_row, order, qubits, gates, op_qubits):  # type: ignore[no-untyped-def]
-    out = np.zeros((len(begins) - 1, 4, 4), dtype=np.complex128)
+def _rebuild(out, begins, op, after, where, pauli, first_row, order, qubits, gates, op_qubits):  # type: ignore[no-untyped-def]
     for change in range(len(begins) - 1):
         error, stop = begins[change], begins[change + 1]
         place = op[error]
@@ -236,4 +237,3 @@ def _rebuild(begins, op, after, where, pauli, first_row, order, qubits, gates, o
             while error < stop and after[error] == row:
                 _strike(matrix, first, second, where[error], pauli[error])
                 error += 1
-    return out

@@ -21,7 +21,11 @@ def split_turns(rows: GateRows) -> GateRows:
     """The gates with cancelling phases put in before quarter turns between diagonal gates of different pairs."""
     if not np.any(rows.qubits[:, 1] >= 0):
         return rows
-    count, before, phases, held = _find(rows.n_qubits, rows.qubits, rows.matrices, rows.start)
+    m = len(rows)
+    before, phases, held = np.empty(m, dtype=np.int64), np.empty(m, dtype=np.complex128), np.zeros(m, dtype=np.bool_)
+    partner, first = np.empty((2, rows.n_qubits), dtype=np.int64)
+    product = np.zeros((rows.n_qubits, 4), dtype=np.complex128)
+    count = _find(rows.qubits, rows.matrices, rows.start, before, phases, held, partner, first, product)
     if not count:
         return rows
     before, phases = before[:count], phases[:count]
@@ -43,20 +47,18 @@ def split_turns(rows: GateRows) -> GateRows:
 
 
 @kernel
-def _find(n_qubits, qubits, gates, starts):  # type: ignore[no-untyped-def]
-    """For each run of one-qubit gates to split its first gate and the phase of |1> to put before; the gates held."""
-    total = len(qubits)
-    before, phases = np.empty(total, dtype=np.int64), np.empty(total, dtype=np.complex128)
-    held = np.zeros(total, dtype=np.bool_)
-    partner = np.empty(n_qubits, dtype=np.int64)  # of the diagonal gate before the run, -1 where there is none
-    first = np.empty(n_qubits, dtype=np.int64)  # gate of the run, -1 where it is empty
-    product = np.zeros((n_qubits, 4), dtype=np.complex128)
+def _find(qubits, gates, starts, before, phases, held, partner, first, product):  # type: ignore[no-untyped-def]
+    """For each run of one-qubit gates to split its first gate and the phase of |1> to put before; the gates held.
+
+    Fills `before`, `phases` and `held` and returns the number of runs. To work in, by qubit: the partner of the
+    diagonal gate before the run (-1 where there is none), the run's first gate (-1 where it is empty) and product.
+    """
     count, stretch = 0, 0
-    for row in range(total):
+    for row in range(len(qubits)):
         if row == starts[stretch]:
             while stretch < len(starts) - 1 and row == starts[stretch]:
                 stretch += 1
-            for qubit in range(n_qubits):
+            for qubit in range(len(first)):
                 partner[qubit] = first[qubit] = -1
         a, b = qubits[row, 0], qubits[row, 1]
         gate = gates[row]
@@ -93,4 +95,4 @@ def _find(n_qubits, qubits, gates, starts):  # type: ignore[no-untyped-def]
                         held[place] = True
             partner[qubit] = other if diagonal else -1
             first[qubit] = -1
-    return count, before, phases, held
+    return count

@@ -10,7 +10,7 @@ from typing import Any
 from rcbench.campaign import ADOPTED, Campaign, Experiment
 from rcbench.circuits import transform
 from rcbench.circuits.circuit import Circuit
-from rcbench.circuits.families import draw_circuits, period
+from rcbench.circuits.families import check, draw_circuits, period
 from rcbench.errors import InputError
 from rcbench.protocol.language import Protocol, Role
 from rcbench.protocol.placement import Placement, place
@@ -126,6 +126,18 @@ class Expander:
                 key, found, "what circuits can be drawn for; this one serves adopted circuits", self._where
             )
         self.placement = place(self.protocol, experiment, self.campaign.device)
+        if self.protocol.circuit_register is not None:
+            try:
+                check(self._alone, self.campaign.device)
+            except InputError as error:
+                raise error.at(self._where) from None
+
+    @property
+    def _alone(self) -> Experiment:
+        """The experiment on the first register that hosts its circuits."""
+        first = self.protocol.circuit_register
+        assert first is not None
+        return replace(self.experiment, qubits=self._device_qubits(first.name), sites={}, regions=())
 
     @property
     def _where(self) -> str:
@@ -146,7 +158,7 @@ class Expander:
         if slot.instance != self._instance:
             self._instance = slot.instance
             self._drawn, self._turned = {}, {}
-        return write_circuit(
+        written = write_circuit(
             Setting(
                 device=self.campaign.device,
                 qubits=self.experiment.qubits,
@@ -158,6 +170,17 @@ class Expander:
                 circuit=lambda register, form: self._circuit(slot, register, form),
             )
         )
+        return replace(written, params=written.params | self._time(slot))
+
+    def _time(self, slot: Slot) -> dict[str, Any]:
+        """What the roster says of circuits that repeat: layers a period, and the time that the depth stands for."""
+        if self.protocol.circuit_register is None or slot.role.every_batch:
+            return {}
+        one = period(self._alone, self.campaign.device)
+        if one is None:
+            return {}
+        time = round(slot.depth / one.layers * one.time, 12)
+        return {"period_layers": one.layers, "time": time, "time_unit": one.unit}
 
     def _draw(self, slot: Slot, name: str, part: str) -> Draw:
         key: list[str | int] = [f"draw {name}"]
@@ -181,10 +204,7 @@ class Expander:
     def _draw_instance(self) -> dict[int, Circuit]:
         """The experiment's circuits on the first register that hosts them."""
         if not self._drawn:
-            first = self.protocol.circuit_register
-            assert first is not None
-            alone = replace(self.experiment, qubits=self._device_qubits(first.name), sites={}, regions=())
-            self._drawn = draw_circuits(alone, self.campaign.device, self.campaign.seed, self._instance)
+            self._drawn = draw_circuits(self._alone, self.campaign.device, self.campaign.seed, self._instance)
         return self._drawn
 
     def _device_qubits(self, register: str) -> tuple[int, ...]:

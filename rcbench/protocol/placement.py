@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from itertools import pairwise
 
 from rcbench.campaign import Experiment
+from rcbench.circuits.families import CONTROLS
 from rcbench.device import Device, Pair
 from rcbench.errors import InputError, raise_all, suggest
 from rcbench.protocol.language import Measure, Perturb, Prepare, Protocol, Register, Role
@@ -180,7 +181,7 @@ def _circuit_lacks(
             )
         return
     pieces = _pieces(own, set(device.couplers))
-    if len(pieces) > 1 and experiment.circuits.family == "brickwork":
+    if len(pieces) > 1 and experiment.circuits.family not in CONTROLS:
         parts = " and ".join(write_regions(piece) for piece in pieces)
         joins = ", ".join(f"{max(a)}-{min(b)}" for a, b in pairwise(pieces))
         yield f"no couplers between {parts}", f"qubits that are all connected: couplers such as {joins} are lacking"

@@ -13,6 +13,7 @@ import pandas as pd
 
 from rcbench import tables
 from rcbench.campaign import Campaign, Circuits, Experiment, load_campaign
+from rcbench.circuits.families import ADOPTED, CONTROLS
 from rcbench.errors import InputError
 from rcbench.files import read_csv, read_provenance, read_text
 
@@ -107,7 +108,7 @@ def groups(source: Source) -> list[Group]:
     """The groups of a campaign. Different gates or qubits are different circuits: their axes are never joined."""
     mains: dict[tuple[tuple[int, ...], Circuits], list[Experiment]] = {}
     for experiment in source.campaign.experiments:
-        if experiment.circuits.family == "brickwork" and not experiment.control_for:
+        if experiment.circuits.family not in (*CONTROLS, ADOPTED) and not experiment.control_for:
             mains.setdefault((tuple(sorted(experiment.qubits)), experiment.circuits), []).append(experiment)
     found = []
     for (qubits, circuits), members in mains.items():
@@ -116,7 +117,7 @@ def groups(source: Source) -> list[Group]:
         for experiment in source.campaign.experiments:
             # a control that names no parent belongs to the experiments on its own qubits
             alone = not experiment.control_for and tuple(sorted(experiment.qubits)) == qubits
-            if experiment.circuits.family != "brickwork" and (experiment.control_for in names or alone):
+            if experiment.circuits.family in CONTROLS and (experiment.control_for in names or alone):
                 controls.setdefault(experiment.circuits.family, []).append(experiment)
         found.append(
             Group(qubits, circuits, tuple(members), {family: tuple(found) for family, found in controls.items()})

@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import Any
 
 from rcbench.campaign import Experiment
+from rcbench.circuits.families import ADOPTED, family_of
 from rcbench.files import write_text
 from rcbench.report.bottom_line import BottomLine, bottom_lines
 from rcbench.report.campaign_table import experiments_table, facts, margins_table, rule_fixed
@@ -160,11 +161,12 @@ def _section(source: Source, experiment: Experiment, folder: Path) -> Section:
     pictures = [decay_figure(source, experiment, key, folder) for key in keys]
     pictures.append(otoc_figure(source, experiment, folder))
     rows = source.comparison[source.comparison["experiment"] == experiment.name]
-    circuits = {
-        "brickwork": "layers of the device's schedule",
+    others = {
+        ADOPTED: "imported circuits",
         "product": "no entangling gate, the same one-qubit layers: it cannot spread",
         "dimers": "the same gate count, but each qubit keeps one partner: the same loss, no spreading",
-    }[experiment.circuits.family]
+    }
+    circuits = others.get(experiment.circuits.family, family_of(experiment.circuits.two_qubit).about)
     role = f" Control for {experiment.control_for}." if experiment.control_for else ""
     about = (
         f"{experiment.protocol or 'Predicted only'}, {experiment.circuits.family} ({circuits}), "

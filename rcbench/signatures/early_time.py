@@ -9,7 +9,8 @@ H is a list of (coefficient, term), a term being letters with sites, as (0.8, "Z
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
+from itertools import count, islice
 
 import numpy as np
 
@@ -80,20 +81,25 @@ def nested_commutators(terms: Terms, n_qubits: int, site: int, pauli: str, order
     """
     if order < 0:
         raise InputError("order", order, "a whole number, 0 or more")
+    return list(islice(_orders(terms, n_qubits, site, pauli), order + 1))
+
+
+def _orders(terms: Terms, n_qubits: int, site: int, pauli: str) -> Iterator[Strings]:
+    """Order after order without end."""
     check_pauli(site, pauli, n_qubits)
     hamiltonian = read_terms(terms, n_qubits)
-    out: list[Strings] = [{_string({site: pauli}): 1.0}]
-    for k in range(1, order + 1):
+    strings: Strings = {_string({site: pauli}): 1.0}
+    for k in count(1):
+        yield strings
         found: Strings = {}
-        for string, weight in out[-1].items():
+        for string, weight in strings.items():
             for term, strength in hamiltonian.items():
                 if _anticommute(term, string):
                     product, sign = _turned(term, string)
                     found[product] = found.get(product, 0.0) + sign * strength * weight / k
         if len(found) > MOST_STRINGS:
-            raise InputError("order", order, f"at most {k - 1} here, {len(out[-1])} strings; more do not fit")
-        out.append({string: value for string, value in found.items() if abs(value) > 1e-15})
-    return out
+            raise InputError("order", k, f"at most {k - 1} here, {len(strings)} strings; more do not fit")
+        strings = {string: value for string, value in found.items() if value}
 
 
 def support_by_order(terms: Terms, n_qubits: int, site: int, pauli: str, order: int) -> BoolArray:
@@ -122,12 +128,13 @@ def leading_growth(terms: Terms, n_qubits: int, w: tuple[str, int], v: tuple[str
     check_pauli(v[1], v[0], n_qubits)
     probe = _string({v[1]: v[0]})
     most = 2 * abs(w[1] - v[1]) + 2
-    for order in range(most + 1):
-        strings = nested_commutators(terms, n_qubits, w[1], w[0], order)[order]
+    for order, strings in enumerate(islice(_orders(terms, n_qubits, w[1], w[0]), most + 1)):
         grown = sum(value**2 for string, value in strings.items() if _anticommute(string, probe))
-        if grown > 0:
+        if grown > 1e-24:  # terms that cancel leave rounding
             return 2 * order, 2 * grown
-    raise InputError("terms", f"{len(terms)} terms", f"a Hamiltonian that carries W to site {v[1]} within {most} orders")
+    raise InputError(
+        "terms", f"{len(terms)} terms", f"a Hamiltonian that carries W to site {v[1]} within {most} orders"
+    )
 
 
 def otoc_series(

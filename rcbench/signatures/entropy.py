@@ -121,10 +121,10 @@ def renyi_entropy(states: ComplexArray, region: Sequence[int], order: float) -> 
         return renyi2_entropy(states, region)
     weights = schmidt_weights(states, region)
     if order == 0:
-        return np.log(np.count_nonzero(weights > 1e-12, axis=1))
+        return np.asarray(np.log(np.count_nonzero(weights > 1e-12, axis=1)))
     if np.isinf(order):
-        return np.maximum(-np.log(weights.max(axis=1)), 0.0)
-    return np.maximum(np.log((weights**order).sum(axis=1)) / (1 - order), 0.0)
+        return np.asarray(np.maximum(-np.log(weights.max(axis=1)), 0.0))
+    return np.asarray(np.maximum(np.log((weights**order).sum(axis=1)) / (1 - order), 0.0))
 
 
 def cut_entropies(states: ComplexArray, *, order: float = 1) -> FloatArray:
@@ -187,7 +187,5 @@ def mutual_information(states: ComplexArray, a: Sequence[int], b: Sequence[int],
     n = np.atleast_2d(states).shape[1].bit_length() - 1
     one, two = disjoint(a, b, n_qubits=n)
     return (
-        renyi_entropy(states, one, order)
-        + renyi_entropy(states, two, order)
-        - renyi_entropy(states, one + two, order)
+        renyi_entropy(states, one, order) + renyi_entropy(states, two, order) - renyi_entropy(states, one + two, order)
     )

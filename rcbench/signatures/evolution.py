@@ -15,7 +15,7 @@ from collections.abc import Callable, Iterator, Sequence
 
 import numpy as np
 
-from rcbench.arrays import ComplexArray
+from rcbench.arrays import ComplexArray, IntArray
 from rcbench.circuits.circuit import Circuit, CircuitBuilder
 from rcbench.circuits.gates import CODE, N_PARAMETERS, N_QUBITS
 from rcbench.engine import memory
@@ -96,16 +96,18 @@ def _doubled(circuit: Circuit) -> Circuit:
     moved = np.where(copy.qubits >= 0, copy.qubits + n, -1)
     offset = len(circuit.parameters)
     order = np.argsort(np.concatenate([circuit.layer[rows], copy.layer]), kind="stable")
-    join = [
-        np.concatenate(pair)[order]
-        for pair in (
-            (circuit.layer[rows], copy.layer),
-            (circuit.kind[rows], copy.kind),
-            (circuit.qubits[rows], moved),
-            (circuit.first[rows], copy.first + offset),
-        )
-    ]
-    return Circuit(2 * n, *join, np.concatenate([circuit.parameters, copy.parameters]))
+
+    def join(of_circuit: IntArray, of_copy: IntArray) -> IntArray:
+        return np.concatenate([of_circuit, of_copy])[order]
+
+    return Circuit(
+        2 * n,
+        join(circuit.layer[rows], copy.layer),
+        join(circuit.kind[rows], copy.kind),
+        join(circuit.qubits[rows], moved),
+        join(circuit.first[rows], copy.first + offset),
+        np.concatenate([circuit.parameters, copy.parameters]),
+    )
 
 
 def _after(prepare: Callable[[CircuitBuilder], None], circuit: Circuit, n_qubits: int) -> Circuit:

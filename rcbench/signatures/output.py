@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from rcbench.arrays import FloatArray
+from rcbench.errors import InputError
 
 
 def collision_probability(probabilities: FloatArray) -> float:
@@ -27,3 +28,36 @@ def porter_thomas_distance(probabilities: FloatArray) -> float:
     law = 1.0 - (1.0 - ordered) ** (size - 1)
     steps = np.arange(size + 1) / size
     return float(max(np.abs(steps[1:] - law).max(), np.abs(steps[:-1] - law).max()))
+
+
+def moment(probabilities: FloatArray, k: int) -> float:
+    """Mean over outcomes of (D p)^k; probabilities: (D,), summing to 1. Porter-Thomas tends to k!.
+
+    Raises:
+        InputError: k below 0.
+
+    Source: Boixo et al., Nature Physics 14, 595 (2018).
+    """
+    if k < 0:
+        raise InputError("k", k, "a whole number, 0 or more")
+    return float(np.mean((len(probabilities) * probabilities) ** k))
+
+
+def entropy(probabilities: FloatArray) -> float:
+    """-sum_x p ln p in nats; probabilities: (D,), summing to 1. Porter-Thomas tends to ln D - 0.4228.
+
+    Source: Boixo et al., Nature Physics 14, 595 (2018).
+    """
+    positive = probabilities[probabilities > 0]
+    return float(-(positive * np.log(positive)).sum())
+
+
+def linear_xeb(probabilities: FloatArray) -> float:
+    """D sum_x p(x)^2 - 1, what a perfect device scores in linear cross-entropy; Haar averages (D - 1) / (D + 1).
+
+    Args:
+        probabilities: (D,), summing to 1.
+
+    Source: Arute et al., Nature 574, 505 (2019).
+    """
+    return len(probabilities) * collision_probability(probabilities) - 1

@@ -46,7 +46,10 @@ def size_distribution(weights: FloatArray) -> FloatArray:
     """
     shares = occupation_weights(weights)
     sizes = np.indices(shares.shape, dtype=np.int8).sum(axis=0, dtype=np.int64)
-    return np.bincount(sizes.ravel(), weights=shares.ravel(), minlength=shares.ndim + 1)
+    counts: FloatArray = np.bincount(sizes.ravel(), weights=shares.ravel(), minlength=shares.ndim + 1).astype(
+        np.float64
+    )
+    return counts
 
 
 def operator_size(weights: FloatArray) -> float:
@@ -79,7 +82,9 @@ def end_density(weights: FloatArray, end: str = "right") -> FloatArray:
     if end == "left":
         shares = shares.transpose(range(n - 1, -1, -1))
     # trivial on all qubits from x on, for every x
-    beyond = np.array([shares[(..., *(0,) * (n - x))].sum() for x in range(n + 1)])
+    # the last qubits vary fastest, so a string trivial from x on has an index that 2^(n - x) divides
+    flat = np.ascontiguousarray(shares).ravel()
+    beyond = np.array([flat[:: 2 ** (n - x)].sum() for x in range(n + 1)])
     density = np.diff(beyond)
     return density[::-1] if end == "left" else density
 

@@ -21,11 +21,12 @@ TURN = np.array([[1, -1], [1, 1]])
 def to_block(state: np.ndarray, real: str) -> np.ndarray:
     """Chunks of real parts, then imaginary parts."""
     chunks = state.reshape(-1, LANES[real])
-    return np.stack([chunks.real, chunks.imag], axis=1).reshape(-1).astype(real)
+    parts = np.stack([chunks.real, chunks.imag], axis=1).reshape(-1)
+    return np.concatenate([parts, np.zeros(8 * LANES[real])]).astype(real)  # the kernels need four chunks to work in
 
 
 def from_block(block: np.ndarray, real: str) -> np.ndarray:
-    parts = block.astype(np.float64).reshape(-1, 2, LANES[real])
+    parts = block[: -8 * LANES[real]].astype(np.float64).reshape(-1, 2, LANES[real])
     return (parts[:, 0] + 1j * parts[:, 1]).reshape(-1)
 
 

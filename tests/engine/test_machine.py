@@ -11,7 +11,7 @@ from pathlib import Path
 import pytest
 
 import rcbench
-from rcbench.engine import memory, threads
+from rcbench.engine import compiled, memory, threads
 from rcbench.engine.threads import Pool
 from rcbench.errors import InputError
 
@@ -66,8 +66,21 @@ def test_an_error_in_a_task_is_raised_by_the_pool():
         pool.run(task, range(5))
 
 
+def test_compiled_code_is_kept_apart_for_each_state_of_the_source(tmp_path, monkeypatch):
+    monkeypatch.setenv("NUMBA_CACHE_DIR", str(tmp_path))
+    monkeypatch.setattr(compiled, "__file__", str(tmp_path / "package" / "compiled.py"))
+    (tmp_path / "package").mkdir()
+    folders = set()
+    for text in ("one", "two"):
+        (tmp_path / "package" / "lanes.py").write_text(text)
+        folders.add(compiled.cache_folder.__wrapped__())
+    assert len(folders) == 2
+    assert {folder.parent for folder in folders} == {tmp_path}
+
+
 @pytest.mark.slow
-def test_a_package_folder_and_home_that_cannot_be_written_still_give_a_state(tmp_path):
+@pytest.mark.parametrize("temporary", ["folder", "nothing"])
+def test_a_package_folder_and_home_that_cannot_be_written_still_give_a_state(tmp_path, temporary):
     """Root can write anywhere, so the folders are files: nothing can be made inside them."""
     home = tmp_path / "home"
     home.write_text("")
@@ -86,6 +99,8 @@ def test_a_package_folder_and_home_that_cannot_be_written_still_give_a_state(tmp
     (package / "engine" / "__pycache__").write_text("")
     environment = {**os.environ, "PYTHONPATH": str(package.parent), "HOME": str(home), "XDG_CACHE_HOME": str(home)}
     environment["TMPDIR"] = str(tmp_path)
+    if temporary == "nothing":
+        (tmp_path / f"cache-{os.getuid()}").write_text("")
     environment.pop("NUMBA_CACHE_DIR", None)
     done = subprocess.run([sys.executable, "-c", code], env=environment, capture_output=True, text=True, check=False)
     assert done.returncode == 0, done.stderr

@@ -194,6 +194,8 @@ def test_work_and_progress_are_reported():
 def test_what_cannot_be_predicted_is_refused():
     with pytest.raises(InputError, match="no measurement"):
         list(distributions([random_circuit(2, 1, seed=0, measure=False)], None))
+    with pytest.raises(InputError, match="trajectories: found 0"):
+        list(distributions([random_circuit(2, 1, seed=0)], noise_model(2), trajectories=0))
     with pytest.raises(InputError, match="the circuit's 2 qubits"):
         list(distributions([random_circuit(2, 1, seed=0)], noise_model(3)))
     with pytest.raises(InputError, match="trajectories of 10 qubits"):

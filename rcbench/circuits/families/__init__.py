@@ -2,19 +2,22 @@
 
     brickwork          one-qubit layers between two-qubit layers of the device's schedule
     kicked-ising       self-dual kicked Ising: the fastest entanglement there is, one kick a period
+    dual-unitary       gates that are unitary in space too: everything moves at the speed of the light cone
+    charge-conserving  Haar gates that keep the number of ones: charge diffuses
+    matchgate          free fermions on a line: operators spread and do not scramble
     trotter            spin models in Trotter steps: depth means time
     product            control: the same one-qubit layers and no other gate: no spreading, and only one-qubit loss
-    dimers             control: the same gates, count and duration, but every qubit keeps one fixed partner: the same loss, no
-                       spreading
+    dimers             control: the same gates, count and duration, but every qubit keeps one fixed partner: the same
+                       loss, no spreading
 
 A module a family, a row each in MODELS; `family` holds what they share. The controls serve every family: they take the
 gates of the experiment that they control. Rows of a brickwork of depth d, with a barrier between all blocks:
 
     one-qubit layer 0, two-qubit layer 1, one-qubit layer 1, two-qubit layer 2, ..., one-qubit layer d
 
-Without one-qubit layers (`none`) the two-qubit layers stand alone: Haar and Clifford gates end in one-qubit gates. A family
-that repeats has a start layer, and in each period its two-qubit layers one after another and one-qubit layers where its
-module says. A block takes several native layers where its gates are compiled or may not all run at once. Qubits without a
+Without one-qubit layers (`none`) the two-qubit layers stand alone: Haar and Clifford gates end in one-qubit gates. A
+family that repeats has one start layer, and then in each period the two-qubit and one-qubit layers that its module
+names. A block takes several native layers where its gates are compiled or may not all run at once. Qubits without a
 coupler in a layer stay idle. Circuits have no measurement.
 """
 
@@ -25,7 +28,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from rcbench.circuits.circuit import Circuit
-from rcbench.circuits.families import brickwork, kicked_ising, trotter
+from rcbench.circuits.families import brickwork, charge_conserving, dual_unitary, kicked_ising, matchgate, trotter
 from rcbench.circuits.families.brickwork import RANDOM
 from rcbench.circuits.families.family import Blocks, Family, Period, Task, Value, compiles, native_for
 from rcbench.circuits.gates import CODE
@@ -38,12 +41,15 @@ if TYPE_CHECKING:  # the campaign asks this table for names and parameters
     from rcbench.campaign import Experiment
 
 __all__ = [
-    "ADOPTED", "CONTROLS", "FAMILIES", "MODELS", "RANDOM", "Family", "Period", "Task", "Value", "check", "draw_circuits",
-    "family_of", "first_rows", "period", "served", "task", "time_of",
+    "ADOPTED", "CONTROLS", "FAMILIES", "MODELS", "RANDOM", "Family", "Period", "Task", "Value", "check",
+    "draw_circuits", "family_of", "first_rows", "period", "served", "task", "time_of",
 ]  # fmt: skip
 
 MODELS: dict[str, Family] = {
     "kicked-ising": kicked_ising.FAMILY,
+    "dual-unitary": dual_unitary.FAMILY,
+    "charge-conserving": charge_conserving.FAMILY,
+    "matchgate": matchgate.FAMILY,
     "trotter": trotter.FAMILY,
 }
 CONTROLS = ("product", "dimers")  # the gates of another experiment, with no spreading

@@ -14,7 +14,18 @@ from rcbench.arrays import FloatArray
 from rcbench.circuits import native
 from rcbench.circuits.cliffords import ORDER, decompose_cliffords
 from rcbench.circuits.ensembles import LAYERS, haar_unitaries, one_qubit_layer
-from rcbench.circuits.families.family import Block, Blocks, Family, Fixed, Gates, Task, Turns, compiled, layered, native_for
+from rcbench.circuits.families.family import (
+    Block,
+    Blocks,
+    Family,
+    Fixed,
+    Gates,
+    Task,
+    Turns,
+    compiled,
+    layered,
+    native_for,
+)
 from rcbench.circuits.schedule import Layer
 from rcbench.device import Device
 from rcbench.errors import InputError

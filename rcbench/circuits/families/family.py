@@ -1,8 +1,8 @@
 """What a circuit family is: its parameters, what it needs of a device, and the blocks its circuits are made of.
 
-A circuit is a row of blocks with a barrier between: one-qubit layers (`Turns`) and layers of two-qubit gates (`Gates`). A
-family gives the blocks of its deepest circuit, and says how many of them each depth has; everything else is the same for
-all families.
+A circuit is a row of blocks with a barrier between: one-qubit layers (`Turns`) and layers of two-qubit gates (`Gates`).
+A family gives the blocks of its deepest circuit, and says how many of them each depth has; everything else is the same
+for all families.
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ from rcbench.circuits import native
 from rcbench.circuits.circuit import Circuit, CircuitBuilder
 from rcbench.circuits.compile import Decomposition
 from rcbench.circuits.ensembles import LAYERS, one_qubit_layer
-from rcbench.circuits.gates import gate_matrices
+from rcbench.circuits.gates import gate_matrices, gate_matrix
 from rcbench.circuits.schedule import Layer, couplers_among, dimer_layers, layers, patterns
 from rcbench.device import Device, NativeGate, Pair
 from rcbench.errors import InputError, suggest
@@ -67,7 +67,7 @@ class Parameter:
 
 @dataclass(frozen=True, slots=True)
 class Period:
-    """One period of a circuit that repeats. name: of one; layers: of two-qubit gates; time: it takes, in the unit."""
+    """One period of a circuit that repeats. name: of one; layers: of two-qubit gates; time: it takes, in `unit`."""
 
     name: str
     layers: int
@@ -110,7 +110,7 @@ class Task:
         return chosen(self.device, self.experiment.qubits, self.depth, self.draw("schedule"))
 
     def patterns(self) -> list[Layer]:
-        """The layers that hold every coupler once; for the dimers as many, with as many pairs; empty for the product."""
+        """The layers that hold every coupler once; for dimers as many, with as many pairs; empty for the product."""
         own = patterns(self.device, self.experiment.qubits)
         if not self.entangles:
             return [()] * len(own)
@@ -260,7 +260,23 @@ def zz_gate(task: Task, angle: float) -> Decomposition | Fixed:
                 return Fixed("zz", angle)
             if all(np.allclose(values, angle, rtol=0, atol=native.ANGLE_TOLERANCE) for values in own):
                 return Fixed("zz")
-    return compiled(task, gate_matrices("zz", np.array([[angle]])))
+    exact = _one_diagonal(native_for(task.experiment.circuits.two_qubit, task.device), angle)
+    return exact or compiled(task, gate_matrices("zz", np.array([[angle]])))
+
+
+def _one_diagonal(gate: NativeGate, angle: float) -> Decomposition | None:
+    """exp(-i angle ZZ / 2) as one diagonal native gate and virtual quarter turns about Z, where that is possible."""
+    if gate.name not in ("cz", "zz"):
+        return None
+    wanted = np.diag(gate_matrix("zz", angle))
+    own = np.diag(gate_matrix(gate.name, *native.served_parameters(gate)))
+    for turn in np.array([0.0, 0.5, 1.0, -0.5]) * np.pi:
+        made = own * np.exp(1j * turn * np.array([0, 1, 1, 2]))
+        if abs(abs(np.vdot(wanted, made)) - 4) < native.SNAP:
+            euler = np.zeros((1, compiler.MOST + 1, 2, 3))
+            euler[0, 1, :, 1] = turn
+            return Decomposition(gate.name, np.array([1]), euler, np.zeros((1, compiler.MOST)))
+    return None
 
 
 def start(task: Task) -> list[Turns]:
@@ -270,7 +286,7 @@ def start(task: Task) -> list[Turns]:
         return []
     if name == "alternating":
         flipped = np.zeros((task.n_qubits, 3))
-        flipped[second_sublattice(task)] = native.euler_angles(gate_matrices("x", np.empty((1, 0))))
+        flipped[second_sublattice(task)] = native.euler_angles(gate_matrix("x")[None])
         return [Turns(flipped)]
     matrices, _ = one_qubit_layer(name, task.n_qubits, task.draw("one-qubit"))
     return [Turns(native.euler_angles(matrices))]
@@ -278,9 +294,8 @@ def start(task: Task) -> list[Turns]:
 
 def second_sublattice(task: Task) -> IntArray:
     """Labels at an odd distance from the lowest label of their connected part: every second qubit of a line or grid."""
-    return np.array(
-        [q for q, far in distances(couplers_among(task.device, task.experiment.qubits)).items() if far % 2], dtype=np.int64
-    )
+    found = distances(couplers_among(task.device, task.experiment.qubits))
+    return np.array([label for label, steps in found.items() if steps % 2], dtype=np.int64)
 
 
 def distances(couplers: Sequence[Pair]) -> dict[int, int]:

@@ -1,9 +1,10 @@
 """Self-dual kicked Ising: exp(-i b sum X) exp(-i J sum ZZ - i sum h_j Z), again and again, with J = b = pi/4.
 
-One period is one layer of ZZ a pattern of the schedule (two on a line, four on a grid) and one layer of fields and kick.
-Fields h_j are drawn once a circuit, uniform within `disorder` of `field`. With any fields and without detuning, the
-entanglement of a line or ring grows as fast as it can. `one_qubit` makes the state that is kicked: quarter-turns and azimuth
-lay every spin into the x-y plane, where the growth begins with the first kick; none leaves |0...0>, which costs a kick.
+One period is one layer of ZZ a pattern of the schedule (two on a line, four on a grid) and one layer of fields and
+kick, so a kick takes that many layers of depth. Fields h_j are drawn once a circuit, uniform within `disorder` of
+`field`. With any fields and without detuning, the entanglement of a line or ring grows as fast as it can. `one_qubit`
+makes the state that is kicked: quarter-turns and azimuth lay every spin into the x-y plane, where the growth begins
+with the first kick; none leaves |0...0>, which costs a kick.
 
 Source: Bertini, Kos and Prosen, PRX 9, 021033 (2019), arXiv:1812.05090.
 """

@@ -6,17 +6,17 @@
 Sums over all couplers and qubits, Pauli operators, not spins; z_j is drawn once a circuit, uniform within `disorder` of
 `field_z`. Time is in units of 1 over the unit of J. One step of length dt, its factors in the order in which they act:
 
-    order 1   couplings of each pattern in turn, fields; error of the order of dt for a given time
-    order 2   fields dt/2, patterns dt/2 forth, the last one dt, patterns dt/2 back, fields dt/2; error of the order of dt^2
+    order 1   couplings of each pattern in turn, fields; for a given time the error falls as dt
+    order 2   fields dt/2, patterns dt/2 forth, the last one dt, patterns dt/2 back, fields dt/2; it falls as dt^2
 
-Patterns of ZZ commute, so the Ising model needs each of them once: a step has as many layers as there are patterns (two on
-a line, four on a grid). With xxz in second order it has twice as many less one. Half steps of fields that meet are not
-joined, so that a shorter time is always the beginning of a longer one. The step's qubits begin in the state that
-`one_qubit` makes; xxz does nothing to |0...0> without field_x, so `alternating` is where it usually begins.
+Patterns of ZZ commute, so the Ising model needs each of them once: a step has as many layers as there are patterns
+(two on a line, four on a grid). With xxz in second order it has twice as many less one. Half steps of fields that
+meet are not joined, so that a shorter time is always the beginning of a longer one. `one_qubit` makes the state at
+time 0; without field_x, xxz does nothing to |0...0>, so `alternating` is where it usually begins.
 
-Source: Suzuki, Commun. Math. Phys. 51, 183 (1976); Childs et al., Phys. Rev. X 11, 011020 (2021) for the errors. Default
-fields of the Ising model: Kim and Huse, Phys. Rev. Lett. 111, 127205 (2013), where it is far from integrable (values from
-memory).
+Source: Suzuki, Commun. Math. Phys. 51, 183 (1976); Childs et al., Phys. Rev. X 11, 011020 (2021) for the errors (from
+memory). Default fields of the Ising model: Kim and Huse, Phys. Rev. Lett. 111, 127205 (2013), where it is far from
+integrable (from memory).
 """
 
 from __future__ import annotations
@@ -109,7 +109,8 @@ def blocks(task: Task) -> Blocks:
     model = task.experiment.circuits.parameters
     dt, order, exact = float(model["step"]), int(model["order"]), terms(task)
     stage = dt if order == 1 else dt / 2
-    fields = [Turns(native.euler_angles(field_turns(exact.x, exact.z, stage)))] if exact.x.any() or exact.z.any() else []
+    turned = exact.x.any() or exact.z.any()
+    fields = [Turns(native.euler_angles(field_turns(exact.x, exact.z, stage)))] if turned else []
     layers = task.patterns()
     couplings: list[Block] = []
     if task.entangles and any(layers):
@@ -149,7 +150,7 @@ def period(experiment: Experiment, device: Device) -> Period:
     model = experiment.circuits.parameters
     several = max(1, len(patterns(device, experiment.qubits)))
     palindrome = model["hamiltonian"] == "xxz" and model["order"] == 2 and model["coupling"] != 0
-    return Period("step", 2 * several - 1 if palindrome else several, float(model["step"]), "1/coupling units")
+    return Period("step", 2 * several - 1 if palindrome else several, float(model["step"]), "1/energy")
 
 
 FAMILY = Family(

@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from rcbench.arrays import BoolArray, FloatArray
+from rcbench.arrays import BoolArray, IntArray
 from rcbench.shots.evidence import exchange, repeats, wording
 from rcbench.shots.evidence.bit_order import FoundOrder, find_order, gains_by_run
 from rcbench.shots.evidence.cases import (
@@ -43,6 +43,8 @@ if TYPE_CHECKING:
     from rcbench.kit import Kit
 
 Progress = Callable[[int, int, str], None]
+MOSTLY = 0.5
+LEAST_TOLD = 0.01  # v of a circuit below this: no number of shots one could ask for
 MOST_ORDERS = 3  # different wrong orders in one lane
 CLEAR = math.log(1 / ALPHA)
 POOLED_STRUCTURE = 3.0  # sigmas of structure, all doubtful runs of a lane together, that make a search worth while
@@ -104,17 +106,21 @@ def find_evidence(
     for number, members in enumerate(lanes):
         step(number, len(lanes), members[0].row.experiment)
         lane, stuck = _without_stuck_bits(members, ideals, len(lanes))
-        findings += [wording.stuck(lane, members, bit) for bit in stuck]
+        findings += [wording.stuck(members, bit, len(lanes)) for bit in stuck]
         if lane is None or lane.n_bits < FEWEST_BITS:
             continue
-        study = LaneStudy(lane, own_evidence(lane, ideals, len(cases)))
-        findings += _orders(study, ideals, len(cases))
-        studies.append(study)
-    settled = match_circuits(kit, shots, studies, ideals, len(cases), step)
-    findings += settled
+        studies.append(LaneStudy(lane, own_evidence(lane, ideals, len(cases))))
+    # a few doubtful runs are rather misfiled than in another order, most of a lane the other way round
+    few = [study for study in studies if len(study.doubtful) <= MOSTLY * len(study.lane.cases)]
+    findings += match_circuits(kit, shots, few, ideals, len(cases), step)
+    in_order = [_orders(study, ideals, len(cases)) for study in studies]
+    findings += [finding for found in in_order for finding in found]
+    if len(few) < len(studies) or any(in_order):
+        findings += match_circuits(kit, shots, studies, ideals, len(cases), step)
     findings += exchange.with_reference(cases, ideals)
-    findings += _left_over(studies, len(cases))
-    findings += repeats.same_shots(cases, series)
+    twice = repeats.same_shots(cases, series)
+    findings += twice
+    findings += _left_over(studies, len(cases), {key for finding in twice for key in finding.runs})
     findings += repeats.drifting(cases, studies, ideals, series, shots)
     return sorted(wording.joined(findings), key=lambda f: (not f.told, f.kind == "not-examined", f.kind == "drift"))
 
@@ -162,7 +168,9 @@ def _orders(study: LaneStudy, ideals: Ideals, runs_in_all: int) -> list[Finding]
         strength = float(own.structure[doubtful].sum()) / math.sqrt(len(doubtful))
         labels = _labels(study.lane)
         thorough = study.lane.returns or strength > POOLED_STRUCTURE or bool(own.orphan[doubtful].any())
-        answers = [inverted_bits(pool), find_order(pool, labels, thorough=thorough)]
+        inverted = inverted_bits(pool)
+        # the long search only where no simple answer is at hand
+        answers = [inverted, find_order(pool, labels, thorough=thorough and inverted is None)]
         told = [answer for answer in answers if answer is not None]
         if not told:
             break
@@ -222,8 +230,8 @@ def _who_takes(study: LaneStudy, order: Order, ideals: Ideals) -> list[int]:
     return np.flatnonzero(takes).tolist()
 
 
-def _left_over(studies: Sequence[LaneStudy], runs_in_all: int) -> list[Finding]:
-    """Another kit, orphans, and what cannot be told."""
+def _left_over(studies: Sequence[LaneStudy], runs_in_all: int, twice: set[RunKey]) -> list[Finding]:
+    """Another kit, orphans, and what cannot be told; twice: runs whose shots are known to count twice."""
     findings: list[Finding] = []
     alone = []
     for study in studies:
@@ -238,11 +246,11 @@ def _left_over(studies: Sequence[LaneStudy], runs_in_all: int) -> list[Finding]:
                 study.own.structure[places], study.own.unexplained[places], square[places], explained[places]
             )
         if found is not None:
-            findings.append(wording.of_another_kit(study.lane, found, runs_in_all))
+            findings.append(wording.of_another_kit(study.lane, found))
             continue
         alone.append(study)
     for study in alone:
-        orphans = [p for p in study.doubtful if study.own.orphan[p]]
+        orphans = [p for p in study.doubtful if study.own.orphan[p] and study.lane.cases[p].key not in twice]
         if orphans:
             findings.append(wording.orphans(study.lane, study.own, orphans, runs_in_all))
         findings += _cannot_tell(study, runs_in_all)
@@ -264,33 +272,33 @@ def _cannot_tell(study: LaneStudy, runs_in_all: int) -> list[Finding]:
     out = []
     for depth, places in sorted(by_depth.items()):
         alike = np.flatnonzero((of_depth == depth) & study.own.known)
-        out.append(wording.cannot_tell(study.lane, study.own, places, alike, shots_that_tell(study, alike, runs_in_all)))
+        out.append(wording.cannot_tell(study.lane, places, shots_that_tell(study, places, alike, runs_in_all)))
     return out
 
 
-def shots_that_tell(study: LaneStudy, places: Sequence[int] | FloatArray, runs_in_all: int) -> tuple[int | None, bool]:
+def shots_that_tell(
+    study: LaneStudy, places: Sequence[int], alike: IntArray, runs_in_all: int
+) -> tuple[int | None, bool]:
     """Shots a circuit with which nine of ten such runs would be told; whether that is only a bound from below.
 
     None where no number would: the ideal outcome is the floor. For sampled circuits M = v ((z_a + z_b) / (F v))^2, with F
-    the mean over runs; where it is not clear of 0, its upper limit, and the answer is a bound.
-    """
-    from scipy.stats import norm
+    the mean over the runs of that depth; where it is not clear of 0, its upper limit, and the answer is a bound.
 
+    Args:
+        places: the runs in question. alike: all runs of their depth.
+    """
     own, lane = study.own, study.lane
-    chosen = np.asarray(places, dtype=np.int64)
+    nats = math.log(runs_in_all / ALPHA) + math.log(10)  # ten fidelities were tried, about
     if lane.returns:
-        nats = float(own.best[chosen].sum()) / float(lane.shots[chosen].sum())
-        needed = 1.5 * (math.log(runs_in_all / ALPHA) + 4)
-        return (math.ceil(needed / nats), False) if nats > 0 else (int(10 * lane.shots[chosen].max()), True)
-    v = own.cross.excess[chosen]
-    usable = v > 0.01
-    if not usable.any():
+        found = float(own.best[alike].sum()) / float(lane.shots[alike].sum())
+        return (math.ceil(1.5 * nats / found), False) if found > 0 else (int(10 * lane.shots[alike].max()), True)
+    usable = alike[own.cross.excess[alike] > LEAST_TOLD]
+    asked = own.cross.excess[list(places)]
+    if not len(usable) or asked.max() < LEAST_TOLD:
         return None, False
-    fidelity = own.cross.fidelity[chosen][usable]
-    weight = np.square(v[usable] / own.cross.error[chosen][usable])
-    mean, error = float(fidelity @ weight / weight.sum()), float(weight.sum()) ** -0.5
+    weight = np.square(own.cross.excess[usable] / own.cross.error[usable])
+    mean, error = float(own.cross.fidelity[usable] @ weight / weight.sum()), float(weight.sum()) ** -0.5
     bound = mean < 2 * error
-    f = mean + 1.645 * error if bound else mean
-    v0 = float(v[usable].mean())
-    z = float(norm.isf(ALPHA / runs_in_all)) + 1.28
-    return math.ceil(v0 * (z / (max(min(f, 1.0), 1e-4) * v0)) ** 2), bound
+    fidelity = min(max(mean + 1.645 * error if bound else mean, 1e-4), 1.0)
+    v = float(np.median(asked[asked > LEAST_TOLD]))
+    return math.ceil(((math.sqrt(2 * nats) + 1.28) / fidelity) ** 2 / v), bound

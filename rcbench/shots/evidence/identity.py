@@ -7,7 +7,7 @@ A run is doubtful where its own circuit does not explain it. That run comes from
 - c explains orphans.CLAIMED_SHARE of the coincidences among its shots, or is its commonest outcome where it returns one;
 - its likelihood under c exceeds that under its own circuit, and every other, by more than ln(candidates / ALPHA) nats.
 
-Runs that exchange places are judged together: the runs are assigned to places so that the total likelihood is greatest,
+Runs that exchange places vouch for each other, so the first condition is not asked of them: the runs are assigned to places so that the total likelihood is greatest,
 and a cycle of m among S runs is told where it gains more than m ln S - ln m + ln(1 / ALPHA) nats.
 
 Doubtful runs times circuits times outcomes set the cost; a campaign in which every run is explained pays only for the
@@ -25,7 +25,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rcbench.arrays import FloatArray, IntArray
+from rcbench.arrays import BoolArray, FloatArray, IntArray
 from rcbench.shots.evidence import orphans, scores
 from rcbench.shots.evidence.cases import Lane
 from rcbench.shots.evidence.finding import ALPHA
@@ -39,10 +39,16 @@ _NEVER = -1e12
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Fit:
-    """How runs fit one circuit each. mixed, best: (runs,) nats over the floor; -inf and 0 where it is no candidate."""
+    """How runs fit one circuit each; everything (runs,).
+
+    Args:
+        mixed, best: nats over the floor; -inf and 0 where it is no candidate.
+        sure: whether data of a foreign circuit could not look like it.
+    """
 
     mixed: FloatArray
     best: FloatArray
+    sure: BoolArray
 
 
 def sampled_fit(
@@ -60,21 +66,21 @@ def sampled_fit(
     ratio = p[index] * inverse_floor[index]
     v = float(np.square(p, dtype=np.float64) @ inverse_floor) - 1
     runs = len(starts)
-    mixed, best = np.full(runs, -np.inf), np.zeros(runs)
+    mixed, best, sure = np.full(runs, -np.inf), np.zeros(runs), np.zeros(runs, dtype=np.bool_)
     if v < scores.LEAST_EXCESS:
-        return Fit(mixed, best)
+        return Fit(mixed, best, sure)
     cross = scores.crossed(ratio, counts, starts, np.full(runs, v))
     self_fidelity = np.clip((found.excess + found.error) / v, 0, 1)
     z = cross.mean / np.sqrt(v / lane.shots + self_fidelity * overlap**2)
     look = np.flatnonzero(cross.mean > WORTH_LOOKING * np.sqrt(v / lane.shots))
     if not len(look):
-        return Fit(mixed, best)
+        return Fit(mixed, best, sure)
     picked, sub_starts = entries(starts, len(index), look)
     likelihood = scores.log_likelihoods(ratio[picked], counts[picked], sub_starts)
     best[look] = scores.best(likelihood)
-    can = (z > norm.isf(ALPHA / tests)) & orphans.consistent(found, cross, orphans.CLAIMED_SHARE)
+    can = orphans.consistent(found, cross, orphans.CLAIMED_SHARE)
     mixed[look] = np.where(can[look], scores.mixture(likelihood), -np.inf)
-    return Fit(mixed, best)
+    return Fit(mixed, best, z > norm.isf(ALPHA / tests))
 
 
 def returned_fit(lane: Lane, target: int) -> Fit:
@@ -84,8 +90,10 @@ def returned_fit(lane: Lane, target: int) -> Fit:
     likelihood = scores.returned_log_likelihoods(distance, counts, starts, lane.n_bits)
     if lane.bias.any():  # that was over the uniform floor; the lane's own is another
         likelihood += np.add.reduceat(counts * np.log(lane.inverse_floor_at(lane.bias) / 2.0**lane.n_bits), starts)[:, None]
-    can = orphans.is_mode(*at_mode(distance, counts, starts))
-    return Fit(np.where(can, scores.mixture(likelihood), -np.inf), scores.best(likelihood))
+    at_target, most = at_mode(distance, counts, starts)
+    chance = [orphans.product_chance(case.index, case.counts, case.n_bits, target) for case in lane.cases]
+    can = orphans.is_mode(at_target, most) & orphans.stands_out(at_target, np.array(chance) * lane.shots)
+    return Fit(np.where(can, scores.mixture(likelihood), -np.inf), scores.best(likelihood), can)
 
 
 def at_mode(distance: IntArray, counts: IntArray, starts: IntArray) -> tuple[FloatArray, FloatArray]:

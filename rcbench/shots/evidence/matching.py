@@ -140,15 +140,15 @@ def _all_fits(
     inverses = [_inverse(lane) for _, lane in lanes]
     overlaps = _overlaps(candidates, ideals, dropped)
     shape = (len(doubts), len(candidates))
-    mixed, best = np.full(shape, -np.inf), np.zeros(shape)
+    mixed, best, sure = np.full(shape, -np.inf), np.zeros(shape), np.zeros(shape, dtype=np.bool_)
     for column, row in enumerate(candidates):
         step(column, len(candidates), "all against all")
         for (where, lane), inverse in zip(lanes, inverses, strict=True):
             overlap = overlaps.get((row.experiment, row.depth), 0.0)
             fit = _fit(lane, row, ideals, inverse, overlap, len(doubts) * len(candidates))
             if fit is not None:
-                mixed[where, column], best[where, column] = fit.mixed, fit.best
-    return Fit(mixed, best)
+                mixed[where, column], best[where, column], sure[where, column] = fit.mixed, fit.best, fit.sure
+    return Fit(mixed, best, sure)
 
 
 def _overlaps(
@@ -222,7 +222,7 @@ class _Assignment:
     def _clear(self, run: int, column: int) -> bool:
         """Whether one circuit stands out for a run against its own and all others."""
         limit = math.log(len(self.doubts) * len(self.candidates) / ALPHA)
-        return self._lead(run, column) > limit
+        return bool(self.fits.sure[run, column]) and self._lead(run, column) > limit
 
     def _lead(self, run: int, column: int) -> float:
         others = self.fits.best[run].copy()

@@ -58,6 +58,11 @@ def own_evidence(lane: Lane, ideals: Ideals, runs_in_all: int) -> Own:
         orphan = known & orphans.is_orphan(collided, cross, limit)
     else:
         orphan = known & ~confirmed & (structure > limit)
+    explained, _ = orphans.explained_excess(cross)
+    for place in np.flatnonzero(orphan).tolist():
+        case = lane.cases[place]
+        excess, error = orphans.many_bit_structure(case.index, case.counts, case.n_bits)
+        orphan[place] = excess > max(limit, orphans.LEAST_SIGMAS) * error and excess * orphans.SHARE > explained[place]
     return Own(known, mixed, best, cross, collided, structure, unexplained, confirmed & ~orphan, orphan)
 
 

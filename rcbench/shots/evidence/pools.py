@@ -213,11 +213,18 @@ class ReturnPool:
         return scores.returned_log_likelihoods(distance, self.counts, self.starts, self.n_bits)
 
     def explains(self, order: Order) -> bool:
-        """As Pool: the targets are the commonest outcomes."""
+        """As Pool: the targets are the commonest outcomes, and more common than independent bits make them."""
         at_target = np.add.reduceat(np.where(self._distance(order) == 0, self.counts, 0), self.starts)
         most = np.maximum.reduceat(self.counts, self.starts)
         sure = np.maximum(most - orphans.MODE_SIGMAS * np.sqrt(most), 0)
-        return float(at_target.sum()) >= orphans.CLAIMED_SHARE * float(sure.sum())
+        shots = np.add.reduceat(self.counts, self.starts)
+        ones = np.add.reduceat(self.bits * self.counts[:, None], self.starts) / np.maximum(shots, 1)[:, None]
+        ones = ones[:, list(order.source)]
+        flipped = np.isin(np.arange(self.n_bits), order.flipped)
+        agree = np.where((self.targets == 1) != flipped, ones, 1 - ones)
+        by_chance = float(shots @ agree.prod(axis=1))
+        clear = orphans.stands_out(np.array([at_target.sum()]), np.array([by_chance]))
+        return bool(clear[0]) and float(at_target.sum()) >= orphans.CLAIMED_SHARE * float(sure.sum())
 
     def _distance(self, order: Order) -> IntArray:
         mended = self.bits[:, list(order.source)]
@@ -249,11 +256,8 @@ class ReturnPool:
         return ReturnClimb(self.agreement(), list(source))
 
     def fidelity(self, order: Order) -> float:
-        """Mean product of Z of bits and targets, if bits come in this order."""
-        sign = np.ones(self.n_bits)
-        sign[list(order.flipped)] = -1
-        picked = self.agreement()[list(order.source), np.arange(self.n_bits)]
-        return float((sign * picked).mean() / max(int(self.counts.sum()), 1))
+        """Mean of (-1/2) to the Hamming distance from the target, if bits come in this order."""
+        return float((-0.5) ** self._distance(order) @ self.counts) / max(int(self.counts.sum()), 1)
 
     def _target_of_each(self) -> IntArray:
         return np.repeat(self.targets, np.diff(np.append(self.starts, len(self.bits))), axis=0)

@@ -14,6 +14,7 @@ from rcbench.shots.evidence.finding import ALPHA
 from rcbench.shots.evidence.orders import Order
 from rcbench.shots.evidence.pools import Pool, ReturnPool, SampledPool, walsh_transform
 
+FEWEST_RUNS = 3  # for any set of bits: two runs that are exchanged look like one, if each should return a string
 MOST_MOVED = 0.03  # a bit that takes its other value more often is a bad qubit, not a stuck bit
 SURVIVING = 0.2  # even a strong relaxation leaves this much of the other value's ideal share
 LEAST_SHARE = 0.02
@@ -68,7 +69,10 @@ def inverted_bits(pool: Pool) -> FoundOrder | None:
         flipped = tuple(bit for bit in range(n) if mask >> (n - 1 - bit) & 1)
         if not flipped:
             continue
-        candidates = math.log(n + 1) if len(flipped) in (1, n) else n * math.log(2)
+        simple = len(flipped) in (1, n)
+        if not simple and len(half.depth_groups()) < FEWEST_RUNS:
+            continue
+        candidates = math.log(n + 1) if simple else n * math.log(2)
         name = f"bit {flipped[0]} inverted" if len(flipped) == 1 else f"bits {' '.join(map(str, flipped))} inverted"
         name = "every bit inverted" if len(flipped) == n else name
         found = accepted(half, other, Order(name, tuple(range(n)), flipped), candidates)

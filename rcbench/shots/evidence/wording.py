@@ -43,12 +43,11 @@ def not_examined(note: str) -> Finding:
     return Finding(kind="not-examined", text=note, told=False)
 
 
-def stuck(lane: Lane | None, members: Sequence[Case], bit: StuckBit) -> Finding:
-    """A bit with one value."""
+def stuck(members: Sequence[Case], bit: StuckBit, lanes: int) -> Finding:
+    """A bit with one value; lanes: how many were asked for such bits."""
     row = members[0].row
     qubit = row.measured_qubits[bit.bit]
     label = f", device qubit {row.physical_qubits[qubit]}" if row.physical_qubits else ""
-    del lane
     text = (
         f"bit {bit.bit} (qubit {qubit}{label}) reads {bit.value} in {1 - bit.moved:.1%} of the shots of "
         f"{row.experiment}, where the circuits set it to both"
@@ -59,7 +58,7 @@ def stuck(lane: Lane | None, members: Sequence[Case], bit: StuckBit) -> Finding:
         runs=keys_of(members),
         files=files_of(members),
         evidence=bit.nats,
-        limit=math.log(2 * members[0].n_bits / ALPHA),
+        limit=math.log(2 * members[0].n_bits * lanes / ALPHA),
         measure=NATS,
         mend="send the shots again once the bit is read; or plan the experiment on qubits without this one",
     )
@@ -176,11 +175,10 @@ def orphans(lane: Lane, own: Own, places: Sequence[int], runs_in_all: int) -> Fi
     )
 
 
-def of_another_kit(lane: Lane, found: OtherKit, runs_in_all: int) -> Finding:
+def of_another_kit(lane: Lane, found: OtherKit) -> Finding:
     """A whole experiment that matches nothing."""
     from rcbench.shots.evidence.seed import LEAST_SIGMAS
 
-    del runs_in_all
     text = (
         f"the shots of {lane.cases[0].row.experiment} hold structure (a self-fidelity of some {found.self_fidelity:.2f}), "
         f"and not one of {named(lane.cases)} matches a circuit of this kit, in any bit order: a kit of another seed, or "
@@ -197,10 +195,8 @@ def of_another_kit(lane: Lane, found: OtherKit, runs_in_all: int) -> Finding:
     )
 
 
-def cannot_tell(
-    lane: Lane, own: Own, places: Sequence[int], alike: Sequence[int] | np.ndarray, needed: tuple[int | None, bool]
-) -> Finding:
-    """Runs of one depth that cannot be told from noise."""
+def cannot_tell(lane: Lane, places: Sequence[int], needed: tuple[int | None, bool]) -> Finding:
+    """Runs of one depth that cannot be told from noise; needed: shots that would tell, and whether that is a bound."""
     cases = [lane.cases[place] for place in places]
     row = cases[0].row
     shots = int(np.median([case.shots for case in cases]))
@@ -210,7 +206,6 @@ def cannot_tell(
         text += "; the ideal outcome is the same as noise, so no number of shots tells"
     else:
         text += f"; {'more than ' if bound else 'about '}{_round(max(count, shots + 1))} shots a circuit would tell"
-    del own, alike
     return Finding(kind="identity", text=text, told=False, runs=keys_of(cases), files=files_of(cases), shots_needed=count)
 
 
