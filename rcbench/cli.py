@@ -184,19 +184,33 @@ def _missing(campaign: Path, out: Path, shots: Path, bit_order: str | None) -> f
 
 @cli.command()
 @click.argument("source", type=_EXISTING, metavar="CAMPAIGN|KIT")
-@click.option("--out", type=_NEW, required=True, help="Folder for the predictions.")
+@click.option("--out", type=_NEW, help="Folder for the predictions.")
+@click.option("--estimate", is_flag=True, help="Only say what it will cost, after a short timing of this machine.")
 @_simulation_options
-def predict(source: Path, out: Path, **how: Any) -> None:
+def predict(source: Path, out: Path | None, estimate: bool, **how: Any) -> None:
     """Predict every signature, for an ideal device and for the stated error budget."""
+    options = _options(**how)
+    if estimate:
+        from rcbench.cost import cost_text, expected_cost
+
+        click.echo(cost_text(expected_cost(source, options=options), options.memory_limit))
+        return
+    if out is None:
+        raise InputError("--out", "nothing", "a folder for the predictions, or --estimate")
     from rcbench.files import read_provenance
     from rcbench.predictions import predict as predict_all
 
     with _steps() as step:
-        table = predict_all(source, out, options=_options(**how), progress=step("predicting"))
-    facts = read_provenance(out)
-    click.echo(
-        f"{out / 'predictions.csv'}: {len(table)} rows in {facts.get('seconds')} s, "
-        f"peak memory {int(str(facts.get('peak_memory_bytes', 0))) / 2**20:.0f} MiB"
+        table = predict_all(source, out, options=options, progress=step("predicting"))
+    click.echo(f"{out / 'predictions.csv'}: {len(table)} rows in {_cost_of(read_provenance(out))}")
+
+
+def _cost_of(facts: Any) -> str:
+    """What a finished prediction took, from its provenance."""
+    return (
+        f"{facts.get('seconds')} s, of these {facts.get('evolution_seconds')} s evolution at "
+        f"{float(facts.get('amplitudes_times_gates_per_second', 0)) / 1e9:.3g} billion amplitudes x gates a second; "
+        f"peak memory {int(facts.get('peak_memory_bytes', 0)) / 2**20:.0f} MiB"
     )
 
 
@@ -204,18 +218,61 @@ def predict(source: Path, out: Path, **how: Any) -> None:
 @click.argument("kit", type=_EXISTING)
 @click.argument("shots", type=_EXISTING)
 @click.option("--skip-bad", type=_NEW, metavar="FILE", help="Set broken rows aside into this file instead of refusing.")
+@click.option("--quick", is_flag=True, help="Only what the files say; leave out what the shots give evidence of.")
+@click.option("--apply", type=_NEW, metavar="OUT", help="Write mended shots into a new folder; the originals stay.")
+@click.option(
+    "--max-qubits",
+    type=click.IntRange(1, 40),
+    default=20,
+    show_default=True,
+    help="Larger circuits are not simulated; each qubit more doubles time and memory.",
+)
 @_bit_order
 @_strict
-def check(kit: Path, shots: Path, skip_bad: Path | None, bit_order: str | None, strict: bool) -> None:
-    """Say what came back: complete, right circuits, right bit order?"""
+def check(
+    kit: Path,
+    shots: Path,
+    skip_bad: Path | None,
+    quick: bool,
+    apply: Path | None,
+    max_qubits: int,
+    bit_order: str | None,
+    strict: bool,
+) -> None:
+    """Say what came back: complete, right circuits, right bit order?
+
+    First what the files say. Then what the shots themselves give evidence of, with the ideal circuits simulated: shots
+    of another circuit, bits in another order, stuck or inverted, the same shots twice, drift, another kit.
+    """
     from rcbench.kit import read_kit
     from rcbench.shots.audit import check_shots
     from rcbench.shots.reader import read_shots
 
+    if quick and apply is not None:
+        raise InputError(
+            "--apply", str(apply), "without --quick: what to mend is found by the examination it leaves out"
+        )
     source = read_kit(kit)
-    found = check_shots(source, read_shots(shots, source, bit_order=bit_order, skip_bad=skip_bad))
+    returned = read_shots(shots, source, bit_order=bit_order, skip_bad=skip_bad)
+    found = check_shots(source, returned)
     click.echo(found.text())
-    raise click.exceptions.Exit(int(strict and found.needs_attention))
+    attention = found.needs_attention
+    if not quick:
+        from rcbench.shots.evidence.check import examine_files
+
+        with _steps() as step:
+            text, told = examine_files(
+                source,
+                shots,
+                returned,
+                bit_order=bit_order,
+                max_qubits=max_qubits,
+                apply=apply,
+                progress=step("examining"),
+            )
+        click.echo(f"\n{text}")
+        attention |= told
+    raise click.exceptions.Exit(int(strict and attention))
 
 
 @cli.command()

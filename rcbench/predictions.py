@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 import time
-from collections import defaultdict
+from collections import Counter, defaultdict
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
@@ -20,6 +20,7 @@ from rcbench.campaign import Campaign, Experiment
 from rcbench.circuits.circuit import Circuit
 from rcbench.device import Device
 from rcbench.engine.distribution import Distribution
+from rcbench.engine.work import Work, collecting
 from rcbench.errors import InputError
 from rcbench.estimators import estimator
 from rcbench.estimators.sample import Group, Measured, Run
@@ -33,7 +34,7 @@ if TYPE_CHECKING:
     from rcbench.kit import Kit
     from rcbench.protocol import Protocol
     from rcbench.signatures.ensemble import Gathering
-    from rcbench.signatures.found import Found
+    from rcbench.signatures.found import Found, Question
 
 Progress = Callable[[int, int, str], None]
 # The scatter of a signature between single error trajectories, as a share of its range: sets how many are drawn
@@ -236,10 +237,7 @@ def predict_instance(
     """Both predictions of all circuits of one instance."""
     from rcbench.engine.predict import distributions
 
-    estimators = [estimator(name) for name in protocol.estimators]
     trajectories = options.trajectories or trajectories_for(writer.experiment)
-    ideal: dict[str, Distribution] = {}
-    noisy: dict[str, Distribution] = {}
     simulated = distributions(
         [run.load() for run in runs],
         noise,
@@ -249,27 +247,57 @@ def predict_instance(
         memory_limit=options.memory_limit,
         threads=options.threads,
     )
+    name, left = writer.experiment.name, Counter(run.depth for run in runs)
+    ideal: dict[str, Distribution] = {}
+    noisy: dict[str, Distribution] = {}
+    found: dict[tuple[str, int], list[tuple[Measured, dict[str, float]]]] = {}
     for place, perfect, real in simulated:
+        depth = runs[place].depth
         ideal[runs[place].circuit_id] = perfect
         if real is not None:
             noisy[runs[place].circuit_id] = real
-    models = [("ideal", ideal, "state vector")]
-    if noisy:
-        models.append(("noise-model", noisy, f"{trajectories} trajectories a circuit"))
-    for model, samples, method in models:
-        for group in group_runs(writer.experiment.name, runs, samples, ideal):
-            for family in estimators:
-                shifts = _shifts(family.apply, group) if model == "noise-model" else {}
-                for value in family.apply(group):
-                    if not math.isfinite(value.value) or not math.isfinite(value.std_error):
-                        continue
-                    name = (value.signature, value.region)
-                    deltas = {
-                        source: moved[name] - value.value
-                        for source, moved in shifts.items()
-                        if math.isfinite(moved.get(name, math.nan))
-                    }
-                    writer.add(group.depth, group.instance, model, value, deltas, method)
+        left[depth] -= 1
+        if left[depth]:
+            continue
+        # a depth is worked out as soon as it is whole: distributions of all depths at once can outgrow the memory
+        members = [run for run in runs if run.depth == depth]
+        found["ideal", depth] = depth_values(name, protocol, members, ideal, ideal, shift=False)
+        if real is not None:
+            found["noise-model", depth] = depth_values(name, protocol, members, noisy, ideal, shift=True)
+        for run in members:
+            del ideal[run.circuit_id]
+            noisy.pop(run.circuit_id, None)
+    methods = {"ideal": "state vector", "noise-model": f"{trajectories} trajectories a circuit"}
+    for model, depth in sorted(found):
+        for value, deltas in found[model, depth]:
+            writer.add(depth, runs[0].instance, model, value, deltas, methods[model])
+
+
+def depth_values(
+    experiment: str,
+    protocol: Protocol,
+    runs: Sequence[PlannedRun],
+    samples: dict[str, Distribution],
+    ideal: dict[str, Distribution],
+    *,
+    shift: bool,
+) -> list[tuple[Measured, dict[str, float]]]:
+    """The finite values of the runs of one depth, each with its change for a standard uncertainty of each source."""
+    found = []
+    for group in group_runs(experiment, runs, samples, ideal):
+        for family in (estimator(name) for name in protocol.estimators):
+            shifts = _shifts(family.apply, group) if shift else {}
+            for value in family.apply(group):
+                if not math.isfinite(value.value) or not math.isfinite(value.std_error):
+                    continue
+                name = (value.signature, value.region)
+                deltas = {
+                    source: moved[name] - value.value
+                    for source, moved in shifts.items()
+                    if math.isfinite(moved.get(name, math.nan))
+                }
+                found.append((value, deltas))
+    return found
 
 
 def _shifts(apply: Callable[[Group], list[Measured]], group: Group) -> dict[str, dict[tuple[str, str], float]]:
@@ -302,27 +330,33 @@ def predict_states(
         writer.add(found.depth, instance, "ideal", value, {}, found.method)
 
 
+def question_of(campaign: Campaign, experiment: Experiment, options: Options) -> Question:
+    """What an experiment without a protocol asks of its circuits."""
+    from rcbench.signatures.found import Question
+
+    return Question(
+        keys=experiment.signatures,
+        n_qubits=experiment.n_qubits,
+        regions=experiment.regions,
+        sites=experiment.sites,
+        seed=campaign.seed,
+        dtype=options.dtype,
+        memory_limit=options.memory_limit,
+        threads=options.threads,
+    )
+
+
 def _predict_without_protocol(
     campaign: Campaign, experiment: Experiment, options: Options, progress: Callable[[int], None]
 ) -> _Writer:
     """States, operators and ensembles of the ideal circuits, and the Haar value beside each."""
     from rcbench.signatures import check_keys
     from rcbench.signatures.ensemble import Gathering, of_ensemble
-    from rcbench.signatures.found import Question
 
     writer = _Writer(experiment, "")
     try:
         check_keys(experiment.signatures)
-        question = Question(
-            keys=experiment.signatures,
-            n_qubits=experiment.n_qubits,
-            regions=experiment.regions,
-            sites=experiment.sites,
-            seed=campaign.seed,
-            dtype=options.dtype,
-            memory_limit=options.memory_limit,
-            threads=options.threads,
-        )
+        question = question_of(campaign, experiment, options)
         gathering = Gathering(question, experiment.depths, experiment.instances)
         for instance in range(experiment.instances):
             predict_states(writer, campaign.device, campaign.seed, instance, options, gathering)
@@ -355,30 +389,34 @@ def predict(
     Raises:
         InputError: bad campaign or kit, a folder of other inputs, or a state that does not fit the memory.
     """
-    source, out, options = Path(source), Path(out), options or Options()
-    kit: Kit | None = None
-    if source.is_dir():
-        from rcbench.kit import read_kit
-
-        kit = read_kit(source)
-        campaign = kit.campaign
-        identity = kit.hash
-    else:
-        from rcbench.campaign import dump_campaign, load_campaign
-
-        campaign = load_campaign(source)
-        identity = sha256_bytes(dump_campaign(campaign).encode())
+    out, options = Path(out), options or Options()
+    campaign, kit, identity = open_source(Path(source))
     inputs = {"source": identity, "trajectories": options.trajectories, "dtype": options.dtype}
     with output_folder(out, "predict", inputs) as folder:
         if folder.complete:
             return read_predictions(out / "predictions.csv")
-        started = time.perf_counter()
-        frame = predict_parts(campaign, kit, out / ".parts", options, progress)
+        started, work = time.perf_counter(), Work()
+        with collecting(work):
+            frame = predict_parts(campaign, kit, out / ".parts", options, progress)
         write_csv(out / "predictions.csv", frame, PREDICTIONS)
         write_parquet(out / "predictions.parquet", frame, PREDICTIONS)
         remove_parts(out / ".parts")
-        folder.finish(seconds=round(time.perf_counter() - started, 3), peak_memory_bytes=peak_memory())
+        seconds = round(time.perf_counter() - started, 3)
+        folder.finish(seconds=seconds, peak_memory_bytes=peak_memory(), **work.facts())
         return frame
+
+
+def open_source(source: Path) -> tuple[Campaign, Kit | None, str]:
+    """The campaign of a campaign file or a kit folder, the kit if it is one, and a hash of what it asks for."""
+    if source.is_dir():
+        from rcbench.kit import read_kit
+
+        kit = read_kit(source)
+        return kit.campaign, kit, kit.hash
+    from rcbench.campaign import dump_campaign, load_campaign
+
+    campaign = load_campaign(source)
+    return campaign, None, sha256_bytes(dump_campaign(campaign).encode())
 
 
 def predict_parts(

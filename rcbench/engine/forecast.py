@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import statistics
 import time
 from collections.abc import Sequence
 
@@ -16,7 +17,7 @@ from rcbench.engine.operators import COSTS
 from rcbench.engine.predict import batch_count
 from rcbench.engine.state import compile_circuit, zero_state
 from rcbench.engine.threads import Pool, thread_count
-from rcbench.engine.trajectories import BLOCK_QUBITS, noisy_program
+from rcbench.engine.trajectories import BLOCK_QUBITS, NoisyProgram, noisy_program
 from rcbench.engine.tree import Node, build_tree
 from rcbench.engine.work import Work
 
@@ -69,8 +70,9 @@ def _add_size(
     batches = batch_count(n)
     run = batches * -(-trajectories // batches)
     start = time.perf_counter()
-    steps = sum(_steps_of_a_trajectory(circuit, noise, dtype) for circuit in sample) / len(sample)
+    noisy = [noisy_program(circuit, noise, dtype) for circuit in sample]
     preparing = (time.perf_counter() - start) / len(sample)
+    steps = sum(_steps_of_a_trajectory(program) for program in noisy) / len(sample)
     amplitudes = 2.0**n * steps * run * len(circuits)
     cheaper = cost / max(1, operators)
     total.trajectories += run * len(circuits)
@@ -78,7 +80,7 @@ def _add_size(
     parallel = min(threads, batches) if n <= BLOCK_QUBITS else 1
     summing = 2.0**n * _SUMMING * run * len(circuits)
     total.seconds += (amplitudes * cheaper + summing) / speed / parallel + (preparing + _FIXED_SECONDS) * len(circuits)
-    saved = min(mixture.SAVED_BYTES, int(operators / len(sample)) * memory.bytes_needed(n, dtype))
+    saved = max(mixture.saved_states(program.sweeps, dtype) for program in noisy) * memory.bytes_needed(n, dtype)
     total.holds(mixture.bytes_needed(n, dtype, batches, len(SOURCES)) + saved)
 
 
@@ -92,9 +94,8 @@ def _gates_in(root: Node) -> int:
     return gates
 
 
-def _steps_of_a_trajectory(circuit: Circuit, noise: NoiseModel, dtype: str) -> float:
+def _steps_of_a_trajectory(noisy: NoisyProgram) -> float:
     """Mean number of operators from the first error on, given that there is one."""
-    noisy = noisy_program(circuit, noise, dtype)
     if not len(noisy.places):
         return 0.0
     first = np.exp(-noisy.hazard[:-1]) * noisy.places.probability
@@ -112,10 +113,10 @@ def _speed(n_qubits: int, dtype: str, threads: int) -> float:
         for qubit in range(layer % 2, n - 1, 2):
             builder.add("iswap", [qubit, qubit + 1])
         builder.next_layer()
-    trial, state, best = compile_circuit(builder.build(), dtype), zero_state(n, dtype), 0.0
+    trial, state, speeds = compile_circuit(builder.build(), dtype), zero_state(n, dtype), []
     with Pool(threads) as pool:
         for _ in range(_TRIALS):
             start = time.perf_counter()
             apply_plan(state, trial, pool)
-            best = max(best, 2.0**n * len(trial.operators) / (time.perf_counter() - start))
-    return best
+            speeds.append(2.0**n * len(trial.operators) / (time.perf_counter() - start))
+    return statistics.median(speeds)

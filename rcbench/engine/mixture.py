@@ -55,13 +55,13 @@ def run_patterns(noisy: NoisyProgram, patterns: Patterns, dtype: str, pool: Pool
     work.trajectories += len(patterns)
     work.holds(
         bytes_needed(n, dtype, patterns.batches, len(sums.scored))
-        + _saved_count(sweeps, dtype) * memory.bytes_needed(n, dtype)
+        + saved_states(sweeps, dtype) * memory.bytes_needed(n, dtype)
     )
     return sums
 
 
-def _saved_count(sweeps: Plan, dtype: str) -> int:
-    """Error-free states that are kept."""
+def saved_states(sweeps: Plan, dtype: str) -> int:
+    """Error-free states that are kept to start trajectories from."""
     n = sweeps.operators.n_qubits
     candidates = len(sweeps.operators) if n <= BLOCK_QUBITS else len(sweeps.active)
     return int(max(1, min(candidates, SAVED_BYTES // memory.bytes_needed(n, dtype))))
@@ -73,7 +73,7 @@ def _run_in_blocks(patterns: Patterns, changes: Changes, sweeps: Plan, dtype: st
     bits = max(operators.n_qubits, LANES[real.name].bit_length() - 1)
     size, batches, sources = 2**bits, patterns.batches, patterns.scores.shape[1]
     numbers = write_matrices(changes.matrices, sweeps.operators.kind[changes.op] == ONE).astype(real)
-    every = -(-len(operators) // _saved_count(sweeps, dtype))
+    every = -(-len(operators) // saved_states(sweeps, dtype))
     saved = aligned((2 << bits) * (-(-len(operators) // every)), real).reshape(-1, 2 << bits)
     saved[0] = 0
     saved[0, 0] = 1
@@ -163,7 +163,7 @@ def _run_in_sweeps(patterns: Patterns, changes: Changes, sweeps: Plan, dtype: st
 def _error_free_states(sweeps: Plan, dtype: str, pool: Pool) -> tuple[list[ComplexArray], IntArray]:
     """States of the error-free run and the sweep that each one stands before."""
     n, count = sweeps.operators.n_qubits, len(sweeps.active)
-    first_sweep = np.unique(np.linspace(0, count, _saved_count(sweeps, dtype), endpoint=False).astype(np.int64))
+    first_sweep = np.unique(np.linspace(0, count, saved_states(sweeps, dtype), endpoint=False).astype(np.int64))
     state: ComplexArray = aligned(2**n, np.dtype(dtype))
     state[:] = 0
     state[0] = 1

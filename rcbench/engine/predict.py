@@ -16,7 +16,7 @@ from rcbench.engine.noise import SOURCES, NoiseModel
 from rcbench.engine.readout import flip, measured
 from rcbench.engine.threads import Pool
 from rcbench.engine.trajectories import NoisyProgram, Patterns, draw_patterns, noisy_program
-from rcbench.engine.work import Work
+from rcbench.engine.work import Work, or_current
 from rcbench.errors import InputError
 from rcbench.randomness import Draw
 
@@ -57,7 +57,7 @@ def distributions(
         seed: of the error patterns; they depend on it and on the circuit's rows alone.
         dtype, memory_limit, threads: as in `tree.walk`.
         progress: called with (circuits done, circuits in all) after each.
-        work: what is done is added to it.
+        work: what is done is added to it; to the one that collects where None.
     Yields:
         (index of the circuit, ideal, noisy), in no particular order; noisy is None without a noise model. Classical
         bit 0 is the most significant. Readout flips are in the noisy one only. Its tilts hold those of "one_qubit",
@@ -76,7 +76,7 @@ def distributions(
                 raise InputError("noise", f"{noise.n_qubits} qubits", f"the circuit's {circuit.n_qubits} qubits")
             needed = bytes_needed(circuit.n_qubits, dtype, batch_count(circuit.n_qubits), len(SOURCES))
             memory.require(needed, memory_limit, f"trajectories of {circuit.n_qubits} qubits")
-    work = Work() if work is None else work
+    work = or_current(work)
     states = tree.walk(circuits, dtype=dtype, memory_limit=memory_limit, threads=threads, work=work)
     with Pool(threads) as pool:
         for done, (index, state) in enumerate(states):

@@ -20,7 +20,7 @@ from rcbench.engine.blocks import Plan, aligned, apply_plan
 from rcbench.engine.program import check_order
 from rcbench.engine.state import compile_circuit, zero_state
 from rcbench.engine.threads import Pool
-from rcbench.engine.work import Work
+from rcbench.engine.work import Work, or_current
 
 
 @dataclass(slots=True, eq=False)
@@ -118,7 +118,7 @@ def walk(
         dtype: "complex64" or "complex128".
         memory_limit: bytes that may be taken; the free memory where None.
         threads: cores to use; all that this process may use where None.
-        work: what is done is added to it.
+        work: what is done is added to it; to the one that collects where None.
     Yields:
         (index of the circuit, (2**n,) state), in no particular order. The array is reused after the next step and must
         not be written to.
@@ -127,7 +127,7 @@ def walk(
     """
     for circuit in circuits:
         check_order(circuit)
-    work = Work() if work is None else work
+    work = or_current(work)
     with Pool(threads) as pool:
         for n_qubits in sorted({circuit.n_qubits for circuit in circuits}):
             members = [index for index, circuit in enumerate(circuits) if circuit.n_qubits == n_qubits]

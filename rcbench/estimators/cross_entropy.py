@@ -13,6 +13,8 @@ from rcbench.signatures.output import porter_thomas_distance
 SIGNATURES = ("xeb_linear", "xeb_fidelity", "self_fidelity", "collision_probability", "porter_thomas_ks")
 # Below this v the ideal distribution is uniform up to single-precision rounding and a ratio to it means nothing
 LEAST_EXCESS = 1e-6
+# With fewer coincident pairs than this expected of uniform bitstrings, most instances see none: no value and no scatter
+LEAST_PAIRS = 5
 
 
 def apply(group: Group) -> list[Measured]:
@@ -28,7 +30,8 @@ def of_run(run: Run) -> list[Measured]:
     - xeb_linear: X = D <p(x)> - 1. Under white noise its mean is F v.
     - xeb_fidelity: X / v, unbiased under white noise for any p with v > 0; for local noise at shallow depth it exceeds
       the fidelity. NaN where v vanishes.
-    - collision_probability: C, over pairs of different shots; unbiased.
+    - collision_probability: C, over pairs of different shots; unbiased. NaN where uniform bitstrings would give fewer
+      than LEAST_PAIRS coincident pairs.
     - self_fidelity: the signed square root of F_self^2 = (D C - 1) / v. F_self^2 is unbiased and may fall below 0; a
       mean over instances must be taken of the squares (`pool.ROOT_MEAN_SQUARE`), since the root bends it towards 0.
     - porter_thomas_ks: of an ideal prediction only.
@@ -47,7 +50,8 @@ def of_run(run: Run) -> list[Measured]:
         linear = Value(dimension * mean.value - 1, dimension * mean.std_error)
         found += [("xeb_linear", linear), ("xeb_fidelity", _ratio(linear, excess))]
     if run.sample.shots != 1:  # one shot has no pair
-        collision = run.sample.collision()
+        few = 0 < run.sample.shots and run.sample.shots * (run.sample.shots - 1) < 2 * LEAST_PAIRS * dimension
+        collision = Value(math.nan, math.nan) if few else run.sample.collision()
         found.append(("collision_probability", collision))
         if run.ideal is not None:
             square = Value(dimension * collision.value - 1, dimension * collision.std_error)

@@ -11,8 +11,9 @@
     dual_unitary       dual-unitary brickworks: light rays
     conserving         charge-conserving brickworks: diffusion
     matchgate          free fermions: spreading without scrambling
+    hamiltonian        spin models by exact diagonalisation, for circuits that are steps of time
 
-Take `haar` for the late-time value of a circuit that scrambles, `brickwork` for its way there, the last four for the
+Take `haar` for the late-time value of a circuit that scrambles, `brickwork` for its way there, the last five for the
 families that must differ. Where signatures have a key, the function has its name: `haar.tmi_renyi2(2, 2, 2, 8)`.
 Entropies are in nats, depth is in layers of two-qubit gates, qubit 0 is the most significant bit. A value that does
 not exist for a size is an InputError. Sources are named at each function, "from memory" where not looked up again.
@@ -31,6 +32,7 @@ __all__ = [
     "fidelity",
     "frame_potentials",
     "haar",
+    "hamiltonian",
     "kicked_ising",
     "matchgate",
     "porter_thomas",

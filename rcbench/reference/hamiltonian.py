@@ -1,10 +1,10 @@
 """Spin models by exact diagonalisation, to 12 qubits: what Trotter circuits tend to as their step gets shorter.
 
 H = sum over couplers of (xx XX + yy YY + zz ZZ) + sum over qubits of (x_j X_j + z_j Z_j), Pauli operators, not spins.
-All its matrix elements are real. Time and inverse temperature are in units of 1 over the unit of these numbers.
+All its matrix elements are real. Time is in units of 1 over the unit of these numbers. Thermal values are in
+`signatures.thermal`.
 
-Source: elementary; the thermal value that a local quantity tends to: Deutsch, Phys. Rev. A 43, 2046 (1991) and
-Srednicki, Phys. Rev. E 50, 888 (1994) (from memory).
+Source: elementary.
 """
 
 from __future__ import annotations
@@ -82,36 +82,6 @@ class Spectrum:
     def energy(self, state: ComplexArray) -> float:
         """Mean energy of a state, (D,)."""
         return float(np.abs(self.vectors.T @ state) ** 2 @ self.energies)
-
-    def inverse_temperature(self, energy: float) -> float:
-        """The inverse temperature whose thermal state has this mean energy; below 0 above the middle of the spectrum.
-
-        Raises:
-            InputError: an energy that is not inside the spectrum.
-        """
-        from scipy.optimize import brentq
-
-        low, high = float(self.energies[0]), float(self.energies[-1])
-        if not low < energy < high:
-            raise InputError("energy", energy, f"an energy inside the spectrum, above {low:.6g} and below {high:.6g}")
-        bound = 1.0 / (high - low)
-        while not self._mean(bound) < energy < self._mean(-bound):
-            bound *= 2
-            if bound > 1e6 / (high - low):
-                raise InputError("energy", energy, "an energy further from the ends of the spectrum")
-        return float(brentq(lambda beta: self._mean(beta) - energy, -bound, bound, xtol=1e-13))
-
-    def thermal(self, diagonal: FloatArray, inverse_temperature: float) -> float:
-        """Thermal mean of an observable that is diagonal in the computational basis, (D,) its values."""
-        return float(np.asarray(diagonal) @ (self.vectors**2 @ self._weights(inverse_temperature)))
-
-    def _weights(self, beta: float) -> FloatArray:
-        exponent = -beta * self.energies
-        weights = np.exp(exponent - exponent.max())
-        return np.asarray(weights / weights.sum())
-
-    def _mean(self, beta: float) -> float:
-        return float(self._weights(beta) @ self.energies)
 
 
 def diagonalise(matrix: FloatArray) -> Spectrum:

@@ -54,7 +54,7 @@ def _block(experiment: Experiment, key: str, rows: pd.DataFrame) -> list[Row]:
     if rows.empty:
         return []
     row = signature(key)
-    size = rows[["measured", "ideal", "noise_model"]].abs().max(axis=None)
+    size = rows[["measured", "ideal", "noise_model", "margin"]].abs().max(axis=None)
     power = small_power(size)
     scale = 10.0**power
     digits = decimals_for((rows["std_error"] * scale).median())

@@ -16,6 +16,7 @@ from rcbench.errors import InputError, raise_all
 from rcbench.files import write_text
 from rcbench.shots.declarations import EXECUTION_FILE, SHOTS_FILE, Declared, Execution, read_declared, read_execution
 from rcbench.shots.intake import AT_ONCE, Intake, Part, Runs, by_key, merge_times
+from rcbench.shots.mended import MENDED_FILE, mended_notes
 from rcbench.shots.records import BadRow, Irregular, Place
 from rcbench.shots.shots import Problem, Roster, ShotFile, Shots
 from rcbench.shots.sources import Source, list_sources
@@ -31,7 +32,8 @@ def read_shots(
     """Read the measured bitstrings of a kit.
 
     Args:
-        path: a file (CSV, JSON, NPZ, Parquet) or a folder of them; shots.toml and execution.toml beside it count.
+        path: a file (CSV, JSON, NPZ, Parquet) or a folder of them; shots.toml, execution.toml and mended.json beside
+            it count.
         kit: the kit, for its roster.
         bit_order: `q0-first` or `q0-last`, where shots.toml does not say it.
         skip_bad: write bad rows aside to this CSV file (file, line, reason, content) instead of refusing their file;
@@ -46,6 +48,7 @@ def read_shots(
     execution = read_execution(folder)
     reading = _Reading(kit, declared, keep_all=bool(skip_bad))
     reading.check_names(sources, folder)
+    reading.problems += mended_notes(folder, str(getattr(kit, "hash", "")))
     for source in sources:
         reading.read(source)
     shots = reading.finish(execution, _declaration_files(folder), others, path)
@@ -71,7 +74,7 @@ def bad_rows_csv(bad_rows: Iterable[tuple[str, BadRow]]) -> str:
 
 def _declaration_files(folder: Path) -> list[ShotFile]:
     """The files beside the shots that say how to read them: a changed one is another input."""
-    present = [name for name in (EXECUTION_FILE, SHOTS_FILE) if (folder / name).exists()]
+    present = [name for name in (EXECUTION_FILE, MENDED_FILE, SHOTS_FILE) if (folder / name).exists()]
     return [ShotFile(name, Source(folder / name).sha256(), 0) for name in present]
 
 

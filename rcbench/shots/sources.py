@@ -11,6 +11,7 @@ from typing import BinaryIO, cast
 
 from rcbench.errors import InputError
 from rcbench.shots.declarations import EXECUTION_FILE, SHOTS_FILE
+from rcbench.shots.mended import MENDED_FILE
 
 FORMATS = {".csv": "csv_file", ".json": "json_file", ".npz": "npz_file", ".parquet": "parquet_file"}
 ENDINGS = ".csv, .csv.gz, .json, .json.gz, .npz, .parquet"
@@ -98,7 +99,7 @@ def list_sources(path: Path, skip_bad: Path | None) -> tuple[list[Source], list[
         raise InputError("skip_bad", str(skip_bad), "a file outside the folder of shots, or it would be read as shots")
     sources, others = [], []
     for entry in sorted(path.iterdir(), key=lambda p: p.name):
-        if entry.name.startswith(".") or entry.name in (SHOTS_FILE, EXECUTION_FILE):
+        if entry.name.startswith(".") or entry.name in (SHOTS_FILE, EXECUTION_FILE, MENDED_FILE):
             continue
         source = Source(entry)
         if entry.is_file() and source.format:

@@ -85,7 +85,7 @@ class Gathering:
 
     def squares(self, which: str, depth: int) -> FloatArray:
         """|<i|j>|^2 of all pairs at a depth, with the trace product for unitaries."""
-        members = np.array((self._unitaries if which == "unitaries" else self._states)[depth])
+        members = (self._unitaries if which == "unitaries" else self._states)[depth]
         squares = frames.overlaps(members, memory_limit=self.question.memory_limit)
         # Choi states have the trace over D as their product
         return squares * 4.0**self.question.n_qubits if which == "unitaries" else squares

@@ -30,7 +30,8 @@ class Question:
     Args:
         keys: of the registry. n_qubits: of the circuits. regions: of experiment qubits, halves' first where none.
         sites: named qubits: `probe`, where V starts (qubit 0 where none); `butterfly`, where W acts (all where none);
-            `flipped`, the input bits in which twins differ (the middle one where none).
+            `ones`, the input bits that are 1 in the first of two twins; `flipped`, the bits in which the second
+            differs (the middle one where none).
         seed: of random states. dtype, memory_limit, threads: as `engine.tree.walk`.
     """
 
@@ -44,7 +45,7 @@ class Question:
     threads: int | None = None
 
     def __post_init__(self) -> None:
-        for name in ("probe", "butterfly", "flipped"):
+        for name in ("probe", "butterfly", "ones", "flipped"):
             for site in self.sites.get(name, ()):
                 if not 0 <= site < self.n_qubits:
                     raise InputError(f"sites.{name}", site, f"qubits of the experiment, 0 to {self.n_qubits - 1}")
@@ -71,9 +72,12 @@ class Question:
     @property
     def twin_inputs(self) -> tuple[str, str]:
         """Both input bit strings of twins."""
-        flipped = tuple(self.sites.get("flipped", ())) or (self.n_qubits // 2,)
-        second = "".join("1" if qubit in flipped else "0" for qubit in range(self.n_qubits))
-        return "0" * self.n_qubits, second
+        ones = frozenset(self.sites.get("ones", ()))
+        flipped = frozenset(self.sites.get("flipped", ()) or (self.n_qubits // 2,))
+        return self._bits(ones), self._bits(ones ^ flipped)
+
+    def _bits(self, ones: frozenset[int]) -> str:
+        return "".join("1" if qubit in ones else "0" for qubit in range(self.n_qubits))
 
     @property
     def resources(self) -> dict[str, object]:

@@ -6,6 +6,7 @@ overlap for states. Haar has the least value; k = 1 to 4. Pairs i = j are left o
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from math import ceil, comb, sqrt
 
@@ -17,6 +18,7 @@ from rcbench.errors import InputError
 from rcbench.reference import frame_potentials as reference
 
 ORDERS = (1, 2, 3, 4)
+_BLOCK = 2**26  # bytes of the members brought into one matrix product
 LEAST_INSTANCES = 4  # the jackknife leaves one out and still needs pairs
 
 
@@ -43,26 +45,29 @@ class FramePotential:
         return self.value / self.haar - 1
 
 
-def overlaps(members: ComplexArray, *, memory_limit: int | None = None) -> FloatArray:
-    """|<i|j>|^2 of all pairs of members, as matrix products over blocks of the vectors.
+def overlaps(members: Sequence[ComplexArray] | ComplexArray, *, memory_limit: int | None = None) -> FloatArray:
+    """|<i|j>|^2 of all pairs of members, as matrix products over blocks of their entries.
 
     Args:
-        members: (instances, size) vectors, or (instances, D, D) matrices with the trace as product; may be a memmap.
+        members: vectors (size,), or matrices (D, D) with the trace of i^dag j as product; one array of them, which may
+            be a memmap, or a list.
         memory_limit: bytes for the blocks and the result, the free memory where None.
     Returns:
         (instances, instances) double precision.
     Raises:
-        InputError: too little memory for the result and one block.
+        InputError: too little memory for the result and blocks of one entry.
     """
-    flat = members.reshape(len(members), -1)
-    count, size = flat.shape
-    result = 24 * count * count  # the sums in double precision, and their squares
+    count = len(members)
+    flat = [np.reshape(member, -1) for member in members]
+    size, item = flat[0].size, flat[0].itemsize
+    result = 24 * count * count  # sums in double precision, and their squares
     limit = memory.available_memory() if memory_limit is None else memory_limit
-    columns = max(1, min(size, (limit - result) // max(2 * 16 * count, 1)))
-    memory.require(result + 2 * 16 * count * min(columns, size), memory_limit, f"overlaps of {count} instances")
+    entry = 2 * item * count  # a block and its conjugate
+    columns = max(1, min(size, _BLOCK // entry, (limit - result) // entry))
+    memory.require(result + entry * columns, memory_limit, f"overlaps of {count} instances")
     gram = np.zeros((count, count), dtype=np.complex128)
     for start in range(0, size, columns):
-        block = np.ascontiguousarray(flat[:, start : start + columns])
+        block = np.stack([member[start : start + columns] for member in flat])
         gram += block.conj() @ block.T
     return np.square(gram.real) + np.square(gram.imag)
 
@@ -80,7 +85,7 @@ def estimate(squares: FloatArray, k: int) -> tuple[float, float]:
     """Frame potential and its standard error from |<i|j>|^2 of all pairs.
 
     The mean over i != j, a U-statistic, has no bias; leaving out one instance at a time gives its error, which holds
-    also where members are not spread invariantly.
+    also where members are not spread invariantly. Where they are, as for Haar, it is too large by up to sqrt(2).
 
     Args:
         squares: (instances, instances) as `overlaps`. k: 1 to 4.

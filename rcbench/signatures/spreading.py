@@ -16,13 +16,13 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rcbench.arrays import FloatArray
+from rcbench.arrays import BoolArray, FloatArray
 from rcbench.errors import InputError
 
 LEAST_DEPTHS = 3
 LEAST_POINTS = 6
 LEAST_INSTANCES = 3
-LOWEST, HIGHEST = 0.02, 0.98  # 1 - F within these belongs to the front; outside there is nothing to learn from
+STILL = 1e-6  # scatter between instances below which a point is exact, as ahead of the light cone
 
 
 def occupation_weights(weights: FloatArray) -> FloatArray:
@@ -98,7 +98,8 @@ class FrontFit:
         width: standard deviation of the front in sites after one layer, growing as its square root; width_error.
         shift: r0 in sites. height: a, the plateau of 1 - F behind the front.
         misfit: root mean square of the residuals of 1 - F. chi_square: sum of squared residuals over their errors a
-            degree of freedom, NaN without errors; points are correlated, so 1 is a guide and no exact target.
+            degree of freedom, of the points that scatter between instances, NaN without errors; points are correlated
+            and the law holds for many layers, so 1 is a guide and no exact target.
         points: used by the fit. instances: behind the errors.
     """
 
@@ -121,14 +122,14 @@ def _front(inputs: tuple[FloatArray, FloatArray], v: float, r0: float, s: float,
     return np.asarray(a / 2 * erfc((distance - r0 - v * depth) / (abs(s) * np.sqrt(2 * depth))))
 
 
-def _window(mean: FloatArray, depths: FloatArray, distances: FloatArray) -> np.ndarray:
-    """The points of the front: not ahead of it, not on the plateau, and not where it has met the last site."""
-    use = (mean > LOWEST) & (mean < HIGHEST) & (depths[:, None] > 0) & (distances[None, :] > 0)
-    met_the_end = mean[:, -1] > 0.5
-    return use & ~met_the_end[:, None]
+def _window(mean: FloatArray, depths: FloatArray, distances: FloatArray) -> BoolArray:
+    """All points of the depths at which the front has left its site and not yet met the last one."""
+    under_way = (depths > 0) & (mean.max(axis=1) > 0.5) & (mean[:, -1] < 0.5)
+    use: BoolArray = under_way[:, None] & (distances > 0)
+    return use
 
 
-def _solve(mean: FloatArray, inputs: tuple[FloatArray, FloatArray], use: np.ndarray, start: FloatArray) -> FloatArray:
+def _solve(mean: FloatArray, inputs: tuple[FloatArray, FloatArray], use: BoolArray, start: FloatArray) -> FloatArray:
     from scipy.optimize import curve_fit
 
     limits = ([0.0, -10.0, 0.02, 0.2], [10.0, 10.0, 20.0, 2.0])
@@ -166,8 +167,8 @@ def fit_front(
     if seen < LEAST_DEPTHS or use.sum() < LEAST_POINTS:
         raise InputError(
             "front",
-            f"{int(use.sum())} points at {seen} depths",
-            f"{LEAST_POINTS} points at {LEAST_DEPTHS} depths or more before the front meets the end of the line: "
+            f"{seen} depths at which the front is under way",
+            f"{LEAST_DEPTHS} depths or more before the front meets the end of the line, and {LEAST_POINTS} points: "
             "take more depths below 1.6 times the distance to the end, or a longer line with the operator at its edge",
         )
     grid = np.meshgrid(place, layer)
@@ -181,7 +182,8 @@ def fit_front(
         left_out = np.array([_solve((total - one) / (count - 1), inputs, use, found) for one in samples])
         errors = np.sqrt((count - 1) / count * np.square(left_out - left_out.mean(axis=0)).sum(axis=0))
         scatter = samples.std(axis=0, ddof=1)[use] / np.sqrt(count)
-        chi = float(np.square(residuals / np.maximum(scatter, 1e-6)).sum() / max(len(residuals) - 4, 1))
+        moving = scatter > STILL
+        chi = float(np.square(residuals[moving] / scatter[moving]).sum() / max(int(moving.sum()) - 4, 1))
     return FrontFit(
         velocity=float(found[0]),
         velocity_error=float(errors[0]),

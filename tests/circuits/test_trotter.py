@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from circuit_cases import make_device, phase_distance, unitary
-from model_cases import NATIVES, at, draw, line, made
+from model_cases import NATIVES, at, draw, line, made, operator
 from scipy.linalg import expm
 
 from rcbench.circuits.families.trotter import terms
@@ -68,6 +68,17 @@ def test_the_error_at_a_time_falls_as_the_step_to_the_power_of_the_order(order, 
         errors.append(np.linalg.norm(found - expected[1] * overlap / abs(overlap)))
     assert errors[0] < 0.3
     assert np.log2(np.array(errors[:-1]) / errors[1:]) == pytest.approx([order] * 2, abs=0.1)
+
+
+@pytest.mark.parametrize("model", [ISING, XXZ], ids=["ising", "xxz"])
+def test_the_listed_terms_are_the_same_hamiltonian(model):
+    exact = terms(made("trotter", line(4), 0, **model))
+    whole = sum(bond(a, b, 4, exact) for a, b in exact.couplers) + fields(4, exact)
+    found = np.zeros((16, 16), dtype=complex)
+    for value, text in exact.listed():
+        letters = {int(factor[1:]): factor[0] for factor in text.split()}
+        found += value * operator("".join(letters.get(site, "I") for site in range(4)))
+    assert np.abs(found - whole).max() < 1e-14
 
 
 def test_xxz_keeps_the_number_of_ones_to_rounding():

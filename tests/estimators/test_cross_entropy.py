@@ -157,3 +157,21 @@ def test_a_mistyped_estimator_gets_the_names():
 
     with pytest.raises(InputError, match="did you mean 'butterfly-echo'"):
         estimator("butterfly")
+
+
+def test_collisions_give_no_value_where_the_shots_are_too_few_to_see_any():
+    """500 shots of 24 qubits: uniform bitstrings give 500 * 499 / 2 / 2**24 = 0.007 coincident pairs."""
+    rng = np.random.default_rng(3)
+    bits = rng.integers(0, 2, size=(500, 24))
+    run = Run(
+        circuit_id="c",
+        role="sample",
+        setting="",
+        n_qubits=24,
+        measured_qubits=tuple(range(24)),
+        target=None,
+        params={},
+        sample=Outcomes.from_bits(bits),
+    )
+    (value,) = (v for v in of_run(run) if v.signature == "collision_probability")
+    assert np.isnan(value.value)

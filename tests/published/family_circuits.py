@@ -25,9 +25,10 @@ def draw(
     depths,
     instance: int,
     *,
+    gates: str = "",
     layout: str = "line",
     native: str = "sqrt-iswap",
-    one_qubit="",
+    one_qubit: str = "",
     **model,
 ) -> dict[int, Circuit]:
     """Circuits of one instance by depth, on an invented line or ring."""
@@ -39,22 +40,27 @@ def draw(
         couplers=tuple(sorted(couplers)),
         two_qubit=(NativeGate(name=native),),
     )
-    circuits = Circuits(family=family, one_qubit=one_qubit, model=tuple(model.items()))
+    circuits = Circuits(family=family, two_qubit=gates, one_qubit=one_qubit, model=tuple(model.items()))
     experiment = Experiment(name="one", circuits=circuits, depths=tuple(depths), instances=1, qubits=tuple(range(n)))
     return draw_circuits(experiment, device, 11, instance)
 
 
-def unitary(circuit: Circuit) -> np.ndarray:
-    """(2**n, 2**n), row by row; qubit 0 the most significant bit."""
-    n = circuit.n_qubits
+def unitaries(circuits: dict[int, Circuit]) -> dict[int, np.ndarray]:
+    """(2**n, 2**n) of each depth, from the rows of the deepest one; qubit 0 the most significant bit."""
+    deepest = circuits[max(circuits)]
+    n = deepest.n_qubits
     state = np.eye(2**n, dtype=np.complex128).reshape((2,) * n + (2**n,))
-    for matrix, pair in zip(circuit.row_matrices(), circuit.qubits.tolist(), strict=True):
+    stops = {len(circuit): depth for depth, circuit in circuits.items()}
+    found = {stops[0]: state.reshape(2**n, 2**n)} if 0 in stops else {}
+    for row, (matrix, pair) in enumerate(zip(deepest.row_matrices(), deepest.qubits.tolist(), strict=True)):
         if matrix is not None:
             qubits = [q for q in pair if q >= 0]
             k = len(qubits)
             state = np.tensordot(matrix.reshape((2,) * (2 * k)), state, (range(k, 2 * k), qubits))
             state = np.moveaxis(state, range(k), qubits)
-    return state.reshape(2**n, 2**n)
+        if row + 1 in stops:
+            found[stops[row + 1]] = state.reshape(2**n, 2**n)
+    return found
 
 
 def at(letter: str, site: int, n: int) -> np.ndarray:

@@ -54,6 +54,8 @@ class World:
     kit: Kit
     ideal: dict[str, np.ndarray]
     rng: np.random.Generator = field(default_factory=lambda: np.random.default_rng(1))
+    fidelity: float = 1.0
+    other: World | None = None
 
     def probabilities(self, circuit_id: str) -> np.ndarray | None:
         return self.ideal.get(circuit_id)
@@ -68,7 +70,14 @@ def make_world(
         CAMPAIGN.format(seed=seed, n=n, depths=list(depths), instances=instances, shots=shots, more=more, limits=limits)
     )
     kit = build_kit(load_campaign(path), folder / "kit")
-    return World(kit, {row.base_id: cirq_probabilities(to_cirq(kit.circuit(row)), row) for row in kit.rows if row.base_id == row.circuit_id})
+    return World(
+        kit,
+        {
+            row.base_id: cirq_probabilities(to_cirq(kit.circuit(row)), row)
+            for row in kit.rows
+            if row.base_id == row.circuit_id
+        },
+    )
 
 
 def without_measurements(circuit: cirq.Circuit) -> cirq.Circuit:

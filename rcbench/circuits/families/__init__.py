@@ -29,8 +29,7 @@ import numpy as np
 
 from rcbench.circuits.circuit import Circuit
 from rcbench.circuits.families import brickwork, charge_conserving, dual_unitary, kicked_ising, matchgate, trotter
-from rcbench.circuits.families.brickwork import RANDOM
-from rcbench.circuits.families.family import Blocks, Family, Period, Task, Value, compiles, native_for
+from rcbench.circuits.families.family import RANDOM, Blocks, Family, Period, Task, Value, native_for, served
 from rcbench.circuits.gates import CODE
 from rcbench.circuits.schedule import couplers_among, layers
 from rcbench.device import Device
@@ -100,16 +99,6 @@ def task(experiment: Experiment, device: Device, seed: int, instance: int, depth
     return Task(experiment, device, experiment.depths[-1] if depth is None else depth, draw)
 
 
-def served(device: Device) -> list[tuple[str, str]]:
-    """The (two-qubit gate, native gate) pairs that the device can run, its own gates first.
-
-    A random gate that several native gates serve is compiled to the one the device lists first. Families with gates of
-    their own run where `haar` is served.
-    """
-    pairs = [(gate.name, gate.name) for gate in device.two_qubit]
-    return pairs + [(name, gate.name) for name in RANDOM for gate in device.two_qubit if compiles(gate)]
-
-
 def period(experiment: Experiment, device: Device) -> Period | None:
     """One period of circuits that repeat; None where every layer is drawn afresh.
 
@@ -150,7 +139,7 @@ def check(experiment: Experiment, device: Device) -> None:
     if not couplers and circuits.one_qubit == "none":
         raise InputError("one_qubit", "none", "a one-qubit layer, since a single qubit has no other gates")
     if name in RANDOM or name in MODELS:
-        native_for(name, device, served(device))
+        native_for(name, device)
     family_of(name).check(experiment, device)
 
 

@@ -15,6 +15,7 @@ from rcbench.circuits import native
 from rcbench.circuits.cliffords import ORDER, decompose_cliffords
 from rcbench.circuits.ensembles import LAYERS, haar_unitaries, one_qubit_layer
 from rcbench.circuits.families.family import (
+    RANDOM,
     Block,
     Blocks,
     Family,
@@ -32,8 +33,6 @@ from rcbench.errors import InputError
 
 if TYPE_CHECKING:
     from rcbench.campaign import Experiment
-
-RANDOM = ("haar", "clifford")  # two-qubit ensembles; all other two-qubit gates are the native gates themselves
 
 
 def blocks(task: Task) -> Blocks:

@@ -29,6 +29,7 @@ if TYPE_CHECKING:  # the campaign asks the families for their parameters
     from rcbench.campaign import Experiment
 
 Value = float | int | str
+RANDOM = ("haar", "clifford")  # two-qubit ensembles of a brickwork; its other two-qubit gates are the native gates
 STARTS = ("none", "alternating", *LAYERS)  # one-qubit layers that a circuit may begin with
 
 
@@ -211,13 +212,27 @@ class Family:
         )
 
 
-def native_for(name: str, device: Device, served: Sequence[tuple[str, str]] = ()) -> NativeGate:
-    """The native gate that any two-qubit unitary of the named kind is compiled to; served: pairs for the message."""
+def native_for(name: str, device: Device) -> NativeGate:
+    """The native gate that a two-qubit unitary is compiled to, the first that serves; name: of the gates, for errors.
+
+    Raises:
+        InputError: no native gate serves every unitary.
+    """
     for gate in device.two_qubit:
         if compiles(gate):
             return gate
-    listed = ", ".join(f"{one} on {two}" if one != two else one for one, two in served)
-    raise InputError("two_qubit", name, f"what {device.name} serves: {listed or 'no two-qubit gate'}")
+    listed = ", ".join(f"{one} on {two}" if one != two else one for one, two in served(device)) or "no two-qubit gate"
+    raise InputError("two_qubit", name, f"what {device.name} serves: {listed}")
+
+
+def served(device: Device) -> list[tuple[str, str]]:
+    """The (two-qubit gate, native gate) pairs that the device can run, its own gates first.
+
+    A random gate that several native gates serve is compiled to the one the device lists first. Families with gates of
+    their own run where `haar` is served.
+    """
+    pairs = [(gate.name, gate.name) for gate in device.two_qubit]
+    return pairs + [(name, gate.name) for name in RANDOM for gate in device.two_qubit if compiles(gate)]
 
 
 def compiles(gate: NativeGate) -> bool:

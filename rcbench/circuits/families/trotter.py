@@ -84,6 +84,15 @@ class Terms:
     x: FloatArray
     z: FloatArray
 
+    def listed(self) -> list[tuple[float, str]]:
+        """H as coefficients and Pauli strings, ``(0.8, "Z3 Z4")``; those of no weight left out."""
+        bonds = ((self.xx, "X"), (self.yy, "Y"), (self.zz, "Z"))
+        out = [(value, f"{letter}{a} {letter}{b}") for a, b in self.couplers for value, letter in bonds if value]
+        fields = zip((self.x, self.z), "XZ", strict=True)
+        return out + [
+            (value, f"{letter}{q}") for values, letter in fields for q, value in enumerate(values.tolist()) if value
+        ]
+
 
 def parameters(given: Mapping[str, object]) -> tuple[Parameter, ...]:
     """Those of all models, and those of the one that is named."""

@@ -1,15 +1,16 @@
 """Bits in another order than the kit asks for: which order, and how sure that is.
 
-First the orders that software makes (`orders.named_orders`), then any permutation: correlations of single bits and pairs
-are matched to those of the circuits, and from there and from random starts two bits at a time are exchanged while the
-likelihood grows. One order is asked of all runs together, each depth with a fidelity of its own. An order is told
-where
+First the orders that software makes (`orders.named_orders`), then any permutation: correlations of single bits and
+pairs are matched to those of the circuits, and from there and from random starts two bits at a time are exchanged
+while the likelihood grows. One order is asked of all runs together, each depth with a fidelity of its own. An order
+is told where
 
 - half of the shots prefer it to the order asked for by more than ln(candidates / ALPHA) nats: candidates are the named
-  ones, or n! for any permutation;
+  ones, or all permutations that move as few bits, n! in the end;
 - the other half, which had no part in the search, prefers it by more than ln(1 / ALPHA);
 - the circuits fit clearly better: the shots as asked keep less than KEPT of the fidelity;
-- the circuits then explain orphans.CLAIMED_SHARE of the structure that is there: shots of something else fit some order, too.
+- the circuits then explain orphans.CLAIMED_SHARE of the structure that is there: shots of something else fit some
+  order, too.
 
 A deep circuit keeps 2^-(n - cycles) of its cross-entropy under a permutation, so one exchange halves it. Where
 circuits are symmetric several orders fit alike: exchanges that change nothing are counted and told.
@@ -22,16 +23,18 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import NamedTuple
 
 from rcbench.arrays import FloatArray
 from rcbench.randomness import Draw
+from rcbench.shots.evidence import scores
 from rcbench.shots.evidence.finding import ALPHA
 from rcbench.shots.evidence.orders import Order, identity, named_orders
-from rcbench.shots.evidence.pools import Pool, evidence
-from rcbench.shots.evidence import scores
+from rcbench.shots.evidence.pools import CLEAR, Pool, evidence
 
 KEPT = 0.8
 RANDOM_STARTS = 3
+SUBSET = math.log(100)  # a part of a lane in another order than the rest is rarer than all of it
 TIE = 0.5  # nats: orders closer than this fit alike
 
 
@@ -39,8 +42,8 @@ TIE = 0.5  # nats: orders closer than this fit alike
 class FoundOrder:
     """An order that fits better than the one asked for.
 
-    gain, limit: nats in the half that was searched; held_out, held_limit: in the other half. alike: exchanges of two bits
-    after which it fits as well.
+    gain, limit: nats in the half that was searched; held_out, held_limit: in the other half. alike: exchanges of two
+    bits after which it fits as well.
     """
 
     order: Order
@@ -51,44 +54,92 @@ class FoundOrder:
     alike: tuple[tuple[int, int], ...] = ()
 
 
-def find_order(pool: Pool, labels: Sequence[str] = (), *, thorough: bool = True) -> FoundOrder | None:
-    """The order in which the bits of all runs of a pool come, where it is another than asked.
+class Candidate(NamedTuple):
+    """An order that may be told, and ln of the number of those that are as simple."""
 
-    Args:
-        pool: the runs. labels: the device's label of each bit's qubit. thorough: try any permutation, not only named ones.
+    order: Order
+    log_candidates: float
+
+
+class Runs:
+    """Runs of a lane of which some are doubtful, their shots split in two halves.
+
+    One order of all runs, which those that are explained bear too, is the simplest; one of the doubtful runs alone pays
+    SUBSET and ln of the number of ways to choose them.
     """
-    half, other = pool.split(Draw(0, "bit order", pool.n_bits))
-    named = named_orders(pool.n_bits, labels)
-    start = max(named, key=lambda order: evidence(half, order)[0])
-    found = accepted(half, other, start, math.log(len(named)))
-    if not thorough:
+
+    def __init__(self, pool: Pool, doubtful: Sequence[int]) -> None:
+        self.half, self.other = pool.split(Draw(0, "bit order", pool.n_bits))
+        self.n_bits, self.chosen = pool.n_bits, list(doubtful)
+        self.doubtful = self.half.some(doubtful)
+        self.runs = len(pool.depth_groups())
+
+    def told(self, order: Order, log_candidates: float, *, whole: bool = False) -> FoundOrder | None:
+        """An order, if both halves prefer it clearly to the one asked for; whole: only as the order of all runs."""
+        asked = identity(self.n_bits)
+        if order.source == asked.source and not order.flipped:
+            return None
+        if self.doubtful.fidelity(asked) > KEPT * self.doubtful.fidelity(order) or not self.doubtful.explains(order):
+            return None
+        found = None
+        if not (gains_by_run(self.half, order)[1] > CLEAR).any():
+            found = _told(self.half, self.other, order, log_candidates)
+        if found is None and not whole and len(self.chosen) < self.runs:
+            k, n = len(self.chosen), self.runs
+            choice = math.lgamma(n + 1) - math.lgamma(k + 1) - math.lgamma(n - k + 1) + SUBSET
+            found = _told(self.doubtful, self.other.some(self.chosen), order, log_candidates + choice)
         return found
-    sources = [start.source] if found else [half.matched(), *_random_starts(pool.n_bits)]
-    climbed = [climb(half, source) for source in sources]
-    best = max(climbed, key=lambda source: evidence(half, Order("", source, start.flipped if found else ()))[0])
-    names = {(order.source, order.flipped): order for order in named}
-    flipped = start.flipped if found else ()
-    order = names.get((best, flipped), Order("", best, flipped))
-    if found and order.source == found.order.source:
-        return _with_ties(pool, found)
-    general = accepted(half, other, order, math.lgamma(pool.n_bits + 1), than=found.order if found else None)
-    found = general or found
-    return _with_ties(pool, found) if found else None
 
 
-def accepted(half: Pool, other: Pool, order: Order, log_candidates: float, than: Order | None = None) -> FoundOrder | None:
-    """The order, if both halves prefer it clearly to another one (the one asked for)."""
-    before = than or identity(half.n_bits)
-    if order.source == before.source and order.flipped == before.flipped:
-        return None
-    gain = evidence(half, order)[0] - evidence(half, before)[1]
+def _told(half: Pool, other: Pool, order: Order, log_candidates: float) -> FoundOrder | None:
+    asked, held_limit = identity(half.n_bits), math.log(1 / ALPHA)
     limit = log_candidates + math.log(1 / ALPHA)
-    if gain <= limit:
-        return None
-    held_out, held_limit = evidence(other, order)[0] - evidence(other, before)[1], math.log(1 / ALPHA)
-    if held_out <= held_limit or half.fidelity(before) > KEPT * half.fidelity(order) or not half.explains(order):
+    gain = min(evidence(half, order)[0] - evidence(half, asked)[1], half.most_gain(order))
+    held_out = min(evidence(other, order)[0] - evidence(other, asked)[1], other.most_gain(order))
+    if gain <= limit or held_out <= held_limit:
         return None
     return FoundOrder(order, gain, limit, held_out, held_limit)
+
+
+def best_told(found: Sequence[FoundOrder | None]) -> FoundOrder | None:
+    """The one that exceeds its limit most."""
+    told = [one for one in found if one is not None]
+    return max(told, key=lambda one: one.gain - one.limit) if told else None
+
+
+def candidate_orders(
+    runs: Runs, labels: Sequence[str] = (), *, known: Sequence[Order] = (), thorough: bool = True
+) -> list[Candidate]:
+    """The orders that may be told of runs: the best named one, and the best that a search comes to.
+
+    Args:
+        runs: the runs. labels: the device's label of each bit's qubit.
+        known: orders that were found in other runs. thorough: try any permutation, not only named ones.
+    """
+    pool = runs.doubtful
+    named = [*named_orders(pool.n_bits, labels), *(one for one in known if len(one.source) == pool.n_bits)]
+    start = max(named, key=lambda order: evidence(pool, order)[0])
+    found = [Candidate(start, math.log(len(named)))]
+    fits = runs.told(*found[0]) is not None
+    if not thorough or (fits and start in known):
+        return found
+    # from a named order that fits, one may have to go on; from none, one starts where correlations lead
+    flipped = start.flipped if fits else ()
+    sources = [start.source] if fits else [pool.matched(), *_random_starts(pool.n_bits)]
+    climbed = [Order("", climb(pool, source), flipped) for source in sources]
+    top = max(climbed, key=lambda order: evidence(pool, order)[0])
+    # the runs that are not doubtful settle what the others leave open
+    names = {(one.source, one.flipped): one for one in named}
+    for source in dict.fromkeys((top.source, climb(runs.half, top.source))):
+        order = names.get((source, flipped), Order("", source, flipped))
+        found.append(Candidate(order, permutations(order, pool.n_bits)))
+    return found
+
+
+def permutations(order: Order, n_bits: int) -> float:
+    """ln of the number of orders that are as simple: those that move as few bits, and which number that is."""
+    moved = sum(bit != place for bit, place in enumerate(order.source))
+    return math.lgamma(n_bits + 1) - math.lgamma(n_bits - moved + 1) + math.log(n_bits)
 
 
 def climb(pool: Pool, start: Sequence[int]) -> tuple[int, ...]:
@@ -112,7 +163,7 @@ def _random_starts(n_bits: int) -> list[tuple[int, ...]]:
     return [tuple(draw.permutation(n_bits).tolist()) for _ in range(RANDOM_STARTS)]
 
 
-def _with_ties(pool: Pool, found: FoundOrder) -> FoundOrder:
+def with_ties(pool: Pool, found: FoundOrder) -> FoundOrder:
     """Name the exchanges of two bits that leave the fit as it is."""
     here = evidence(pool, found.order)[1]
     alike = []

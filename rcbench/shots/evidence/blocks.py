@@ -27,7 +27,9 @@ _FACTOR = np.uint64(0x9E3779B97F4A7C15)
 
 
 class Block(NamedTuple):
-    """Shots `first` + i of run `run` are shots `again_first` + i of run `again`, for i below `length`. nats: evidence."""
+    """Shots `first` + i of run `run` are shots `again_first` + i of run `again`, for i below `length`. nats:
+    evidence.
+    """
 
     run: int
     first: int

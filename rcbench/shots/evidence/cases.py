@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from rcbench.arrays import FloatArray, IntArray
+from rcbench.errors import InputError
 from rcbench.shots.evidence import scores
 from rcbench.shots.evidence.orders import Order
 from rcbench.shots.shots import RunKey, Shots
@@ -137,6 +138,7 @@ class Ideals:
 
     def __init__(self, ideal: Probabilities, max_qubits: int = MAX_QUBITS) -> None:
         self._ideal, self._max_qubits = ideal, max_qubits
+        self.refused: dict[str, str] = {}  # circuits that cannot be simulated, and why
         self._held: dict[str, FloatArray | None] = {}
         self._bytes = 0
 
@@ -146,8 +148,7 @@ class Ideals:
             return None
         base = row.base_id
         if base not in self._held:
-            found = self._ideal(base)
-            found = None if found is None else np.asarray(found, dtype=np.float32)
+            found = self._simulated(base)
             size = 0 if found is None else found.nbytes
             if self._bytes + size > CACHE_BYTES:
                 return _marginal(found, dropped)
@@ -155,12 +156,20 @@ class Ideals:
             self._bytes += size
         return _marginal(self._held[base], dropped)
 
+    def _simulated(self, base: str) -> FloatArray | None:
+        try:
+            found = self._ideal(base)
+        except InputError as error:  # too little memory, or a circuit that the engine does not take
+            self.refused[base] = f"{error.key}: {error.found}; allowed: {error.allowed}"
+            return None
+        return None if found is None else np.asarray(found, dtype=np.float32)
+
 
 def _marginal(p: FloatArray | None, dropped: tuple[int, ...]) -> FloatArray | None:
     if p is None or not dropped:
         return p
     n = len(p).bit_length() - 1
-    return p.reshape((2,) * n).sum(axis=dropped).reshape(-1)
+    return np.asarray(p.reshape((2,) * n).sum(axis=dropped).reshape(-1))
 
 
 LaneKey = tuple[str, tuple[int, ...], tuple[str, ...], bool]
@@ -260,7 +269,9 @@ def common_bias(cases: Sequence[Case], ideals: Ideals, dropped: tuple[int, ...] 
 
 
 def returned_bias(cases: Sequence[Case]) -> FloatArray:
-    """(n_bits,) mean Z of bits that return strings, beyond the strings; 0 where a bit should always return one value."""
+    """(n_bits,) mean Z of bits that return strings, beyond the strings; 0 where a bit should always return one
+    value.
+    """
     z = 1 - 2 * np.array([case.ones() for case in cases])
     shifts = np.arange(cases[0].n_bits - 1, -1, -1)
     up = (np.array([case.target for case in cases], dtype=np.int64)[:, None] >> shifts & 1) == 0
@@ -285,3 +296,11 @@ def lane_of(cases: Sequence[Case], ideals: Ideals, dropped: tuple[int, ...] = ()
         return Lane(kept, dropped, np.zeros(kept[0].n_bits), returned_bias(kept))
     bias = common_bias(kept, ideals, dropped)
     return Lane(kept, dropped, bias, bias)
+
+
+def entries(starts: IntArray, size: int, runs: Sequence[int] | IntArray) -> tuple[IntArray, IntArray]:
+    """Positions of the outcomes of some runs among all `size`, and where each run starts among those."""
+    ends = np.append(starts[1:], size)
+    picked = [np.arange(starts[run], ends[run]) for run in runs]
+    lengths = [len(one) for one in picked]
+    return np.concatenate(picked), np.concatenate([[0], np.cumsum(lengths)[:-1]]).astype(np.int64)

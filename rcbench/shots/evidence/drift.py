@@ -1,8 +1,8 @@
 """Change within a run, where shots have an order, and between batches, where circuits are run again.
 
 Within a run: shots are cut into PARTS equal parts. Each bit's share of ones, and the score of the shots against the
-circuit, should be the same in all of them; a chi-square over parts says whether. Sums over runs pool what one run cannot
-show; a file of which the second half is of another circuit shows in its own.
+circuit, should be the same in all of them; a chi-square over parts says whether. Sums over runs pool what one run
+cannot show; a file of which the second half is of another circuit shows in its own.
 
 Between batches: the score of a circuit that was run in several batches (an anchor, or a repeat) should be the same in
 all of them. Only shot noise is in the test, since the circuit is the same.
@@ -22,7 +22,9 @@ FEWEST = 5.0  # expected shots of either kind in a part, below which a chi-squar
 
 
 class Change(NamedTuple):
-    """How much something changes: chi-square and its degrees of freedom, by run; first, last: mean over runs at both ends."""
+    """How much something changes: chi-square and its degrees of freedom, by run; first, last: mean over runs at both
+    ends.
+    """
 
     chi2: FloatArray
     dof: IntArray

@@ -1,8 +1,8 @@
 """The examination: every question in turn, each with what the ones before have settled.
 
 Stuck bits come first, since they are left out of what follows; then the order of bits, since nothing matches in a wrong
-one; then which circuit a run is of; then what is left without an explanation. Repeated blocks and drift ask for nothing of
-this. See `find_evidence`.
+one; then which circuit a run is of; then what is left without an explanation. Repeated blocks and drift ask for
+nothing of this. See `find_evidence`.
 """
 
 from __future__ import annotations
@@ -17,7 +17,15 @@ import numpy as np
 
 from rcbench.arrays import BoolArray, IntArray
 from rcbench.shots.evidence import exchange, repeats, wording
-from rcbench.shots.evidence.bit_order import FoundOrder, find_order, gains_by_run
+from rcbench.shots.evidence.bit_order import (
+    Candidate,
+    FoundOrder,
+    Runs,
+    best_told,
+    candidate_orders,
+    gains_by_run,
+    with_ties,
+)
 from rcbench.shots.evidence.cases import (
     FEWEST_BITS,
     MAX_QUBITS,
@@ -33,10 +41,11 @@ from rcbench.shots.evidence.finding import ALPHA, Finding
 from rcbench.shots.evidence.matching import match_circuits
 from rcbench.shots.evidence.orders import Order
 from rcbench.shots.evidence.own import Own, ideal_ones, own_evidence
-from rcbench.shots.evidence.pools import POOL_SIZE, Pool, return_pool, sampled_pool
+from rcbench.shots.evidence.pools import CLEAR, POOL_SIZE, Pool, return_pool, sampled_pool
 from rcbench.shots.evidence.seed import other_kit
 from rcbench.shots.evidence.series import Series
 from rcbench.shots.evidence.stuck import StuckBit, inverted_bits, stuck_bits
+from rcbench.shots.evidence.wording import WrongOrder
 from rcbench.shots.shots import RunKey, Shots
 
 if TYPE_CHECKING:
@@ -46,7 +55,6 @@ Progress = Callable[[int, int, str], None]
 MOSTLY = 0.5
 LEAST_TOLD = 0.01  # v of a circuit below this: no number of shots one could ask for
 MOST_ORDERS = 3  # different wrong orders in one lane
-CLEAR = math.log(1 / ALPHA)
 POOLED_STRUCTURE = 3.0  # sigmas of structure, all doubtful runs of a lane together, that make a search worth while
 
 
@@ -57,12 +65,14 @@ class LaneStudy:
     Args:
         lane: its runs, bits in order as far as an order was found. own: against their own circuits.
         orders: the order found of each run that comes in another one. explained: runs that a circuit explains.
+        searched: the orders that a search among some runs came to.
     """
 
     lane: Lane
     own: Own
     orders: dict[RunKey, Order] = field(default_factory=dict)
     explained: set[RunKey] = field(default_factory=set)
+    searched: dict[tuple[tuple[int, ...], int], list[Candidate]] = field(default_factory=dict)
 
     @property
     def doubtful(self) -> list[int]:
@@ -88,13 +98,14 @@ def find_evidence(
     Args:
         kit: the kit that was asked for. shots: what came back.
         ideal: circuit_id to (2**bits,) ideal probabilities over the measured bits, or None where they are not known.
-        series: the shots in order and the files they came from, where they were read so; without it nothing is said about
-            the order of shots, and files are named only where there is one.
+        series: the shots in order and the files they came from, where they were read so; without it nothing is said
+            about the order of shots, and files are named only where there is one.
         max_qubits: larger circuits are left out, and it is said so; those that return a string need no simulation.
         progress: called with (done, in all, what).
 
     Cost: the ideal circuits are simulated once (again where they do not fit cases.CACHE_BYTES); all else grows with the
-    number of shots, and, for runs that their own circuit does not explain, with their number times that of the circuits.
+    number of shots, and, for runs that their own circuit does not explain, with their number times that of the
+    circuits.
     """
     step = progress or (lambda done, total, what: None)
     series = series or Series()
@@ -110,24 +121,26 @@ def find_evidence(
         if lane is None or lane.n_bits < FEWEST_BITS:
             continue
         studies.append(LaneStudy(lane, own_evidence(lane, ideals, len(cases))))
-    # a few doubtful runs are rather misfiled than in another order, most of a lane the other way round
+    twice = repeats.same_shots(cases, series)
+    aside = {key for finding in twice for key in finding.runs}
+    # the order of whole lanes, then runs that are misfiled, then the order of single runs: the simplest comes first
+    orders = _all_orders(studies, ideals, len(cases), aside, [], whole=True)
     few = [study for study in studies if len(study.doubtful) <= MOSTLY * len(study.lane.cases)]
     findings += match_circuits(kit, shots, few, ideals, len(cases), step)
-    in_order = [_orders(study, ideals, len(cases)) for study in studies]
-    findings += [finding for found in in_order for finding in found]
-    if len(few) < len(studies) or any(in_order):
+    left = len(orders)
+    orders += _all_orders(studies, ideals, len(cases), aside, orders, whole=False)
+    findings += wording.wrong_orders(orders)
+    if len(few) < len(studies) or len(orders) > left:
         findings += match_circuits(kit, shots, studies, ideals, len(cases), step)
     findings += exchange.with_reference(cases, ideals)
-    twice = repeats.same_shots(cases, series)
     findings += twice
-    findings += _left_over(studies, len(cases), {key for finding in twice for key in finding.runs})
+    findings += _left_over(studies, len(cases), aside)
     findings += repeats.drifting(cases, studies, ideals, series, shots)
-    return sorted(wording.joined(findings), key=lambda f: (not f.told, f.kind == "not-examined", f.kind == "drift"))
+    findings += wording.refused(ideals.refused)
+    return sorted(findings, key=lambda f: (not f.told, f.kind == "not-examined", f.kind == "drift"))
 
 
-def _without_stuck_bits(
-    members: Sequence[Case], ideals: Ideals, lanes: int
-) -> tuple[Lane | None, list[StuckBit]]:
+def _without_stuck_bits(members: Sequence[Case], ideals: Ideals, lanes: int) -> tuple[Lane | None, list[StuckBit]]:
     """A lane without the bits that keep one value in it, and these."""
     ones = np.array([case.ones() for case in members])
     shots = np.array([case.shots for case in members], dtype=np.float64)
@@ -138,59 +151,86 @@ def _without_stuck_bits(
     return lane_of(members, ideals, dropped), stuck
 
 
-def make_pool(lane: Lane, places: Sequence[int], ideals: Ideals) -> Pool | None:
-    """A pool of some runs of a lane, as many as fit; None where nothing can be said of any."""
-    cases = [lane.cases[place] for place in places]
+def make_pool(lane: Lane, places: Sequence[int], ideals: Ideals) -> tuple[Pool, list[int]] | None:
+    """A pool of some runs of a lane, as many as fit, and their places; None where nothing can be said of any."""
     if lane.returns:
-        return return_pool(cases)
+        return return_pool([lane.cases[place] for place in places]), list(places)
     held, probabilities = [], []
-    for case in cases[: max(1, POOL_SIZE >> lane.n_bits)]:
-        p = ideals.get(case.row, lane.dropped)
+    for place in places[: max(1, POOL_SIZE >> lane.n_bits)]:
+        p = ideals.get(lane.cases[place].row, lane.dropped)
         if p is not None:
-            held.append(case)
+            held.append(place)
             probabilities.append(p)
-    return sampled_pool(held, probabilities, lane.inverse_floor(), lane.bias) if held else None
+    if not held:
+        return None
+    cases = [lane.cases[place] for place in held]
+    return sampled_pool(cases, probabilities, lane.inverse_floor(), lane.bias), held
 
 
-def _orders(study: LaneStudy, ideals: Ideals, runs_in_all: int) -> list[Finding]:
-    """The wrong orders of a lane: found, applied to what is examined further, and told."""
-    findings = []
+def _all_orders(
+    studies: Sequence[LaneStudy],
+    ideals: Ideals,
+    runs_in_all: int,
+    aside: set[RunKey],
+    before: Sequence[WrongOrder],
+    *,
+    whole: bool,
+) -> list[WrongOrder]:
+    """The wrong orders of all lanes; aside: runs whose shots are spoilt otherwise; whole: only those of whole lanes."""
+    found: list[WrongOrder] = []
+    for study in sorted(studies, key=lambda study: not study.lane.returns):  # strings that return tell most
+        known = list(dict.fromkeys(one.found.order for one in [*before, *found]))
+        found += _orders(study, ideals, runs_in_all, known, aside, whole)
+    return found
+
+
+def _orders(
+    study: LaneStudy, ideals: Ideals, runs_in_all: int, known: Sequence[Order], aside: set[RunKey], whole: bool
+) -> list[WrongOrder]:
+    """The wrong orders of a lane: found, and applied to what is examined further; known: those of other lanes."""
+    wrong = []
     for _ in range(MOST_ORDERS):
-        doubtful = [p for p in study.doubtful if study.lane.cases[p].key not in study.orders]
-        if not doubtful:
-            break
-        own = study.own
-        # those with most structure first: not all may fit into a pool
-        doubtful.sort(key=lambda place: -float(own.structure[place]))
-        pool = make_pool(study.lane, doubtful, ideals)
-        if pool is None:
-            break
-        strength = float(own.structure[doubtful].sum()) / math.sqrt(len(doubtful))
-        labels = _labels(study.lane)
-        thorough = study.lane.returns or strength > POOLED_STRUCTURE or bool(own.orphan[doubtful].any())
-        inverted = inverted_bits(pool)
-        # the long search only where no simple answer is at hand
-        answers = [inverted, find_order(pool, labels, thorough=thorough and inverted is None)]
-        told = [answer for answer in answers if answer is not None]
-        if not told:
-            break
-        found = max(told, key=lambda answer: answer.gain - answer.limit)
-        takes = _who_takes(study, found.order, ideals)
-        if not takes:
+        found = _one_order(study, ideals, known, aside, whole)
+        takes = _who_takes(study, found.order, ideals) if found else []
+        if found is None or not takes:
             break
         before = [study.lane.cases[place] for place in takes]
         for place in takes:
             study.lane.cases[place] = study.lane.cases[place].mended(found.order)
-        whole = _over_all_bits(found.order, study.lane.dropped)
-        study.orders |= {case.key: whole for case in before}
+        over_all = _over_all_bits(found.order, study.lane.dropped)
+        study.orders |= {case.key: over_all for case in before}
         study.own = own_evidence(study.lane, ideals, runs_in_all)
-        findings.append(_told(study, found, before, whole))
-    return findings
+        wrong.append(WrongOrder(found, before, over_all, len(before) == len(study.lane.cases)))
+    return wrong
 
 
-def _told(study: LaneStudy, found: FoundOrder, cases: Sequence[Case], whole: Order) -> Finding:
-    in_all = len(cases) == len(study.lane.cases)
-    return wording.wrong_order(found, cases, whole, in_all)
+def _one_order(
+    study: LaneStudy, ideals: Ideals, known: Sequence[Order], aside: set[RunKey], whole: bool
+) -> FoundOrder | None:
+    own, lane = study.own, study.lane
+    free = [key not in study.orders and key not in aside for key in (case.key for case in lane.cases)]
+    doubtful = [place for place in study.doubtful if free[place]]
+    if not doubtful:
+        return None
+    # those with most structure first: not all may fit into a pool
+    doubtful.sort(key=lambda place: -float(own.structure[place]))
+    rest = [place for place in np.flatnonzero(own.confirmed).tolist() if free[place]]
+    made = make_pool(lane, doubtful + rest, ideals)
+    asked = [at for at, place in enumerate(made[1]) if place in doubtful] if made else []
+    if made is None or not asked:
+        return None
+    runs = Runs(made[0], asked)
+    key = tuple(made[1]), len(asked)
+    if key not in study.searched:
+        strength = float(own.structure[doubtful].sum()) / math.sqrt(len(doubtful))
+        thorough = lane.returns or strength > POOLED_STRUCTURE or bool(own.orphan[doubtful].any())
+        candidates = inverted_bits(runs)
+        if any(len(one.order.flipped) == 1 and runs.told(*one) for one in candidates):
+            thorough = False  # the long search only where no simple answer is at hand
+        candidates += candidate_orders(runs, _labels(lane), known=known, thorough=thorough)
+        study.searched[key] = candidates
+    found = best_told([runs.told(*one, whole=whole) for one in study.searched[key]])
+    return with_ties(runs.doubtful, found) if found else None
 
 
 def _labels(lane: Lane) -> list[str]:
@@ -221,9 +261,10 @@ def _who_takes(study: LaneStudy, order: Order, ideals: Ideals) -> list[int]:
     step = len(open_places) if lane.returns else size
     for start in range(0, len(open_places), max(step, 1)):
         part = open_places[start : start + step]
-        pool = make_pool(lane, part, ideals)
-        if pool is not None:
-            gain[part], loss[part] = gains_by_run(pool, order)
+        made = make_pool(lane, part, ideals)
+        if made is not None:
+            pool, places = made
+            gain[places], loss[places] = gains_by_run(pool, order)
     takes, keeps = gain > CLEAR, loss > CLEAR
     if takes.sum() >= 9 * keeps.sum():
         takes = takes | ((gain > -np.inf) & ~keeps)
@@ -242,8 +283,9 @@ def _left_over(studies: Sequence[LaneStudy], runs_in_all: int, twice: set[RunKey
             size = 2.0**study.lane.n_bits - 1
             v = np.where(study.own.cross.excess > 0.01, study.own.cross.excess, size)
             square = study.own.collided.excess / v
+            own = study.own
             found = other_kit(
-                study.own.structure[places], study.own.unexplained[places], square[places], explained[places]
+                own.structure[places], own.unexplained[places], square[places], explained[places], own.orphan[places]
             )
         if found is not None:
             findings.append(wording.of_another_kit(study.lane, found))
@@ -281,8 +323,8 @@ def shots_that_tell(
 ) -> tuple[int | None, bool]:
     """Shots a circuit with which nine of ten such runs would be told; whether that is only a bound from below.
 
-    None where no number would: the ideal outcome is the floor. For sampled circuits M = v ((z_a + z_b) / (F v))^2, with F
-    the mean over the runs of that depth; where it is not clear of 0, its upper limit, and the answer is a bound.
+    None where no number would: the ideal outcome is the floor. For sampled circuits M = v ((z_a + z_b) / (F v))^2,
+    with F the mean over the runs of that depth; where it is not clear of 0, its upper limit, and the answer is a bound.
 
     Args:
         places: the runs in question. alike: all runs of their depth.

@@ -1,7 +1,7 @@
 """Butterfly echoes and their reference exchanged: few probes leave no cross-entropy, but the reference gives the scale.
 
-The reference returns its probes, the butterfly does not. With one fidelity for both, the echo that returns less cannot be
-the reference of one that returns more; `identity.exchanged_with_reference` says by how many nats.
+The reference returns its probes, the butterfly does not. With one fidelity for both, the echo that returns less
+cannot be the reference of one that returns more; `identity.exchanged_with_reference` says by how many nats.
 """
 
 from __future__ import annotations
@@ -29,7 +29,9 @@ def with_reference(cases: Sequence[Case], ideals: Ideals) -> list[Finding]:
     for members in groups.values():
         references = [case for case in members if case.target is not None and "butterfly" not in case.row.params]
         for butterfly in (case for case in members if "butterfly" in case.row.params):
-            pairs += [(one, butterfly) for one in references if one.row.measured_qubits == butterfly.row.measured_qubits]
+            pairs += [
+                (one, butterfly) for one in references if one.row.measured_qubits == butterfly.row.measured_qubits
+            ]
     found = []
     limit = math.log(max(len(pairs), 1) / ALPHA)
     for reference, butterfly in pairs:
@@ -49,11 +51,11 @@ def _gain(reference: Case, butterfly: Case, p: FloatArray) -> float:
     returned[target] = 2.0**n
 
     def likelihood(case: Case, ratio: FloatArray) -> FloatArray:
-        return scores.log_likelihoods(ratio[case.index], case.counts, _ONE)[0]
+        return np.asarray(scores.log_likelihoods(ratio[case.index], case.counts, _ONE)[0])
 
     def with_flips(index: IntArray, counts: IntArray) -> FloatArray:
         distance = np.bitwise_count(index ^ target).astype(np.int64)
-        return scores.returned_log_likelihoods(distance, counts, _ONE, n)[0]
+        return np.asarray(scores.returned_log_likelihoods(distance, counts, _ONE, n)[0])
 
     ratio = p.astype(np.float64) * 2.0**n
     as_filed = [with_flips(reference.index, reference.counts), likelihood(butterfly, ratio)]

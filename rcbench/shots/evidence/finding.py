@@ -30,8 +30,8 @@ class Finding:
     """One fault, or one question that the shots cannot answer.
 
     Args:
-        kind: `orphan`, `other-circuit`, `bit-order`, `flipped-bits`, `stuck-bit`, `same-shots`, `drift`, `other-kit`, or
-            what was asked and not answered.
+        kind: `orphan`, `other-circuit`, `bit-order`, `flipped-bits`, `stuck-bit`, `same-shots`, `drift`,
+            `other-kit`, or what was asked and not answered.
         told: False where the answer is `cannot tell`, or where nothing was asked.
         runs: the runs it is about. files: the files they came from, where known.
         evidence, limit: how strong, and from what on it is told; in `measure`, SIGMAS or NATS.

@@ -4,11 +4,13 @@ A run is doubtful where its own circuit does not explain it. That run comes from
 
 - its cross-entropy with c is significant, the null widened by the overlap of different ideal distributions: data of a
   foreign circuit have a cross-entropy of F s_off with c, s_off the spread of such overlaps, 2^(-n/2) for deep circuits;
-- c explains orphans.CLAIMED_SHARE of the coincidences among its shots, or is its commonest outcome where it returns one;
+- c explains orphans.CLAIMED_SHARE of the coincidences among its shots, or is its commonest outcome where it returns
+  one;
 - its likelihood under c exceeds that under its own circuit, and every other, by more than ln(candidates / ALPHA) nats.
 
-Runs that exchange places vouch for each other, so the first condition is not asked of them: the runs are assigned to places so that the total likelihood is greatest,
-and a cycle of m among S runs is told where it gains more than m ln S - ln m + ln(1 / ALPHA) nats.
+Runs that exchange places vouch for each other, so the first condition is not asked of them: the runs are assigned to
+places so that the total likelihood is greatest, and a cycle of m among S runs is told where it gains more than m ln
+S - ln m + ln(1 / ALPHA) nats.
 
 Doubtful runs times circuits times outcomes set the cost; a campaign in which every run is explained pays only for the
 circuits of the same instance, which all runs are compared with.
@@ -27,7 +29,7 @@ import numpy as np
 
 from rcbench.arrays import BoolArray, FloatArray, IntArray
 from rcbench.shots.evidence import orphans, scores
-from rcbench.shots.evidence.cases import Lane
+from rcbench.shots.evidence.cases import Lane, entries
 from rcbench.shots.evidence.finding import ALPHA
 from rcbench.shots.evidence.scores import Collisions
 
@@ -89,10 +91,17 @@ def returned_fit(lane: Lane, target: int) -> Fit:
     distance = np.bitwise_count(lane.index ^ target).astype(np.int64)
     likelihood = scores.returned_log_likelihoods(distance, counts, starts, lane.n_bits)
     if lane.bias.any():  # that was over the uniform floor; the lane's own is another
-        likelihood += np.add.reduceat(counts * np.log(lane.inverse_floor_at(lane.bias) / 2.0**lane.n_bits), starts)[:, None]
+        likelihood += np.add.reduceat(counts * np.log(lane.inverse_floor_at(lane.bias) / 2.0**lane.n_bits), starts)[
+            :, None
+        ]
     at_target, most = at_mode(distance, counts, starts)
     chance = [orphans.product_chance(case.index, case.counts, case.n_bits, target) for case in lane.cases]
+    found = lane.collisions()
+    shells = orphans.shell_excess(
+        scores.by_distance(distance, counts, starts, lane.n_bits) / lane.shots[:, None], lane.n_bits
+    )
     can = orphans.is_mode(at_target, most) & orphans.stands_out(at_target, np.array(chance) * lane.shots)
+    can &= shells >= orphans.CLAIMED_SHARE * (found.excess - orphans.ONE_SIDED * found.error)
     return Fit(np.where(can, scores.mixture(likelihood), -np.inf), scores.best(likelihood), can)
 
 
@@ -102,25 +111,17 @@ def at_mode(distance: IntArray, counts: IntArray, starts: IntArray) -> tuple[Flo
     return at_target.astype(np.float64), np.maximum.reduceat(counts, starts).astype(np.float64)
 
 
-def entries(starts: IntArray, size: int, runs: IntArray) -> tuple[IntArray, IntArray]:
-    """Positions of the outcomes of some runs, and where each of these starts among them."""
-    ends = np.append(starts[1:], size)
-    lengths = (ends - starts)[runs]
-    picked = np.concatenate([np.arange(starts[run], ends[run]) for run in runs])
-    return picked, np.concatenate([[0], np.cumsum(lengths)[:-1]]).astype(np.int64)
-
-
 def overlap_spread(samples: FloatArray, n_bits: int) -> float:
     """Spread of D sum p p' - 1 over pairs of different circuits, its tails included; at least 2^(-n/2).
 
     Args:
         samples: (circuits, k) D p at the same k outcomes drawn evenly, or at all of them.
     """
-    least = 2.0 ** (-n_bits / 2)
+    least: float = 2.0 ** (-n_bits / 2)
     circuits, k = samples.shape
-    if circuits < 3:
-        return least
     gram = (samples - 1) @ (samples - 1).T / k
+    if circuits < 3:  # too few to see; it is larger where the distributions are less even
+        return least * max(1.0, float(np.diagonal(gram).mean()))
     pairs = gram[np.triu_indices(circuits, 1)]
     # of what a sample of the outcomes leaves uncertain
     noise = float(np.median(np.diagonal(gram))) / math.sqrt(k) if k < 2**n_bits else 0.0
@@ -132,7 +133,8 @@ def assign(value: FloatArray, own: FloatArray) -> IntArray:
     """(runs,) the place each run goes to so that the total is greatest; NOWHERE where no place fits.
 
     Args:
-        value: (runs, places) nats of each run in each place, the first places those of the runs themselves; -inf: cannot be.
+        value: (runs, places) nats of each run in each place, the first places those of the runs themselves; -inf:
+            cannot be.
         own: (runs,) nats in its own place, at least 0.
     """
     from scipy.optimize import linear_sum_assignment
@@ -159,10 +161,14 @@ class Move:
     limit: float
 
 
-def moves(goes: IntArray, value: FloatArray, own: FloatArray, circuits: int) -> list[Move]:
+def moves(
+    goes: IntArray, value: FloatArray, own: FloatArray, circuits: int, most: FloatArray | None = None
+) -> list[Move]:
     """The cycles and chains of an assignment that gain enough.
 
     Args:
+        most: (places,) the most nats a move there can be credited with: n ln 2 where a string of something else is the
+            target by chance once in 2^n.
         goes: (runs,) from `assign`. value, own: as there. circuits: candidates that each run was compared with.
     """
     runs = len(goes)
@@ -180,7 +186,8 @@ def moves(goes: IntArray, value: FloatArray, own: FloatArray, circuits: int) -> 
             chain.append(here)
             here = moved[here]
         closed = here == start
-        gain = float(sum(value[run, moved[run]] - own[run] for run in chain))
+        gains = [(value[run, moved[run]] - own[run], math.inf if most is None else most[moved[run]]) for run in chain]
+        gain = float(sum(min(pair) for pair in gains))
         m = len(chain)
         if closed:
             limit = m * math.log(runs) - math.log(m) + math.log(1 / ALPHA)
@@ -191,13 +198,12 @@ def moves(goes: IntArray, value: FloatArray, own: FloatArray, circuits: int) -> 
     return found
 
 
-def exchanged_with_reference(
-    as_filed: Sequence[FloatArray], crosswise: Sequence[FloatArray]
-) -> float:
+def exchanged_with_reference(as_filed: Sequence[FloatArray], crosswise: Sequence[FloatArray]) -> float:
     """Nats by which an echo and its butterfly fit better exchanged, one fidelity for both: the reference gives it.
 
     Args:
-        as_filed: log-likelihoods of the reference's and the butterfly's shots under their own circuits, each (hypotheses,).
+        as_filed: log-likelihoods of the reference's and the butterfly's shots under their own circuits, each
+            (hypotheses,).
         crosswise: (len(FIDELITIES),) each, the reference's shots under the butterfly's circuit and the other way round.
     """
     alone = sum(float(scores.best(one)) for one in as_filed)

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from rcbench.arrays import FloatArray
+from rcbench.arrays import FloatArray, IntArray
 from rcbench.randomness import Draw
 from rcbench.shots.evidence import identity, wording
 from rcbench.shots.evidence.cases import Case, Ideals, Lane, drop_bits, place_of, target_index
@@ -78,7 +78,9 @@ def _circuits(rows: Iterable[RosterRow]) -> list[RosterRow]:
     return sorted(found.values(), key=place_of)
 
 
-def _fit(lane: Lane, row: RosterRow, ideals: Ideals, inverse: FloatArray | None, overlap: float, tests: int) -> Fit | None:
+def _fit(
+    lane: Lane, row: RosterRow, ideals: Ideals, inverse: FloatArray | None, overlap: float, tests: int
+) -> Fit | None:
     """How runs of a lane fit a circuit, None where nothing is known of it."""
     target = target_index(row.target)
     if target is not None:
@@ -156,7 +158,8 @@ def _overlaps(
 ) -> dict[tuple[str, int], float]:
     """Spread of the overlap of ideal distributions, by experiment and depth."""
     ensembles: dict[tuple[str, int], list[FloatArray]] = defaultdict(list)
-    n_bits, picked = 0, None
+    n_bits = 0
+    picked: IntArray | None = None
     for row in candidates:
         key = row.experiment, row.depth
         if row.target or len(ensembles[key]) >= ENSEMBLE:
@@ -186,6 +189,8 @@ class _Assignment:
         self.doubts, self.candidates, self.fits = doubts, candidates, fits
         self.column = {row.base_id: column for column, row in enumerate(candidates)}
         self.own = np.array([max(float(d.study.own.best[d.place]), 0.0) for d in doubts])
+        n_bits = doubts[0].study.lane.n_bits
+        self.most = np.array([n_bits * math.log(2) if row.target else math.inf for row in candidates])
         self.slots = [d.case.key for d in doubts] + [key for _, key in empty]
         self.circuit_of_slot = [self.column[d.case.base] for d in doubts] + [
             self.column[row.base_id] for row, _ in empty
@@ -196,7 +201,8 @@ class _Assignment:
         value = self.fits.mixed[:, self.circuit_of_slot]
         goes = identity.assign(value, self.own)
         found, settled = [], set()
-        for move in identity.moves(goes, value, self.own, len(self.candidates)):
+        most = self.most[self.circuit_of_slot]
+        for move in identity.moves(goes, value, self.own, len(self.candidates), most):
             if not move.closed and not all(
                 self._clear(run, self.circuit_of_slot[place]) for run, place in zip(move.runs, move.places, strict=True)
             ):
@@ -222,7 +228,8 @@ class _Assignment:
     def _clear(self, run: int, column: int) -> bool:
         """Whether one circuit stands out for a run against its own and all others."""
         limit = math.log(len(self.doubts) * len(self.candidates) / ALPHA)
-        return bool(self.fits.sure[run, column]) and self._lead(run, column) > limit
+        lead = min(self._lead(run, column), float(self.most[column]))
+        return bool(self.fits.sure[run, column]) and lead > limit
 
     def _lead(self, run: int, column: int) -> float:
         others = self.fits.best[run].copy()

@@ -75,13 +75,9 @@ def named_orders(n_bits: int, labels: Sequence[str] = ()) -> list[Order]:
         if n_bits % rows == 0:
             turned = np.arange(n_bits).reshape(rows, -1).T.reshape(-1).tolist()
             delivered.append((f"rows and columns of a {rows} x {n_bits // rows} grid exchanged", turned))
-    inverse = [(f"{name} (undone)", _inverse(order)) for name, order in delivered]
+    inverse = [(f"{name}, the other way round", _inverse(order)) for name, order in delivered]
     # the bit at place k is order[k], so that bit j stands at the inverse of it
-    found = {
-        tuple(_inverse(order)): name
-        for name, order in [*inverse[::-1], *delivered[::-1]]
-        if order != bits
-    }
+    found = {tuple(_inverse(order)): name for name, order in [*inverse[::-1], *delivered[::-1]] if order != bits}
     orders = [Order(name, source) for source, name in reversed(found.items())]
     everything = tuple(bits)
     orders.append(Order("every bit inverted", everything, everything))
@@ -96,7 +92,7 @@ def _halves(bits: list[int]) -> list[int]:
 
 
 def _inverse(order: Sequence[int]) -> list[int]:
-    return np.argsort(np.asarray(order, dtype=np.int64)).tolist()
+    return [int(place) for place in np.argsort(np.asarray(order, dtype=np.int64))]
 
 
 def _numbers(label: str) -> tuple[list[int], str]:

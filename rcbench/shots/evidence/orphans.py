@@ -1,13 +1,13 @@
 """Orphans: shots that hold structure which their circuit does not explain.
 
 Shots that coincide more often than the floor lets them came from some circuit. If that was the circuit asked for, its
-cross-entropy explains the coincidences: C = X^2 / v. If clearly more coincide, they came from another circuit, in another
-bit order, or the device did something coherent that is not in the circuit. No candidate is needed to see it. Where
-both are about 0, the shots are noise, and nothing can be told.
+cross-entropy explains the coincidences: C = X^2 / v. If clearly more coincide, they came from another circuit, in
+another bit order, or the device did something coherent that is not in the circuit. No candidate is needed to see it.
+Where both are about 0, the shots are noise, and nothing can be told.
 
-Relaxation and bad readout make structure of their own, but in single bits and pairs. A run is told to be an orphan only if
-structure is left beyond those of its own (`many_bit_structure`); that costs a foreign deep circuit nothing, and a foreign
-shallow one some.
+Relaxation and bad readout make structure of their own, but in single bits and pairs. A run is told to be an orphan
+only if structure is left beyond those of its own (`many_bit_structure`); that costs a foreign deep circuit nothing,
+and a foreign shallow one some.
 
 Needs shots F^2 > 4 sqrt(2 D), so it ends at some 25 qubits.
 
@@ -15,6 +15,8 @@ Sources: speckle purity, Arute et al., Nature 574, 505 (2019), supplement; the c
 """
 
 from __future__ import annotations
+
+import math
 
 import numpy as np
 
@@ -72,8 +74,9 @@ def is_orphan(found: Collisions, own: Crossed, limit: float) -> BoolArray:
 def many_bit_structure(index: IntArray, counts: IntArray, n_bits: int) -> tuple[float, float]:
     """C of one run beyond single bits and pairs, and its standard error.
 
-    The floor is the product of the run's own single bits. In the functions prod (z_j - m_j) / sqrt(1 - m_j^2), which are
-    orthonormal on it, C is the sum of all squared coefficients; those of pairs are taken out, less their shot noise.
+    The floor is the product of the run's own single bits. In the functions prod (z_j - m_j) / sqrt(1 - m_j^2), which
+    are orthonormal on it, C is the sum of all squared coefficients; those of pairs are taken out, less their shot
+    noise.
 
     Args:
         index, counts: (k,) different outcomes and how often.
@@ -89,6 +92,18 @@ def many_bit_structure(index: IntArray, counts: IntArray, n_bits: int) -> tuple[
     second = (((unit**2) * counts[:, None]).T @ unit**2 / shots)[pairs]
     noise = (second - first**2) / max(shots - 1, 1)
     return float(whole.excess[0] - (first**2 - noise).sum()), float(whole.error[0])
+
+
+def shell_excess(share: FloatArray, n_bits: int) -> FloatArray:
+    """(runs,) the most C that any model explains in which only the distance from a string counts.
+
+    Args:
+        share: (runs, n_bits + 1) share of shots at each Hamming distance from the string.
+    """
+    size = np.exp(
+        [math.lgamma(n_bits + 1) - math.lgamma(k + 1) - math.lgamma(n_bits - k + 1) for k in range(n_bits + 1)]
+    )
+    return np.asarray(2.0**n_bits * (share**2 / size).sum(axis=1) - 1)
 
 
 def product_chance(index: IntArray, counts: IntArray, n_bits: int, at: int) -> float:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import Protocol
@@ -11,12 +12,14 @@ import numpy as np
 from rcbench.arrays import FloatArray, IntArray
 from rcbench.randomness import Draw
 from rcbench.shots.evidence import orphans, scores
-from rcbench.shots.evidence.cases import Case
+from rcbench.shots.evidence.cases import Case, entries
+from rcbench.shots.evidence.finding import ALPHA
 from rcbench.shots.evidence.orders import Order
 
 POOL_SIZE = 2**24  # probabilities held at once; more runs than that allows add nothing that matters
 SEARCH_ENTRIES = 40_000  # outcomes that the search climbs on; the decision uses all
 SEARCH_FIDELITY = 0.2
+CLEAR = math.log(1 / ALPHA)
 
 
 class Pool(Protocol):
@@ -32,6 +35,12 @@ class Pool(Protocol):
 
     def split(self, draw: Draw) -> tuple[Pool, Pool]:
         """Two halves of the shots of every run."""
+
+    def some(self, runs: Sequence[int]) -> Pool:
+        """Some of the runs."""
+
+    def most_gain(self, order: Order) -> float:
+        """The most nats that an order can be credited with, however well it fits."""
 
     def matched(self) -> tuple[int, ...]:
         """The order that moves low-order correlations where the circuits have them."""
@@ -79,7 +88,7 @@ class SampledPool:
 
     Args:
         n_bits: bits. index, counts, at: (k,) outcomes, how often, 1 / g of each. starts: (runs,).
-        offset: (k,) where the probabilities of the outcome's circuit start in `flat`, those of all circuits in turn.
+        first: (runs,) where the probabilities of the run's circuit start in `flat`, those of all circuits in turn.
         depth: (runs,) number of the depth. mean_z: (n,) of the floor.
     """
 
@@ -88,10 +97,42 @@ class SampledPool:
     counts: IntArray
     at: FloatArray
     starts: IntArray
-    offset: IntArray
+    first: IntArray
     flat: FloatArray
     depth: IntArray
     mean_z: FloatArray
+
+    @property
+    def offset(self) -> IntArray:
+        """(k,) where the probabilities of the outcome's circuit start in `flat`."""
+        return np.repeat(self.first, np.diff(np.append(self.starts, len(self.index))))
+
+    def some(self, runs: Sequence[int]) -> Pool:
+        """As Pool."""
+        picked, starts = entries(self.starts, len(self.index), runs)
+        return replace(
+            self,
+            index=self.index[picked],
+            counts=self.counts[picked],
+            at=self.at[picked],
+            starts=starts,
+            first=self.first[list(runs)],
+            depth=self.depth[list(runs)],
+        )
+
+    def most_gain(self, order: Order) -> float:
+        """As Pool: a distribution of its own is matched by no other."""
+        return math.inf
+
+    def circuit(self, run: int) -> FloatArray:
+        """(2**n,) ideal probabilities of a run."""
+        return self.flat[self.first[run] : self.first[run] + 2**self.n_bits]
+
+    def excess(self) -> FloatArray:
+        """(runs,) v."""
+        size = 2**self.n_bits
+        runs = range(len(self.starts))
+        return np.array([float(np.square(self.circuit(r), dtype=np.float64).sum()) * size - 1 for r in runs])
 
     def by_run(self, order: Order) -> FloatArray:
         """As Pool."""
@@ -120,36 +161,32 @@ class SampledPool:
         ratio = self._ratio(order.mended(self.index))
         mean = float(self.counts @ (np.asarray(ratio, dtype=np.float64) - 1))
         shots = np.add.reduceat(self.counts, self.starts)
-        size = 2**self.n_bits
-        v = np.square(self.flat.reshape(-1, size), dtype=np.float64).sum(axis=1) * size - 1
-        return mean / max(float(shots @ v), 1e-12)
+        return mean / max(float(shots @ self.excess()), 1e-12)
 
     def explains(self, order: Order) -> bool:
         """As Pool: the coincidences of all runs together."""
-        size = 2**self.n_bits
-        v = np.square(self.flat.reshape(-1, size), dtype=np.float64).sum(axis=1) * size - 1
-        cross = scores.crossed(self._ratio(order.mended(self.index)), self.counts, self.starts, v)
-        found = scores.collisions(self.at, self.counts, self.starts, float(size))
+        cross = scores.crossed(self._ratio(order.mended(self.index)), self.counts, self.starts, self.excess())
+        found = scores.collisions(self.at, self.counts, self.starts, 2.0**self.n_bits)
         explained, _ = orphans.explained_excess(cross)
         # weighed by precision, or one run of few shots would decide
         weight = 1 / np.square(found.error)
         error = float(weight.sum()) ** -0.5
         there = float(weight @ found.excess / weight.sum()) - orphans.ONE_SIDED * error
-        return float(weight @ explained / weight.sum()) >= orphans.CLAIMED_SHARE * there
+        return bool(weight @ explained / weight.sum() >= orphans.CLAIMED_SHARE * there)
 
     def _ratio(self, index: IntArray) -> FloatArray:
-        return self.flat[self.offset + index] * self.at
+        return np.asarray(self.flat[self.offset + index] * self.at)
 
     def matched(self) -> tuple[int, ...]:
         """As Pool: marginals by assignment, then pairs by exchanging."""
-        n, size = self.n_bits, 2**self.n_bits
+        n = self.n_bits
         ends = np.append(self.starts[1:], len(self.index))
         single = np.zeros((n, n))
         pair = np.zeros((n, n, n, n))
         places = 1 << (n - 1 - np.arange(n))
         joint = places[:, None] | places[None, :]
         for run, (start, end) in enumerate(zip(self.starts, ends, strict=True)):
-            walsh = walsh_transform(self.flat[run * size : (run + 1) * size].astype(np.float64))
+            walsh = walsh_transform(self.circuit(run).astype(np.float64))
             z = 1.0 - 2.0 * ((self.index[start:end, None] & places) > 0)
             weights = self.counts[start:end].astype(np.float64)
             shots = max(float(weights.sum()), 1.0)
@@ -224,7 +261,7 @@ class ReturnPool:
         agree = np.where((self.targets == 1) != flipped, ones, 1 - ones)
         by_chance = float(shots @ agree.prod(axis=1))
         clear = orphans.stands_out(np.array([at_target.sum()]), np.array([by_chance]))
-        return bool(clear[0]) and float(at_target.sum()) >= orphans.CLAIMED_SHARE * float(sure.sum())
+        return bool(clear[0] and at_target.sum() >= orphans.CLAIMED_SHARE * sure.sum())
 
     def _distance(self, order: Order) -> IntArray:
         mended = self.bits[:, list(order.source)]
@@ -242,10 +279,28 @@ class ReturnPool:
         first, second = halves(self.counts, draw)
         return replace(self, counts=first), replace(self, counts=second)
 
+    def some(self, runs: Sequence[int]) -> Pool:
+        """As Pool."""
+        picked, starts = entries(self.starts, len(self.counts), runs)
+        return replace(
+            self,
+            bits=self.bits[picked],
+            counts=self.counts[picked],
+            starts=starts,
+            targets=self.targets[list(runs)],
+            depth=self.depth[list(runs)],
+        )
+
+    def most_gain(self, order: Order) -> float:
+        """As Pool: a string of something else is the target by chance once in 2^n, so n ln 2 a run that gains."""
+        asked = Order("", tuple(range(self.n_bits)))
+        gain = scores.mixture(self.by_run(order)) - scores.best(self.by_run(asked))
+        return float((gain > CLEAR).sum()) * self.n_bits * math.log(2)
+
     def agreement(self) -> FloatArray:
         """(n, n) sum over shots of the product of Z of a delivered bit and of a target bit."""
         z = (1.0 - 2.0 * self.bits) * self.counts[:, None]
-        return z.T @ (1.0 - 2.0 * self._target_of_each())
+        return np.asarray(z.T @ (1.0 - 2.0 * self._target_of_each()))
 
     def matched(self) -> tuple[int, ...]:
         """As Pool: exact here, since a return is a product over bits."""
@@ -293,7 +348,9 @@ def match(single: FloatArray, pair: FloatArray | None) -> tuple[int, ...]:
     from scipy.optimize import linear_sum_assignment
 
     n = len(single)
-    _, source = linear_sum_assignment(-single.T)
+    # of orders that match alike, the one that moves fewest bits
+    stay = 1e-9 * (np.abs(single).max() + 1e-300) * np.eye(n)
+    _, source = linear_sum_assignment(-(single + stay).T)
     source = np.asarray(source, dtype=np.int64)
     if pair is None:
         return tuple(source.tolist())
@@ -344,7 +401,7 @@ def sampled_pool(
         counts=np.concatenate([case.counts for case in cases]),
         at=inverse_floor[index],
         starts=np.concatenate([[0], np.cumsum(lengths)[:-1]]).astype(np.int64),
-        offset=np.repeat(np.arange(len(cases), dtype=np.int64) << n, lengths),
+        first=np.arange(len(cases), dtype=np.int64) << n,
         flat=np.concatenate(probabilities),
         depth=_numbered([case.row.depth for case in cases]),
         mean_z=bias,

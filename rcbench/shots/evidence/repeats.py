@@ -79,7 +79,10 @@ def _within(
     n = lane[0].n_bits
     names = [f"bit {bit}" for bit in range(n)] + ["the match with the circuit"]
     changes = drift.change_of_bits(index, n)
-    scored = [_scores(case, one, ideals) if case.key in explained else np.zeros(0) for case, one in zip(lane, index, strict=True)]
+    scored = [
+        _scores(case, one, ideals) if case.key in explained else np.zeros(0)
+        for case, one in zip(lane, index, strict=True)
+    ]
     changes.append(drift.change_of_values(scored))
     by_run = np.array([change.sigmas_by_run() for change in changes])  # (bits + 1, runs)
     alone = np.flatnonzero(by_run.max(axis=0) > limit)
@@ -102,7 +105,7 @@ def _within(
 def _scores(case: Case, index: IntArray, ideals: Ideals) -> FloatArray:
     """(shots,) how well each shot fits the circuit, tamed so that no single shot decides."""
     if case.target is not None:
-        return (-0.5) ** np.bitwise_count(index ^ case.target).astype(np.float64)
+        return np.asarray((-0.5) ** np.bitwise_count(index ^ case.target).astype(np.float64))
     p = ideals.get(case.row)
     if p is None:
         return np.zeros(0)

@@ -1,8 +1,8 @@
 """How well a circuit explains shots: likelihood ratios, cross-entropy and collisions against a floor of noise.
 
 A run whose circuit has ideal probabilities p is modelled as f = F p + (1 - F) g: g is the floor, what is measured when
-nothing of the circuit is left. The floor is a product over bits with the mean Z that is common to many circuits, so that
-readout asymmetry and relaxation are not taken for structure; with equal bits it is uniform, and what follows are
+nothing of the circuit is left. The floor is a product over bits with the mean Z that is common to many circuits, so
+that readout asymmetry and relaxation are not taken for structure; with equal bits it is uniform, and what follows are
 the quantities of linear cross-entropy:
 
     X = <p(x) / g(x)> - 1          mean F v
@@ -11,9 +11,10 @@ the quantities of linear cross-entropy:
 
 For a circuit that should return one bitstring, p is that string after independent flips of every bit.
 
-A likelihood ratio is taken against the floor, with F over a grid: the `mixture` over it, which a wrong hypothesis exceeds
-by t nats with probability at most e^-t whatever the shapes of p and g (Markov's inequality), and the `best`, which is
-never below that of the truth. So mixture of one hypothesis minus best of another is safe evidence against the other.
+A likelihood ratio is taken against the floor, with F over a grid: the `mixture` over it, which a wrong hypothesis
+exceeds by t nats with probability at most e^-t whatever the shapes of p and g (Markov's inequality), and the `best`,
+which is never below that of the truth. So mixture of one hypothesis minus best of another is safe evidence against
+the other.
 
 Sources: Arute et al., Nature 574, 505 (2019); Rinott, Shoham, Kalai, Stat. Sci. 37, 322 (2022); the floor and the
 mixture are derived here.
@@ -55,9 +56,11 @@ def log_likelihoods(ratio: FloatArray, counts: IntArray, starts: IntArray) -> Fl
 
 
 def returned_ratio(distance: IntArray, n_bits: int) -> FloatArray:
-    """(len(FLIPS), k) probability over the uniform one of outcomes at a Hamming distance from the string that returns."""
+    """(len(FLIPS), k) probability over the uniform one of outcomes at a Hamming distance from the string that
+    returns.
+    """
     log_ratio = n_bits * np.log(2 * (1 - FLIPS))[:, None] + np.multiply.outer(np.log(FLIPS / (1 - FLIPS)), distance)
-    return np.exp(log_ratio)
+    return np.asarray(np.exp(log_ratio))
 
 
 def returned_log_likelihoods(distance: IntArray, counts: IntArray, starts: IntArray, n_bits: int) -> FloatArray:
@@ -65,21 +68,26 @@ def returned_log_likelihoods(distance: IntArray, counts: IntArray, starts: IntAr
     # by distance: there are n + 1 values, whatever the number of outcomes
     ratios = returned_ratio(np.arange(n_bits + 1), n_bits)
     table = np.log1p(FIDELITIES[:, None] * (ratios[:, None, :] - 1)).reshape(-1, n_bits + 1)
+    return np.asarray(by_distance(distance, counts, starts, n_bits) @ table.T)
+
+
+def by_distance(distance: IntArray, counts: IntArray, starts: IntArray, n_bits: int) -> FloatArray:
+    """(runs, n_bits + 1) shots of each run at each Hamming distance."""
     run = np.repeat(np.arange(len(starts)), np.diff(np.append(starts, len(distance))))
     histogram = np.zeros((len(starts), n_bits + 1))
     np.add.at(histogram, (run, distance), counts)
-    return histogram @ table.T
+    return histogram
 
 
 def mixture(log_likelihood: FloatArray) -> FloatArray:
     """Log of the mean likelihood over the last axis."""
     top = log_likelihood.max(axis=-1)
-    return top + np.log(np.exp(log_likelihood - top[..., None]).mean(axis=-1))
+    return np.asarray(top + np.log(np.exp(log_likelihood - top[..., None]).mean(axis=-1)))
 
 
 def best(log_likelihood: FloatArray) -> FloatArray:
     """The largest over the last axis, the floor itself (0) included."""
-    return np.maximum(log_likelihood.max(axis=-1), 0.0)
+    return np.asarray(np.maximum(log_likelihood.max(axis=-1), 0.0))
 
 
 @dataclass(frozen=True, slots=True, eq=False)

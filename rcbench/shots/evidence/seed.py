@@ -1,8 +1,8 @@
 """A kit of another seed: the shots hold structure, and not one of them matches any circuit of this kit.
 
-One orphan may be a slip with one file. Where most runs hold structure, none is explained by its own circuit, by another, or
-in another bit order, the shots belong to another kit: of another seed, or compiled to other circuits. The sigmas
-of all runs add up, so that this shows where each run alone would not.
+One orphan may be a slip with one file. Where most runs hold structure, none is explained by its own circuit, by
+another, or in another bit order, the shots belong to another kit: of another seed, or compiled to other circuits.
+The sigmas of all runs add up, so that this shows where each run alone would not.
 """
 
 from __future__ import annotations
@@ -29,13 +29,14 @@ class OtherKit:
 
 
 def other_kit(
-    structure: FloatArray, unexplained: FloatArray, square: FloatArray, matched: BoolArray
+    structure: FloatArray, unexplained: FloatArray, square: FloatArray, matched: BoolArray, orphan: BoolArray
 ) -> OtherKit | None:
     """Whether runs are of another kit.
 
     Args:
         structure, unexplained: (runs,) sigmas by which shots coincide, and beyond what any circuit explains.
         square: (runs,) C / v, the structure as F^2. matched: (runs,) whether a circuit explains the run.
+        orphan: (runs,) whether the run alone is one.
     """
     runs = len(structure)
     if runs < FEWEST or matched.sum() > MATCHED * runs:
@@ -43,6 +44,8 @@ def other_kit(
     total = float(unexplained.sum()) / math.sqrt(runs)
     there = float(structure.sum()) / math.sqrt(runs)
     mean = float(np.mean(square)) if len(square) else 0.0
-    if min(total, there) < LEAST_SIGMAS or mean < LEAST_SHARE or total < there / 2:
+    if min(total, there) < LEAST_SIGMAS or total < there / 2:
+        return None
+    if mean < LEAST_SHARE and orphan.sum() < max(FEWEST, runs / 2):
         return None
     return OtherKit(total, math.sqrt(max(mean, 0.0)))

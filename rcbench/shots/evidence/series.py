@@ -1,7 +1,7 @@
 """Shots in the order in which the files have them, and which file each run came from.
 
-Only rows that stand for one shot each have an order; where a file has a column of counts, its runs have none. Reading the
-files a second time, in order, takes 16 bytes a shot; above MOST_ROWS rows it is left out, and said so.
+Only rows that stand for one shot each have an order; where a file has a column of counts, its runs have none.
+Reading the files a second time, in order, takes 16 bytes a shot; above MOST_ROWS rows it is left out, and said so.
 """
 
 from __future__ import annotations
@@ -61,11 +61,11 @@ def read_series(path: Path, kit: Roster, shots: Shots, *, bit_order: str | None 
     declared = read_declared(path if path.is_dir() else path.parent, bit_order)
     runs = Runs(kit)
     intake = Intake(runs, declared.reading, keep_all=True, collector=_InOrder)
-    whole_files = {name for name, bad in shots.bad_rows if bad.place.number == 0}
+    aside = files_set_aside(shots)
     files: dict[int, list[str]] = {}
     parts: list[_InOrder] = []
     for source in sources:
-        if source.name in whole_files:  # set aside as a whole
+        if source.name in aside:
             continue
         module = importlib.import_module(f"rcbench.shots.{source.format}")
         repeat = declared.repeat.get(source.name)
@@ -79,6 +79,11 @@ def read_series(path: Path, kit: Roster, shots: Shots, *, bit_order: str | None 
             files.setdefault(number, []).append(source.name)
     runs.settle(files.keys())
     return Series(_by_run(parts, runs), {runs.keys[number]: tuple(names) for number, names in files.items()})
+
+
+def files_set_aside(shots: Shots) -> set[str]:
+    """Files that were set aside as a whole."""
+    return {name for name, bad in shots.bad_rows if bad.place.number == 0}
 
 
 def _by_run(parts: list[_InOrder], runs: Runs) -> dict[RunKey, IntArray]:

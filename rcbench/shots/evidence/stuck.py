@@ -8,8 +8,7 @@ from typing import NamedTuple
 import numpy as np
 
 from rcbench.arrays import FloatArray
-from rcbench.randomness import Draw
-from rcbench.shots.evidence.bit_order import FoundOrder, accepted
+from rcbench.shots.evidence.bit_order import Candidate, Runs
 from rcbench.shots.evidence.finding import ALPHA
 from rcbench.shots.evidence.orders import Order
 from rcbench.shots.evidence.pools import Pool, ReturnPool, SampledPool, walsh_transform
@@ -52,33 +51,31 @@ def stuck_bits(ones: FloatArray, shots: FloatArray, ideal_ones: FloatArray, test
         safe = np.where(counts, share, 0.5)
         gain = moved * np.log(held / safe) + (1 - moved) * np.log((1 - np.minimum(held, 0.5)) / (1 - safe))
         nats = (weights * gain).sum(axis=0)
-        for bit in np.flatnonzero((nats > limit) & (rate < MOST_MOVED)).tolist():
-            found.append(StuckBit(bit, value, float(rate[bit]), float(nats[bit])))
+        held_bits = np.flatnonzero((nats > limit) & (rate < MOST_MOVED)).tolist()
+        found += [StuckBit(bit, value, float(rate[bit]), float(nats[bit])) for bit in held_bits]
     return sorted(found)
 
 
-def inverted_bits(pool: Pool) -> FoundOrder | None:
-    """The bits that all runs of a pool have inverted, any number of them, told as `find_order` tells an order.
+def inverted_bits(runs: Runs) -> list[Candidate]:
+    """The bits that runs may have inverted, any number of them.
 
-    Every set of bits is tried at once: the cross-entropy for all 2^n of them is a convolution, made by Walsh transforms.
+    Every set of bits is tried at once: the cross-entropy for all 2^n of them is a convolution, made by Walsh
+    transforms. A set of w bits is one of n (n over w); one bit or all are one of n + 1.
     """
-    half, other = pool.split(Draw(0, "inverted bits", pool.n_bits))
-    masks = _return_masks(half) if isinstance(half, ReturnPool) else _sampled_masks(half)
+    pool = runs.doubtful
+    found: list[Candidate] = []
+    masks = _return_masks(pool) if isinstance(pool, ReturnPool) else _sampled_masks(pool)
     n = pool.n_bits
     for mask in masks:
         flipped = tuple(bit for bit in range(n) if mask >> (n - 1 - bit) & 1)
-        if not flipped:
-            continue
         simple = len(flipped) in (1, n)
-        if not simple and len(half.depth_groups()) < FEWEST_RUNS:
+        if not flipped or (not simple and len(pool.depth_groups()) < FEWEST_RUNS):
             continue
-        candidates = math.log(n + 1) if simple else n * math.log(2)
+        candidates = math.log(n + 1) if simple else math.log(n) + math.log(math.comb(n, len(flipped)))
         name = f"bit {flipped[0]} inverted" if len(flipped) == 1 else f"bits {' '.join(map(str, flipped))} inverted"
         name = "every bit inverted" if len(flipped) == n else name
-        found = accepted(half, other, Order(name, tuple(range(n)), flipped), candidates)
-        if found:
-            return found
-    return None
+        found.append(Candidate(Order(name, tuple(range(n)), flipped), candidates))
+    return found
 
 
 def _return_masks(pool: ReturnPool) -> list[int]:
@@ -96,8 +93,8 @@ def _sampled_masks(pool: Pool) -> list[int]:
     for run, (start, end) in enumerate(list(zip(pool.starts, ends, strict=True))[:most]):
         seen = np.zeros(size)
         np.add.at(seen, pool.index[start:end], pool.counts[start:end])
-        p = pool.flat[run * size : (run + 1) * size].astype(np.float64)
+        p = pool.circuit(run).astype(np.float64)
         # one likelihood step at small fidelity: the cross-entropy, damped where single outcomes weigh much
         weight = np.log1p(0.2 * (p * size - 1))
         total += walsh_transform(walsh_transform(seen) * walsh_transform(weight - weight.mean())) / size
-    return np.argsort(total)[::-1][:3].tolist()
+    return [int(mask) for mask in np.argsort(total)[::-1][:3]]

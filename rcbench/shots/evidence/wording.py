@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
+from typing import NamedTuple
 
 import numpy as np
 
@@ -43,6 +44,14 @@ def not_examined(note: str) -> Finding:
     return Finding(kind="not-examined", text=note, told=False)
 
 
+def refused(circuits: Mapping[str, str]) -> list[Finding]:
+    """Circuits that could not be simulated."""
+    if not circuits:
+        return []
+    reason = next(iter(circuits.values()))
+    return [not_examined(f"{len(circuits)} circuits ({some(tuple(circuits))}) that cannot be simulated ({reason})")]
+
+
 def stuck(members: Sequence[Case], bit: StuckBit, lanes: int) -> Finding:
     """A bit with one value; lanes: how many were asked for such bits."""
     row = members[0].row
@@ -64,30 +73,50 @@ def stuck(members: Sequence[Case], bit: StuckBit, lanes: int) -> Finding:
     )
 
 
-def wrong_order(found: FoundOrder, cases: Sequence[Case], whole: Order, in_all: bool) -> Finding:
-    """Bits in another order, or inverted."""
-    if whole.flipped and whole.source == tuple(range(len(whole.source))):
-        kind, what = "flipped-bits", f"{words(whole)} in the shots of {named(cases)}"
+class WrongOrder(NamedTuple):
+    """Runs of one lane whose bits come in another order. whole: over all bits; in_all: all runs of the lane."""
+
+    found: FoundOrder
+    cases: Sequence[Case]
+    whole: Order
+    in_all: bool
+
+
+def wrong_orders(wrong: Sequence[WrongOrder]) -> list[Finding]:
+    """Bits in another order, or inverted; one finding an order, wherever it was found."""
+    groups: dict[Order, list[WrongOrder]] = {}
+    for one in wrong:
+        groups.setdefault(one.whole, []).append(one)
+    return [_wrong_order(order, members) for order, members in groups.items()]
+
+
+def _wrong_order(order: Order, members: Sequence[WrongOrder]) -> Finding:
+    cases = [case for member in members for case in member.cases]
+    if order.flipped and order.source == tuple(range(len(order.source))):
+        kind, what = "flipped-bits", f"{words(order)} in the shots of {named(cases)}"
     else:
-        kind, what = "bit-order", f"the bits of {named(cases)} come in another order than declared: {words(whole)}"
-    if found.alike:
-        pairs = ", ".join(f"{a} and {b}" for a, b in found.alike[:3])
-        more = f" and {len(found.alike) - 3} more pairs" if len(found.alike) > 3 else ""
+        kind, what = "bit-order", f"the bits of {named(cases)} come in another order than declared: {words(order)}"
+    alike = [member.found.alike for member in members]
+    same = sorted(set(alike[0]).intersection(*alike[1:]))
+    if same:
+        pairs = ", ".join(f"{a} and {b}" for a, b in same[:3])
+        more = f" and {len(same) - 3} more pairs" if len(same) > 3 else ""
         what += f"; exchanging bits {pairs}{more} fits as well, so these are not told apart"
-    what += f"; a half of the shots that had no part in the search agrees ({found.held_out:.0f} nats)"
+    held_out = sum(member.found.held_out for member in members)
+    what += f"; the half of the shots that had no part in the search agrees ({held_out:.0f} nats)"
     mend = APPLY
-    if in_all and whole.name == "reversed":
+    if order.name == "reversed" and all(member.in_all for member in members):
         mend = f"if all shots are written so, state the other bit_order in shots.toml; or {APPLY}"
     return Finding(
         kind=kind,
         text=what,
         runs=keys_of(cases),
         files=files_of(cases),
-        evidence=found.gain,
-        limit=found.limit,
+        evidence=sum(member.found.gain for member in members),
+        limit=sum(member.found.limit for member in members),
         measure=NATS,
         mend=mend,
-        repair=Repair(orders={case.key: whole for case in cases}),
+        repair=Repair(orders=dict.fromkeys(keys_of(cases), order)),
     )
 
 
@@ -159,8 +188,9 @@ def orphans(lane: Lane, own: Own, places: Sequence[int], runs_in_all: int) -> Fi
     v = own.cross.excess[list(places)]
     too_many = (own.collided.excess - 3 * own.collided.error)[list(places)] > np.where(v > 0.01, v, np.inf)
     text = (
-        f"{named(cases)} of {lane.cases[0].row.experiment} hold structure that neither their circuit nor another of this "
-        "kit explains, in any bit order: shots of something else, a circuit that was compiled anew, or a coherent error"
+        f"{named(cases)} of {lane.cases[0].row.experiment} hold structure that neither their circuit nor another of "
+        "this kit explains, in any bit order: shots of something else, a circuit that was compiled anew, or a coherent "
+        "error"
     )
     if too_many.any():
         text += "; there are more coincidences than even a perfect device gives, so shots may count twice"
@@ -171,7 +201,7 @@ def orphans(lane: Lane, own: Own, places: Sequence[int], runs_in_all: int) -> Fi
         files=files_of(cases),
         evidence=float(own.unexplained[strongest]),
         limit=max(float(norm.isf(ALPHA / runs_in_all)), 3.0),
-        mend="ask which circuits these shots are of, and whether they ran verbatim; leave them out until that is known",
+        mend="ask which circuits these shots are of, and whether they ran verbatim; leave them out until then",
     )
 
 
@@ -180,9 +210,9 @@ def of_another_kit(lane: Lane, found: OtherKit) -> Finding:
     from rcbench.shots.evidence.seed import LEAST_SIGMAS
 
     text = (
-        f"the shots of {lane.cases[0].row.experiment} hold structure (a self-fidelity of some {found.self_fidelity:.2f}), "
-        f"and not one of {named(lane.cases)} matches a circuit of this kit, in any bit order: a kit of another seed, or "
-        "circuits that were compiled anew"
+        f"the shots of {lane.cases[0].row.experiment} hold structure (a self-fidelity of some "
+        f"{found.self_fidelity:.2f}), and not one of {named(lane.cases)} matches a circuit of this kit, in any bit "
+        "order: a kit of another seed, or circuits that were compiled anew"
     )
     return Finding(
         kind="other-kit",
@@ -206,7 +236,9 @@ def cannot_tell(lane: Lane, places: Sequence[int], needed: tuple[int | None, boo
         text += "; the ideal outcome is the same as noise, so no number of shots tells"
     else:
         text += f"; {'more than ' if bound else 'about '}{_round(max(count, shots + 1))} shots a circuit would tell"
-    return Finding(kind="identity", text=text, told=False, runs=keys_of(cases), files=files_of(cases), shots_needed=count)
+    return Finding(
+        kind="identity", text=text, told=False, runs=keys_of(cases), files=files_of(cases), shots_needed=count
+    )
 
 
 def same_counts(one: Case, two: Case, nats: float, limit: float) -> Finding:
@@ -259,7 +291,7 @@ def changes_within(
         files=files_of(cases),
         evidence=sigmas,
         limit=limit,
-        mend="look at the device's log of that time; where one run changes alone, its file may hold shots of two circuits",
+        mend="look at the log of that time; where one run changes alone, its file may hold shots of two circuits",
     )
 
 
@@ -277,39 +309,6 @@ def changes_between(cases: Sequence[Case], found: Between, limit: float) -> Find
         evidence=found.sigmas,
         limit=limit,
         mend="compare what stands in one batch; the uncertainties of the report do not hold this change",
-    )
-
-
-def joined(findings: Sequence[Finding]) -> list[Finding]:
-    """Findings of the same order in several experiments as one."""
-    out: list[Finding] = []
-    held: dict[tuple[str, tuple[int, ...], tuple[int, ...]], int] = {}
-    for finding in findings:
-        orders = set(finding.repair.orders.values())
-        if finding.kind != "bit-order" or len(orders) != 1:
-            out.append(finding)
-            continue
-        order = next(iter(orders))
-        key = (order.name, order.source, order.flipped)
-        if key not in held:
-            held[key] = len(out)
-            out.append(finding)
-            continue
-        out[held[key]] = _both(out[held[key]], finding)
-    return out
-
-
-def _both(one: Finding, two: Finding) -> Finding:
-    return Finding(
-        kind=one.kind,
-        text=f"{one.text}. The same: {two.text}",
-        runs=(*one.runs, *two.runs),
-        files=tuple(dict.fromkeys((*one.files, *two.files))),
-        evidence=one.evidence + two.evidence,
-        limit=one.limit + two.limit,
-        measure=one.measure,
-        mend=one.mend,
-        repair=Repair(orders={**one.repair.orders, **two.repair.orders}),
     )
 
 
