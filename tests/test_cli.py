@@ -196,26 +196,22 @@ def test_a_full_disk_leaves_one_message_and_no_broken_file(job, tmp_path, capsys
 
 @pytest.mark.parametrize("command", ["build", "predict", "compare"])
 def test_ctrl_c_ends_with_130_and_the_same_command_goes_on(job, tmp_path, command):
-    campaign = write_campaign(tmp_path, CAMPAIGN.replace("instances = 8", "instances = 60"))
-    kit, out = tmp_path / "kit", tmp_path / "out"
+    out = tmp_path / "out"
+    many = write_campaign(tmp_path, CAMPAIGN.replace("instances = 8", "instances = 60"))
+    long = ["--trajectories", 4000]  # work for some seconds
     words = {
-        "build": ["build", campaign, "--out", out],
-        "predict": ["predict", kit, "--out", out],
-        "compare": ["compare", kit, tmp_path / "shots", "--out", out],
+        "build": ["build", many, "--out", out],
+        "predict": ["predict", job / "kit", "--out", out, *long],
+        "compare": ["compare", job / "kit", job / "shots", "--out", out, *long],
     }[command]
-    if command != "build":
-        built = build_kit(load_campaign(campaign), kit)
-        if command == "compare":
-            write_shots(built, tmp_path / "shots")
-    process = subprocess.Popen([sys.executable, "-m", "rcbench.cli", *map(str, words)], stderr=subprocess.PIPE)
-    for _ in range(600):
-        if out.is_dir():
-            break
-        time.sleep(0.05)
-    time.sleep(0.7)
+    command_line = [sys.executable, "-m", "rcbench.cli", *map(str, words)]
+    process = subprocess.Popen(command_line, stderr=subprocess.PIPE)
+    while not out.is_dir() and process.poll() is None:
+        time.sleep(0.02)
+    time.sleep(0.3)
     process.send_signal(signal.SIGINT)
     message = process.communicate()[1].decode()
     assert process.returncode == 130, message
     assert "Traceback" not in message
-    done = subprocess.run([sys.executable, "-m", "rcbench.cli", *map(str, words)], capture_output=True, text=True)
+    done = subprocess.run(command_line, capture_output=True, text=True)
     assert done.returncode == 0, done.stderr

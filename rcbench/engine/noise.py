@@ -176,12 +176,16 @@ def _idle_places(rows: GateRows, noise: NoiseModel) -> ErrorPlaces:
     n = noise.n_qubits
     real = np.flatnonzero(~VIRTUAL[rows.kind])
     layers, where = np.unique(rows.layer[real], return_inverse=True)
+    if noise.layer_times is not None:
+        layers = np.flatnonzero(noise.layer_times)
+        where = np.searchsorted(layers, rows.layer[real])
     busy = np.zeros((len(layers), n))
     times = np.array([0.0, *noise.gate_times])[N_QUBITS[rows.kind[real]]]
     for column in range(2):
         qubit = rows.qubits[real, column]
         busy[where[qubit >= 0], qubit[qubit >= 0]] = times[qubit >= 0]
-    idle = busy.max(axis=1, keepdims=True, initial=0.0) - busy
+    longest = busy.max(axis=1, initial=0.0) if noise.layer_times is None else noise.layer_times[layers]
+    idle = longest[:, None] - busy
     flip, dephase = idle_twirl(idle, noise.t1, noise.t2)
     x1, x2 = idle / noise.t1, idle / noise.t2
     slope_flip = x1 * np.exp(-x1) / 4
