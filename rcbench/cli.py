@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import contextlib
+import os
 import sys
 from collections.abc import Callable, Iterator
 from pathlib import Path
-from typing import Any
+from typing import Any, NoReturn
 
 import click
 
@@ -34,13 +35,11 @@ def main() -> None:
         status = cli.main(standalone_mode=False)
     except click.exceptions.Exit as stop:
         status = stop.exit_code
-    except click.Abort:
-        status = _say("interrupted; the same command goes on from here", 130)
+    except (click.Abort, KeyboardInterrupt):
+        _interrupted()
     except click.ClickException as error:
         error.show()
         status = 2
-    except KeyboardInterrupt:
-        status = _say("interrupted; the same command goes on from here", 130)
     except InputError as error:
         status = _say(str(error), 2)
     except MemoryError:
@@ -52,6 +51,14 @@ def main() -> None:
         name = f"{error.filename}: " if error.filename else ""
         status = _say(f"{name}{error.strerror or error}", 2)
     sys.exit(status or 0)
+
+
+def _interrupted() -> NoReturn:
+    """End at once with 130; an ordinary exit would wait for threads, and may turn into a signal's status."""
+    _say("interrupted; the same command goes on from here", 130)
+    sys.stdout.flush()
+    sys.stderr.flush()
+    os._exit(130)
 
 
 def _say(message: str, status: int) -> int:

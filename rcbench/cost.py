@@ -194,7 +194,7 @@ def _with_protocol(
 
 def _estimators(experiment: Experiment, protocol: Protocol, runs: list[PlannedRun], noisy: bool) -> tuple[float, int]:
     """Seconds for the estimators of one instance, and the bytes of the distributions of one depth."""
-    from rcbench.engine.predict import batch_count
+    from rcbench.engine.register import batch_count
 
     depths = sorted({run.depth for run in runs})
     members = [run for run in runs if run.depth == depths[len(depths) // 2]]

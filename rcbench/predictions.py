@@ -9,7 +9,7 @@ from __future__ import annotations
 import math
 import time
 from collections import Counter, defaultdict
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -19,7 +19,7 @@ import numpy as np
 from rcbench.campaign import Campaign, Experiment
 from rcbench.circuits.circuit import Circuit
 from rcbench.device import Device
-from rcbench.engine.distribution import Distribution
+from rcbench.engine.parts import Prediction
 from rcbench.engine.work import Work, collecting
 from rcbench.errors import InputError
 from rcbench.estimators import estimator
@@ -121,7 +121,7 @@ def runs_of_campaign(campaign: Campaign, experiment: Experiment, protocol: Proto
 
 
 def group_runs(
-    experiment: str, runs: Sequence[PlannedRun], samples: dict[str, Distribution], ideal: dict[str, Distribution]
+    experiment: str, runs: Sequence[PlannedRun], samples: Mapping[str, Prediction], ideal: Mapping[str, Prediction]
 ) -> list[Group]:
     """One group a depth, with the samples given and the ideal probabilities beside them."""
     by_depth: dict[int, list[Run]] = defaultdict(list)
@@ -248,8 +248,8 @@ def predict_instance(
         threads=options.threads,
     )
     name, left = writer.experiment.name, Counter(run.depth for run in runs)
-    ideal: dict[str, Distribution] = {}
-    noisy: dict[str, Distribution] = {}
+    ideal: dict[str, Prediction] = {}
+    noisy: dict[str, Prediction] = {}
     found: dict[tuple[str, int], list[tuple[Measured, dict[str, float]]]] = {}
     for place, perfect, real in simulated:
         depth = runs[place].depth
@@ -262,7 +262,7 @@ def predict_instance(
         # a depth is worked out as soon as it is whole: distributions of all depths at once can outgrow the memory
         members = [run for run in runs if run.depth == depth]
         found["ideal", depth] = depth_values(name, protocol, members, ideal, ideal, shift=False)
-        if real is not None:
+        if all(run.circuit_id in noisy for run in members):
             found["noise-model", depth] = depth_values(name, protocol, members, noisy, ideal, shift=True)
         for run in members:
             del ideal[run.circuit_id]
@@ -277,8 +277,8 @@ def depth_values(
     experiment: str,
     protocol: Protocol,
     runs: Sequence[PlannedRun],
-    samples: dict[str, Distribution],
-    ideal: dict[str, Distribution],
+    samples: Mapping[str, Prediction],
+    ideal: Mapping[str, Prediction],
     *,
     shift: bool,
 ) -> list[tuple[Measured, dict[str, float]]]:

@@ -42,10 +42,10 @@ class IdealProbabilities:
             for run in runs
         }
         self._base = {row.circuit_id: row.base_id for row in kit.rows}
-        self._held: dict[str, FloatArray] = {}
+        self._held: dict[str, FloatArray | None] = {}
 
     def __call__(self, circuit_id: str) -> FloatArray | None:
-        """(2**n,) probabilities of a circuit's outcomes; a repeat has those of the circuit it repeats."""
+        """(2**n,) probabilities of a circuit's outcomes, None of too many; a repeat has those of the one it repeats."""
         circuit_id = self._base[circuit_id]
         if circuit_id not in self._held:
             from rcbench.engine.predict import distributions

@@ -32,7 +32,7 @@ PROTOCOLS = {
 
 def device(budget: bool = True) -> Device:
     return Device(
-        name="Willow-6",
+        name="Hazel-6",
         n_qubits=N,
         layout="line",
         couplers=tuple((q, q + 1) for q in range(N - 1)),

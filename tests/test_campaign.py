@@ -163,7 +163,7 @@ def test_all_errors_of_a_file_come_at_once(load):
 
 def test_t2_beyond_twice_t1_is_refused(load):
     text = DEVICE + "[device.errors.idle]\nt1_us = 10\nt2_us = 25\n" + EXPERIMENT
-    with pytest.raises(InputError, match="t2_us: found 25.0; allowed: at most 2 T1 = 20"):
+    with pytest.raises(InputError, match=r"t2_us: found 25\.0; allowed: at most 2 T1 = 20"):
         load(text)
 
 

@@ -18,8 +18,8 @@ HEAVY = ("numba", "cirq", "pandas", "numpy", "scipy", "matplotlib", "networkx", 
 
 def run(*words, capsys=None):
     """(status, standard output, standard error) of the command, in this process."""
+    sys.argv = ["rcbench", *map(str, words)]
     with pytest.raises(SystemExit) as stop:
-        sys.argv = ["rcbench", *map(str, words)]
         main()
     out, err = capsys.readouterr()
     return int(stop.value.code or 0), out, err

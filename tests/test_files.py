@@ -90,7 +90,7 @@ def test_a_folder_that_is_not_ours_is_refused(tmp_path):
     (tmp_path / "notes.txt").write_text("mine")
     with pytest.raises(InputError, match="one that rcbench wrote"), output_folder(tmp_path, "build", {}):
         pass
-    with pytest.raises(InputError, match="found .*notes.txt"), output_folder(tmp_path / "notes.txt", "build", {}):
+    with pytest.raises(InputError, match=r"found .*notes\.txt"), output_folder(tmp_path / "notes.txt", "build", {}):
         pass
 
 

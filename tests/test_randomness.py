@@ -13,7 +13,7 @@ def test_a_draw_depends_on_every_part_of_its_key_and_on_nothing_else():
 
 
 def test_the_raw_words_are_those_of_pcg64_seeded_by_sha256():
-    """The key's SHA-256, worked out by hand, seeds numpy's PCG64: the published generator, not numpy's distributions."""
+    """The key's SHA-256, worked out by hand, seeds PCG64: the published generator, none of numpy's distributions."""
     import hashlib
 
     digest = hashlib.sha256(b"7\x1fstr:x\x1fint:3").digest()

@@ -23,8 +23,8 @@ def find_targets(found: Sequence[Adopted], progress: Progress | None = None) -> 
     Raises:
         InputError: circuits without a single certain outcome, together.
     """
-    from rcbench.engine.predict import probabilities
     from rcbench.engine.readout import measured
+    from rcbench.engine.register import probabilities
     from rcbench.engine.state import final_state
 
     out, errors = {}, []

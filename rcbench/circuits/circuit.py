@@ -22,7 +22,8 @@ class Circuit:
         n_qubits: size of the register.
         layer: (rows,) native layer of each row, never decreasing.
         kind: (rows,) index into `gates.KINDS`.
-        qubits: (rows, 2) qubits of each row; -1 where there is none. A measurement holds its qubit and its classical bit.
+        qubits: (rows, 2) qubits of each row; -1 where there is none. A measurement holds its qubit and its
+            classical bit.
         first: (rows,) index of the row's first parameter in `parameters`, -1 where it has none.
         parameters: (m,) angles in radians (matrix entries for imported gates).
     """

@@ -5,7 +5,8 @@ A two-qubit matrix is written in the order |00>, |01>, |10>, |11> with the row's
 
     rz(t)       exp(-i t Z / 2)
     r(t, p)     exp(-i t (cos p X + sin p Y) / 2), a rotation about an equatorial axis
-    u(t, p, l)  the general one-qubit gate of OpenQASM: [[cos t/2, -e^{il} sin t/2], [e^{ip} sin t/2, e^{i(p+l)} cos t/2]]
+    u(t, p, l)  the general one-qubit gate of OpenQASM: rows cos t/2, -e^{il} sin t/2 and
+                e^{ip} sin t/2, e^{i(p+l)} cos t/2
     iswap       |01> <-> |10> with a factor i; sqrt_iswap is its principal root
     fsim(t, p)  |01> and |10> mixed by cos t and -i sin t, |11> multiplied by e^{-ip}
     zz(t)       exp(-i t ZZ / 2)
@@ -27,7 +28,10 @@ Structure = Literal["none", "dense", "diagonal", "swap-like"]
 
 @dataclass(frozen=True, slots=True)
 class GateKind:
-    """One kind of row. matrices: (m, n_parameters) angles to (m, d, d) unitaries; virtual: takes no time and no error."""
+    """One kind of row.
+
+    matrices: (m, n_parameters) angles to (m, d, d) unitaries. virtual: takes no time and has no error.
+    """
 
     name: str
     n_qubits: int
@@ -119,7 +123,9 @@ KINDS: tuple[GateKind, ...] = (
     GateKind("cz", 2, 0, "diagonal", _fixed([[1, 0, 0, 0], [0, 1, 0, 0], [0, 0, 1, 0], [0, 0, 0, -1]])),
     GateKind("cx", 2, 0, "dense", _fixed([[1, 0, 0, 0], [0, 1, 0, 0], [0, 0, 0, 1], [0, 0, 1, 0]])),
     GateKind("iswap", 2, 0, "swap-like", _fixed([[1, 0, 0, 0], [0, 0, _I, 0], [0, _I, 0, 0], [0, 0, 0, 1]])),
-    GateKind("sqrt_iswap", 2, 0, "swap-like", _fixed([[1, 0, 0, 0], [0, _H, _H * _I, 0], [0, _H * _I, _H, 0], [0, 0, 0, 1]])),
+    GateKind(
+        "sqrt_iswap", 2, 0, "swap-like", _fixed([[1, 0, 0, 0], [0, _H, _H * _I, 0], [0, _H * _I, _H, 0], [0, 0, 0, 1]])
+    ),
     GateKind("fsim", 2, 2, "swap-like", _fsim),
     GateKind("zz", 2, 1, "diagonal", _zz),
     GateKind("matrix2", 2, 32, "dense", _stored(4)),

@@ -64,9 +64,7 @@ _TOKEN = re.compile(
     r"|([^\W\d]\w*)|(\*\*|[-+*/^(),]))"
 )
 _NUMBER = r"(?:\d++\.?\d*+|\.\d++)(?:[eE][+-]?\d++)?"
-_USUAL = re.compile(
-    rf"\s*+(-?)\s*+(?:({_NUMBER})|(?:({_NUMBER})\s*+\*\s*+)?pi\s*+(?:([*/])\s*+(-?{_NUMBER}))?)\s*+"
-)
+_USUAL = re.compile(rf"\s*+(-?)\s*+(?:({_NUMBER})|(?:({_NUMBER})\s*+\*\s*+)?pi\s*+(?:([*/])\s*+(-?{_NUMBER}))?)\s*+")
 _Step = float | str | Operation
 FINITE = "an expression with a finite real value"
 

@@ -56,8 +56,8 @@ def _with_gates(circuit: Circuit, layer: IntArray, qubits: IntArray, matrices: n
     first = np.cumsum(count) - count
     parameters = np.zeros(int(count.sum()))
     for size, chosen in ((2, np.flatnonzero(~two)), (4, np.flatnonzero(two))):
-        numbers = np.ascontiguousarray(matrices[chosen, :size, :size]).reshape(len(chosen), size * size).view(np.float64)
-        parameters[first[chosen][:, None] + np.arange(2 * size * size)] = numbers
+        entries = np.ascontiguousarray(matrices[chosen, :size, :size]).reshape(len(chosen), size * size)
+        parameters[first[chosen][:, None] + np.arange(2 * size * size)] = entries.view(np.float64)
     measures = np.flatnonzero(circuit.kind == CODE["measure"])
     return Circuit(
         circuit.n_qubits,

@@ -14,7 +14,7 @@ from rcbench.engine.blocks import apply_plan
 from rcbench.engine.kernels import DENSE
 from rcbench.engine.noise import SOURCES, NoiseModel
 from rcbench.engine.operators import COSTS
-from rcbench.engine.predict import batch_count
+from rcbench.engine.register import batch_count
 from rcbench.engine.state import compile_circuit, zero_state
 from rcbench.engine.threads import Pool, thread_count
 from rcbench.engine.trajectories import BLOCK_QUBITS, NoisyProgram, noisy_program

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -46,6 +46,8 @@ class NoiseModel:
         read_1_of_0, read_0_of_1: (n,) readout flip probabilities p(1|0) and p(0|1).
         uncertainty: relative standard uncertainty of "one_qubit", "two_qubit", "idle", "readout_0to1", "readout_1to0",
             each common to all places.
+        layer_times: (layers,) how long each native layer of the one circuit lasts that this model is for, by its
+            number, where gates of that circuit are left out; None: as long as the layer's longest gate.
     """
 
     one_qubit: FloatArray
@@ -56,6 +58,21 @@ class NoiseModel:
     read_1_of_0: FloatArray
     read_0_of_1: FloatArray
     uncertainty: Mapping[str, float] = field(default_factory=dict)
+    layer_times: FloatArray | None = None
+
+    def on(self, qubits: Sequence[int], layer_times: FloatArray) -> NoiseModel:
+        """The model of some of the qubits, for a circuit whose gates on the others are left out."""
+        chosen = list(qubits)
+        return replace(
+            self,
+            one_qubit=self.one_qubit[chosen],
+            two_qubit=self.two_qubit[np.ix_(chosen, chosen)],
+            t1=self.t1[chosen],
+            t2=self.t2[chosen],
+            read_1_of_0=self.read_1_of_0[chosen],
+            read_0_of_1=self.read_0_of_1[chosen],
+            layer_times=layer_times,
+        )
 
     @property
     def n_qubits(self) -> int:

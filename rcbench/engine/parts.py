@@ -1,4 +1,4 @@
-"""Predictions of wide registers: distributions of some bits each, where one of all bits would have too many outcomes."""
+"""Predictions of wide registers: distributions of some bits each, where one of all bits would not fit the memory."""
 
 from __future__ import annotations
 
@@ -92,3 +92,6 @@ class Parts:
             "fewer measured qubits, or averages of single qubits as in a butterfly echo: one distribution of so many "
             "bits does not fit",
         )
+
+
+Prediction = Distribution | Parts

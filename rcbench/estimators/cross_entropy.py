@@ -50,7 +50,8 @@ def of_run(run: Run) -> list[Measured]:
         linear = Value(dimension * mean.value - 1, dimension * mean.std_error)
         found += [("xeb_linear", linear), ("xeb_fidelity", _ratio(linear, excess))]
     if run.sample.shots != 1:  # one shot has no pair
-        few = 0 < run.sample.shots and run.sample.shots * (run.sample.shots - 1) < 2 * LEAST_PAIRS * dimension
+        shots = run.sample.shots
+        few = shots > 0 and shots * (shots - 1) < 2 * LEAST_PAIRS * dimension
         collision = Value(math.nan, math.nan) if few else run.sample.collision()
         found.append(("collision_probability", collision))
         if run.ideal is not None:

@@ -38,7 +38,7 @@ _ROWS = (
         higher_is_better=1,
         estimator="cross-entropy",
         formula="F = X / v with v = D sum p^2 - 1 of that circuit",
-        source="ratio form as in Choi et al., Nature 613, 468 (2023); supplement of Arute et al., Nature 574, 505 (2019)",
+        source="Choi et al., Nature 613, 468 (2023); supplement of Arute et al., Nature 574, 505 (2019)",
         blind="Equals the state fidelity for white noise only; with local noise at shallow depth it is larger.",
     ),
     Signature(
@@ -53,7 +53,8 @@ _ROWS = (
         estimator="cross-entropy",
         formula="F_self^2 = (D C - 1) / v, C = coincident pairs of shots / all pairs, v = D sum p^2 - 1",
         source="speckle purity as in the supplement of Arute et al., Nature 574, 505 (2019) (from memory)",
-        blind="Says that some structure is there, not that it is the structure of this circuit. Needs shots of the order of sqrt(2 D) / F^2.",
+        blind="Says that some structure is there, not that it is the structure of this circuit. Needs shots of the "
+        "order of sqrt(2 D) / F^2.",
     ),
     Signature(
         key="collision_probability",
@@ -106,7 +107,8 @@ _ROWS = (
         margin=0.05,
         higher_is_better=1,
         estimator="echo",
-        formula="S = 4^n/(4^n - 1) sum_k (-1/2)^k h_k - 1/(4^n - 1), h_k = share of shots at Hamming distance k from the target",
+        formula="S = 4^n/(4^n - 1) sum_k (-1/2)^k h_k - 1/(4^n - 1), h_k = share of shots at Hamming distance k from the "
+        "target",
         source="Proctor et al., Nature Physics 18, 75 (2022), arXiv:2008.11294",
         blind="Equals the process polarization only between random local Clifford layers and for Pauli errors.",
     ),
@@ -148,7 +150,8 @@ _ROWS = (
         estimator="butterfly-echo",
         formula="C = <Z_m> of the butterfly echo over <Z_m> of the same echo without the butterfly",
         source="Mi et al., Science 374, 1479 (2021), arXiv:2101.08870",
-        blind="A small value alone is no evidence of scrambling: it needs a reference echo that is still alive, and the ratio over-corrects once scrambled.",
+        blind="A small value alone is no evidence of scrambling: it needs a reference echo that is still alive, and the "
+        "ratio over-corrects once scrambled.",
     ),
     Signature(
         key="reference_echo",
@@ -175,7 +178,8 @@ _ROWS = (
         higher_is_better=1,
         formula="tr rho^2 of the region",
         source="Lubkin, J. Math. Phys. 19, 1028 (1978) (from memory)",
-        blind="Of a part of the system it falls by entanglement and by loss alike; only the whole-state purity shows what is kept.",
+        blind="Of a part of the system it falls by entanglement and by loss alike; only the whole-state purity shows "
+        "what is kept.",
     ),
     Signature(
         key="renyi2_entropy",

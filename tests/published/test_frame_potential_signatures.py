@@ -114,3 +114,11 @@ def test_the_design_depth_is_the_first_from_which_all_are_close():
     assert "deeper circuits could" in none.message
     with pytest.raises(InputError, match="one or more depths"):
         design_depth([], [], 16)
+
+
+def test_pairs_of_an_instance_with_itself_would_have_added_the_published_bias():
+    """F (N - 1) / N + d^(2k) / N with the diagonal: 411.4 for 2 at d = 8, k = 2, N = 10; identity, 1e-9."""
+    squares = overlaps(unitary_group.rvs(8, size=10, random_state=2))
+    biased = (squares**2).mean()
+    assert biased == pytest.approx(reference.with_diagonal(estimate(squares, 2)[0], 2, 8, 10), rel=1e-9)
+    assert reference.with_diagonal(2.0, 2, 8, 10) == pytest.approx(411.4)
