@@ -36,6 +36,7 @@ if TYPE_CHECKING:
     from rcbench.protocol import Protocol
 
 _TRIAL_BITS = 16  # estimators are timed on registers up to here; their cost grows as the number of outcomes
+_TRIAL_PARTS = 4  # bits, where distributions are of few bits each
 _TILTED = ("one_qubit", "two_qubit", "idle", "readout")
 _LOADING = 2.0  # seconds to load compiled code and libraries
 _LONG = 20.0  # seconds: a depth that takes so long is not timed again at others
@@ -46,7 +47,8 @@ class Cost:
     """What the prediction of one experiment will take.
 
     Args:
-        experiment: its name. circuits, trajectories: simulated, of all instances.
+        experiment: its name. circuits, trajectories: simulated, of all instances; light cones are circuits
+            of their own.
         amplitudes: amplitudes that gates are applied to, added up over the gates.
         seconds: wall time. peak_bytes: memory of the whole process.
     """
@@ -180,11 +182,14 @@ def _with_protocol(
     circuits = [run.load() for run in runs]
     making = time.perf_counter() - started
     trajectories = options.trajectories or trajectories_for(experiment)
-    work = expected(circuits, noise, trajectories=trajectories, dtype=options.dtype, threads=options.threads)
+    work = expected(
+        circuits, noise, trajectories=trajectories, dtype=options.dtype,
+        memory_limit=options.memory_limit, threads=options.threads,
+    )  # fmt: skip
     estimating, held = _estimators(experiment, protocol, runs, noise is not None)
     return Cost(
         experiment.name,
-        instances * len(runs),
+        instances * work.circuits,
         instances * work.trajectories,
         instances * work.amplitudes,
         instances * (making + work.seconds + estimating),
@@ -194,14 +199,16 @@ def _with_protocol(
 
 def _estimators(experiment: Experiment, protocol: Protocol, runs: list[PlannedRun], noisy: bool) -> tuple[float, int]:
     """Seconds for the estimators of one instance, and the bytes of the distributions of one depth."""
+    from rcbench.engine.local import MOST_JOINT_BITS
     from rcbench.engine.register import batch_count
 
     depths = sorted({run.depth for run in runs})
     members = [run for run in runs if run.depth == depths[len(depths) // 2]]
     widest = max(len(run.measured_qubits) for run in members)
+    trial = _TRIAL_BITS if widest <= MOST_JOINT_BITS else _TRIAL_PARTS
     ideal, real = {}, {}
     for place, run in enumerate(members):
-        bits = min(len(run.measured_qubits), _TRIAL_BITS)
+        bits = min(len(run.measured_qubits), trial)
         members[place] = replace(run, measured_qubits=run.measured_qubits[:bits], target=run.target[:bits])
         ideal[run.circuit_id] = _any_distribution(bits, 0)
         real[run.circuit_id] = _any_distribution(bits, batch_count(bits))
@@ -211,6 +218,8 @@ def _estimators(experiment: Experiment, protocol: Protocol, runs: list[PlannedRu
         depth_values(experiment.name, protocol, members, real, ideal, shift=True)
     seconds = time.perf_counter() - started
     numbers = 1 + noisy * (2 + batch_count(widest) + len(_TILTED))
+    if widest > MOST_JOINT_BITS:  # distributions of few bits each
+        return seconds * widest / trial * len(depths), 0
     held = 2**widest * 8 * numbers * len(members)
     return seconds * 2.0 ** max(0, widest - _TRIAL_BITS) * len(depths), held
 

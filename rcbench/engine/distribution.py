@@ -10,6 +10,8 @@ import numpy as np
 from rcbench.arrays import FloatArray, IntArray
 from rcbench.estimators.sample import Value
 
+BLOCK = 2**18  # outcomes that are worked on at once
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Distribution:
@@ -42,30 +44,41 @@ class Distribution:
         rest: FloatArray = self.batches.mean(axis=0)
         return self.weight * self.exact + (1 - self.weight) * rest
 
-    def _linear(self, apply: FloatArray) -> Value:
-        exact = float(self.exact @ apply)
-        if self.batches is None:
+    def _value(self, exact: float, groups: FloatArray | None) -> Value:
+        """The mean from that of the exact part and those of the batches (n_batches,)."""
+        if groups is None:
             return Value(exact, 0.0)
-        groups = self.batches @ apply
         rest = 1 - self.weight
         error = float(groups.std(ddof=1)) / len(groups) ** 0.5 if len(groups) > 1 else float("inf")
         return Value(self.weight * exact + rest * float(groups.mean()), rest * error)
 
     def average(self, values: FloatArray) -> Value:
         """Mean of a function of the outcome."""
-        return self._linear(np.asarray(values, dtype=np.float64))
+        apply = np.asarray(values, dtype=np.float64)
+        return self._value(float(self.exact @ apply), None if self.batches is None else self.batches @ apply)
 
     def z_average(self, bit: int) -> Value:
         """Mean of +1 for 0 and -1 for 1 of one bit."""
-        index = np.arange(2**self.n_bits)
-        return self._linear(1.0 - 2.0 * (index >> (self.n_bits - 1 - bit) & 1))
+
+        def mean(rows: FloatArray) -> FloatArray:
+            halves = rows.reshape(len(rows), 2**bit, 2, -1).sum(axis=(1, 3), dtype=np.float64)
+            return np.asarray(halves[:, 0] - halves[:, 1])
+
+        return self._value(float(mean(self.exact[None])[0]), None if self.batches is None else mean(self.batches))
 
     def hamming_average(self, target: IntArray, weights: FloatArray) -> Value:
         """Mean of weights[k] at Hamming distance k from the target."""
         powers = np.int64(1) << np.arange(self.n_bits - 1, -1, -1, dtype=np.int64)
         place = int(np.asarray(target, dtype=np.int64) @ powers)
-        distance = np.bitwise_count(np.arange(2**self.n_bits) ^ place)
-        return self._linear(np.asarray(weights, dtype=np.float64)[distance])
+        by_distance, size = np.asarray(weights, dtype=np.float64), 2**self.n_bits
+        exact, groups = 0.0, None if self.batches is None else np.zeros(len(self.batches))
+        for start in range(0, size, BLOCK):  # in blocks, since the weight of every outcome is an array as large again
+            block = slice(start, min(start + BLOCK, size))
+            apply = by_distance[np.bitwise_count(np.arange(block.start, block.stop) ^ place)]
+            exact += float(self.exact[block] @ apply)
+            if groups is not None and self.batches is not None:
+                groups += self.batches[:, block] @ apply
+        return self._value(exact, groups)
 
     def collision(self) -> Value:
         """sum f^2, from pairs of different batches so that Monte Carlo noise does not add to it."""

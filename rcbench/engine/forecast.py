@@ -5,6 +5,7 @@ from __future__ import annotations
 import statistics
 import time
 from collections.abc import Sequence
+from functools import cache
 
 import numpy as np
 
@@ -12,9 +13,10 @@ from rcbench.circuits.circuit import Circuit, CircuitBuilder
 from rcbench.engine import memory, mixture
 from rcbench.engine.blocks import apply_plan
 from rcbench.engine.kernels import DENSE
+from rcbench.engine.local import cone_pieces, reduces
 from rcbench.engine.noise import SOURCES, NoiseModel
 from rcbench.engine.operators import COSTS
-from rcbench.engine.register import batch_count
+from rcbench.engine.register import How, batch_count
 from rcbench.engine.state import compile_circuit, zero_state
 from rcbench.engine.threads import Pool, thread_count
 from rcbench.engine.trajectories import BLOCK_QUBITS, NoisyProgram, noisy_program
@@ -22,6 +24,7 @@ from rcbench.engine.tree import Node, build_tree
 from rcbench.engine.work import Work
 
 SAMPLE = 8  # circuits of each size that are looked at closely
+CONE_SAMPLE = 6  # the same of those with light cones of their own
 _TRIAL_QUBITS = 20  # speed does not change much above
 _TRIALS = 5
 _SUMMING = 4  # adding up the probabilities of a trajectory takes as long as so many operators
@@ -34,18 +37,42 @@ def expected(
     *,
     trajectories: int = 200,
     dtype: str = "complex64",
+    memory_limit: int | None = None,
     threads: int | None = None,
 ) -> Work:
     """What `predict.distributions` will take for these circuits, within about a factor of two.
 
     The speed of this machine is measured for a few hundredths of a second; arguments as in `predict.distributions`.
     """
-    total = Work()
-    for n_qubits in sorted({circuit.n_qubits for circuit in circuits}):
-        members = [circuit for circuit in circuits if circuit.n_qubits == n_qubits]
+    total, how = Work(), How(trajectories, 0, dtype, memory_limit, threads)
+    reduced = [circuit for circuit in circuits if reduces(circuit, noise, how)]
+    _add_cones(total, reduced, noise, how)
+    left = set(map(id, reduced))
+    whole = [circuit for circuit in circuits if id(circuit) not in left]
+    for n_qubits in sorted({circuit.n_qubits for circuit in whole}):
+        members = [circuit for circuit in whole if circuit.n_qubits == n_qubits]
         total.circuits += len(members)
         _add_size(total, members, noise, trajectories, dtype, thread_count(threads))
     return total
+
+
+def _add_cones(total: Work, circuits: list[Circuit], noise: NoiseModel | None, how: How) -> None:
+    """What circuits take of which only light cones are simulated: a sample of them, times how many there are."""
+    sample = circuits[:: max(1, len(circuits) // CONE_SAMPLE)][:CONE_SAMPLE]
+    part = Work()
+    for circuit in sample:
+        start = time.perf_counter()
+        pieces = cone_pieces(circuit, noise, how)
+        part.seconds += time.perf_counter() - start
+        for piece, model in pieces:
+            part.circuits += 1
+            _add_size(part, [piece.circuit], model, how.trajectories, how.dtype, thread_count(how.threads))
+    share = len(circuits) / max(1, len(sample))
+    total.circuits += round(part.circuits * share)
+    total.trajectories += round(part.trajectories * share)
+    total.amplitudes += part.amplitudes * share
+    total.seconds += part.seconds * share
+    total.holds(part.peak_bytes)
 
 
 def _add_size(
@@ -102,6 +129,7 @@ def _steps_of_a_trajectory(noisy: NoisyProgram) -> float:
     return float(len(noisy.program) - first @ noisy.op / first.sum())
 
 
+@cache
 def _speed(n_qubits: int, dtype: str, threads: int) -> float:
     """Amplitudes times dense operators a second, of one state: a small one on one thread, a large one on all."""
     n = min(n_qubits, _TRIAL_QUBITS)

@@ -125,6 +125,19 @@ def on_cones(circuit: Circuit, noise: NoiseModel | None, how: How, work: Work) -
     Raises:
         InputError: a cone that does not fit the memory.
     """
+    pieces, independent = _ideal_pieces(circuit, how)
+    ideal = _predicted(circuit, [(piece, None) for piece in pieces], independent, how, work)
+    noisy = _noisy_pieces(circuit, noise, how) if noise is not None else None
+    return ideal, _predicted(circuit, noisy, False, how, work) if noisy else None
+
+
+def cone_pieces(circuit: Circuit, noise: NoiseModel | None, how: How) -> list[tuple[Piece, NoiseModel | None]]:
+    """Everything that `on_cones` simulates."""
+    pieces: list[tuple[Piece, NoiseModel | None]] = [(piece, None) for piece in _ideal_pieces(circuit, how)[0]]
+    return pieces + ((_noisy_pieces(circuit, noise, how) or []) if noise is not None else [])
+
+
+def _ideal_pieces(circuit: Circuit, how: How) -> tuple[list[Piece], bool]:
     small = simplified(circuit)
     pieces, independent = _pieces(small, False, how)
     if pieces is None:
@@ -135,13 +148,14 @@ def on_cones(circuit: Circuit, noise: NoiseModel | None, how: How, work: Work) -
             f"{circuit.n_qubits} qubits",
             "fewer qubits, a lower depth, or more memory",
         )
-    ideal = _predicted(circuit, pieces, independent, None, how, work)
-    if noise is None:
-        return ideal, None
-    pieces, _ = _pieces(circuit, True, how)  # errors strike between gates, which then no longer cancel
-    if pieces is None:
-        return ideal, None
-    return ideal, _predicted(circuit, pieces, False, noise, how, work)
+    return pieces, independent
+
+
+def _noisy_pieces(circuit: Circuit, noise: NoiseModel, how: How) -> list[tuple[Piece, NoiseModel | None]] | None:
+    """Cones of the circuit as it is, with their models: errors strike between gates, which then no longer cancel."""
+    pieces, _ = _pieces(circuit, True, how)
+    times = layer_times(circuit, noise.gate_times)
+    return None if pieces is None else [(piece, noise.on(piece.qubits, times)) for piece in pieces]
 
 
 def _pieces(circuit: Circuit, noisy: bool, how: How) -> tuple[list[Piece] | None, bool]:
@@ -166,14 +180,12 @@ def _pieces(circuit: Circuit, noisy: bool, how: How) -> tuple[list[Piece] | None
 
 
 def _predicted(
-    circuit: Circuit, pieces: list[Piece], independent: bool, noise: NoiseModel | None, how: How, work: Work
+    circuit: Circuit, pieces: list[tuple[Piece, NoiseModel | None]], independent: bool, how: How, work: Work
 ) -> Prediction:
     found: list[Distribution] = []
-    times = layer_times(circuit, noise.gate_times) if noise is not None else np.zeros(0)
-    for piece in pieces:
-        model = noise.on(piece.qubits, times) if noise is not None else None
+    for piece, model in pieces:
         ((_, ideal, noisy),) = whole_distributions([piece.circuit], model, how, work)
         found.append(ideal if noisy is None else noisy)
     if len(pieces) == 1:
         return found[0]
-    return Parts(len(circuit.measured_qubits), tuple(piece.bits for piece in pieces), tuple(found), independent)
+    return Parts(len(circuit.measured_qubits), tuple(piece.bits for piece, _ in pieces), tuple(found), independent)

@@ -11,7 +11,7 @@ import numpy as np
 from rcbench.arrays import ComplexArray, FloatArray
 from rcbench.circuits.circuit import Circuit
 from rcbench.engine import memory, tree
-from rcbench.engine.distribution import Distribution
+from rcbench.engine.distribution import BLOCK, Distribution
 from rcbench.engine.mixture import bytes_needed, probability_type, run_patterns
 from rcbench.engine.noise import SOURCES, NoiseModel
 from rcbench.engine.readout import flip, measured
@@ -22,9 +22,36 @@ from rcbench.randomness import Draw
 
 
 def probabilities(state: ComplexArray) -> FloatArray:
-    """(2**n,) squared magnitudes."""
+    """(2**n,) squared magnitudes; nothing else of that size is made."""
+    out = np.empty(len(state), dtype=probability_type(len(state).bit_length() - 1))
+    for start, block in probability_blocks(state):
+        out[start : start + len(block)] = block
+    return out
+
+
+def probability_blocks(state: ComplexArray) -> Iterator[tuple[int, FloatArray]]:
+    """Squared magnitudes a block at a time, with where each block begins."""
     real = probability_type(len(state).bit_length() - 1)
-    return np.square(state.real, dtype=real) + np.square(state.imag, dtype=real)
+    for start in range(0, len(state), BLOCK):
+        block = state[start : start + BLOCK]
+        yield start, np.square(block.real, dtype=real) + np.square(block.imag, dtype=real)
+
+
+def measured_probabilities(state: ComplexArray, qubits: Sequence[int]) -> FloatArray:
+    """(2**k,) distribution over the measured qubits, the first one most significant; few qubits take little memory."""
+    n = len(state).bit_length() - 1
+    outer = max(0, n - (BLOCK.bit_length() - 1))  # leading qubits, which a block holds fixed
+    if len(qubits) == n or not outer:
+        return measured(probabilities(state), qubits)
+    kept = sorted(qubits)
+    fixed, inner = [q for q in kept if q < outer], [q - outer for q in kept if q >= outer]
+    sums = np.zeros((2 ** len(fixed), 2 ** len(inner)))
+    for start, block in probability_blocks(state):
+        row = 0
+        for qubit in fixed:
+            row = 2 * row + (start >> (n - 1 - qubit) & 1)
+        sums[row] += measured(block, inner) if inner else block.sum(dtype=np.float64)
+    return measured(sums.reshape(-1), [kept.index(qubit) for qubit in qubits])
 
 
 def content_key(circuit: Circuit) -> str:
@@ -57,13 +84,15 @@ def whole_distributions(
     with Pool(how.threads) as pool:
         for index, state in states:
             circuit = circuits[index]
-            whole = probabilities(state)
-            ideal = Distribution(len(circuit.measured_qubits), measured(whole, circuit.measured_qubits))
-            noisy = None
-            if noise is not None:
+            qubits = circuit.measured_qubits
+            if noise is None:
+                yield index, Distribution(len(qubits), measured_probabilities(state, qubits)), None
+            else:
+                whole = probabilities(state)
+                ideal = Distribution(len(qubits), measured(whole, qubits))
                 with work.timed():
                     noisy = noisy_distribution(circuit, whole, noise, how.trajectories, how.seed, how.dtype, pool, work)
-            yield index, ideal, noisy
+                yield index, ideal, noisy
 
 
 def needed_bytes(n_qubits: int, noisy: bool, dtype: str) -> int:

@@ -107,8 +107,8 @@ _ROWS = (
         margin=0.05,
         higher_is_better=1,
         estimator="echo",
-        formula="S = 4^n/(4^n - 1) sum_k (-1/2)^k h_k - 1/(4^n - 1), h_k = share of shots at Hamming distance k from the "
-        "target",
+        formula="S = 4^n/(4^n - 1) sum_k (-1/2)^k h_k - 1/(4^n - 1), h_k = share of shots at Hamming distance k from "
+        "the target",
         source="Proctor et al., Nature Physics 18, 75 (2022), arXiv:2008.11294",
         blind="Equals the process polarization only between random local Clifford layers and for Pauli errors.",
     ),
@@ -150,8 +150,8 @@ _ROWS = (
         estimator="butterfly-echo",
         formula="C = <Z_m> of the butterfly echo over <Z_m> of the same echo without the butterfly",
         source="Mi et al., Science 374, 1479 (2021), arXiv:2101.08870",
-        blind="A small value alone is no evidence of scrambling: it needs a reference echo that is still alive, and the "
-        "ratio over-corrects once scrambled.",
+        blind="A small value alone is no evidence of scrambling: it needs a reference echo that is still alive, and "
+        "the ratio over-corrects once scrambled.",
     ),
     Signature(
         key="reference_echo",

@@ -15,7 +15,8 @@ class Signature:
         key: name in files. title: name in text. axis: one of AXES. unit: outside unit, empty for a pure number.
         low, high: range of the exact quantity (estimates may leave it).
         null: value for a fully mixed state of n qubits, as a function of n; None where it depends on more.
-        guard: key of the companion that must exclude its own null where a scrambled value equals a mixed one; else empty.
+        guard: key of the companion that must exclude its own null where a scrambled value equals a mixed one, else
+            empty.
         margin: default margin, absolute unless margin_relative says that it is a share of the prediction.
         higher_is_better: +1 where more is better, -1 where less is, 0 where neither.
         formula, source, blind: what the card says: the formula, where it was published, what it cannot show.

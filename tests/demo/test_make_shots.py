@@ -53,5 +53,5 @@ def test_the_quick_noisy_gate_is_the_gate_and_then_cirqs_depolarizing_channel():
     gate = cirq.PhasedXPowGate(phase_exponent=0.3, exponent=0.5)(qubits[1])
     simulator = cirq.DensityMatrixSimulator(dtype=np.complex128)
     ours = simulator.simulate(circuit + NoisyOneQubit(cirq.unitary(gate), 0.1)(qubits[1])).final_density_matrix
-    theirs = simulator.simulate([*circuit, gate, cirq.depolarize(0.1)(qubits[1])]).final_density_matrix
+    theirs = simulator.simulate(circuit + cirq.Circuit(gate, cirq.depolarize(0.1)(qubits[1]))).final_density_matrix
     assert np.abs(ours - theirs).max() < 1e-12

@@ -9,8 +9,8 @@ is told where
   ones, or all permutations that move as few bits, n! in the end;
 - the other half, which had no part in the search, prefers it by more than ln(1 / ALPHA);
 - the circuits fit clearly better: the shots as asked keep less than KEPT of the fidelity;
-- the circuits then explain orphans.CLAIMED_SHARE of the structure that is there: shots of something else fit some
-  order, too.
+- the circuits then explain orphans.CLAIMED_SHARE of the structure of the runs that prefer it, and pools.POOLED_SHARE
+  of that of all: shots of something else fit some order, too.
 
 A deep circuit keeps 2^-(n - cycles) of its cross-entropy under a permutation, so one exchange halves it. Where
 circuits are symmetric several orders fit alike: exchanges that change nothing are counted and told.

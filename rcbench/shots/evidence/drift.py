@@ -10,6 +10,7 @@ all of them. Only shot noise is in the test, since the circuit is the same.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from typing import NamedTuple
 
@@ -47,10 +48,12 @@ def chi2_sigmas(chi2: float, dof: int) -> float:
 
     if dof < 1:
         return 0.0
-    log_tail = float(distribution.logsf(chi2, dof))
-    if log_tail > -600:
-        return float(norm.isf(np.exp(log_tail)))
-    return float(np.sqrt(-2 * log_tail))
+    tail = float(distribution.sf(chi2, dof))
+    if tail > 1e-300:
+        return float(norm.isf(tail))
+    # the first term of the tail's expansion; scipy has none so far out
+    log_tail = -chi2 / 2 + (dof / 2 - 1) * math.log(chi2 / 2) - math.lgamma(dof / 2)
+    return math.sqrt(-2 * log_tail)
 
 
 def change_of_values(series: Sequence[FloatArray]) -> Change:

@@ -132,7 +132,8 @@ def find_evidence(
     findings += wording.wrong_orders(orders)
     if len(few) < len(studies) or len(orders) > left:
         findings += match_circuits(kit, shots, studies, ideals, len(cases), step)
-    findings += exchange.with_reference(cases, ideals)
+    settled = {key for finding in findings if finding.kind == "other-circuit" for key in finding.runs}
+    findings += exchange.with_reference(cases, ideals, settled)
     findings += twice
     findings += _left_over(studies, len(cases), aside)
     findings += repeats.drifting(cases, studies, ideals, series, shots)

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections import defaultdict
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 
 import numpy as np
 
@@ -16,14 +16,15 @@ from rcbench.arrays import FloatArray, IntArray
 from rcbench.shots.evidence import identity, scores, wording
 from rcbench.shots.evidence.cases import Case, Ideals
 from rcbench.shots.evidence.finding import ALPHA, Finding
+from rcbench.shots.shots import RunKey
 
 _ONE = np.zeros(1, dtype=np.int64)
 
 
-def with_reference(cases: Sequence[Case], ideals: Ideals) -> list[Finding]:
-    """Pairs of reference and butterfly run that fit better the other way round."""
+def with_reference(cases: Sequence[Case], ideals: Ideals, settled: Collection[RunKey] = ()) -> list[Finding]:
+    """Pairs of reference and butterfly run that fit better the other way round; settled: runs told to be elsewhere."""
     groups: dict[tuple[str, int, int, int], list[Case]] = defaultdict(list)
-    for case in cases:
+    for case in (case for case in cases if case.key not in settled):
         groups[case.row.experiment, case.row.instance, case.row.depth, case.key[1]].append(case)
     pairs = []
     for members in groups.values():

@@ -14,12 +14,13 @@ from rcbench.randomness import Draw
 from rcbench.shots.evidence import orphans, scores
 from rcbench.shots.evidence.cases import Case, entries
 from rcbench.shots.evidence.finding import ALPHA
-from rcbench.shots.evidence.orders import Order
+from rcbench.shots.evidence.orders import Order, identity
 
 POOL_SIZE = 2**24  # probabilities held at once; more runs than that allows add nothing that matters
 SEARCH_ENTRIES = 40_000  # outcomes that the search climbs on; the decision uses all
 SEARCH_FIDELITY = 0.2
 CLEAR = math.log(1 / ALPHA)
+POOLED_SHARE = 0.4  # of the structure of all runs, where some may be of other circuits besides
 
 
 class Pool(Protocol):
@@ -74,6 +75,11 @@ def evidence(pool: Pool, order: Order) -> tuple[float, float]:
     total = np.zeros((int(pool.depth_groups().max()) + 1, found.shape[1]))
     np.add.at(total, pool.depth_groups(), found)
     return float(scores.mixture(total).sum()), float(scores.best(total).sum())
+
+
+def preference(pool: Pool, order: Order) -> FloatArray:
+    """(runs,) nats by which each run prefers an order to the one asked for."""
+    return scores.mixture(pool.by_run(order)) - scores.best(pool.by_run(identity(pool.n_bits)))
 
 
 def halves(counts: IntArray, draw: Draw) -> tuple[IntArray, IntArray]:
@@ -168,11 +174,17 @@ class SampledPool:
         cross = scores.crossed(self._ratio(order.mended(self.index)), self.counts, self.starts, self.excess())
         found = scores.collisions(self.at, self.counts, self.starts, 2.0**self.n_bits)
         explained, _ = orphans.explained_excess(cross)
-        # weighed by precision, or one run of few shots would decide
-        weight = 1 / np.square(found.error)
-        error = float(weight.sum()) ** -0.5
-        there = float(weight @ found.excess / weight.sum()) - orphans.ONE_SIDED * error
-        return bool(weight @ explained / weight.sum() >= orphans.CLAIMED_SHARE * there)
+        weight = 1 / np.square(found.error)  # by precision, or one run of few shots would decide
+
+        def share_is(least: float, of: FloatArray) -> bool:
+            error = float(of.sum()) ** -0.5
+            there = float(of @ found.excess / of.sum()) - orphans.ONE_SIDED * error
+            return bool(of @ explained / of.sum() >= least * there)
+
+        gains = preference(self, order) > CLEAR
+        if not gains.any():
+            return share_is(orphans.CLAIMED_SHARE, weight)
+        return share_is(orphans.CLAIMED_SHARE, weight * gains) and share_is(POOLED_SHARE, weight)
 
     def _ratio(self, index: IntArray) -> FloatArray:
         return np.asarray(self.flat[self.offset + index] * self.at)
@@ -293,9 +305,7 @@ class ReturnPool:
 
     def most_gain(self, order: Order) -> float:
         """As Pool: a string of something else is the target by chance once in 2^n, so n ln 2 a run that gains."""
-        asked = Order("", tuple(range(self.n_bits)))
-        gain = scores.mixture(self.by_run(order)) - scores.best(self.by_run(asked))
-        return float((gain > CLEAR).sum()) * self.n_bits * math.log(2)
+        return float((preference(self, order) > CLEAR).sum()) * self.n_bits * math.log(2)
 
     def agreement(self) -> FloatArray:
         """(n, n) sum over shots of the product of Z of a delivered bit and of a target bit."""
