@@ -159,8 +159,16 @@ def plan(campaign: Path, csv_file: Path | None) -> None:
 @click.option("--out", type=_NEW, required=True, help="Folder for the kit.")
 @click.option("--format", "circuit_format", type=click.Choice(["qasm3", "qasm2", "cirq-json"]), help="Circuit files.")
 @click.option("--missing", type=_EXISTING, metavar="SHOTS", help="Only the circuits that these shots lack.")
+@click.option("--processes", type=click.IntRange(1, 256), help="Processes; default: the cores, for large kits only.")
 @_bit_order
-def build(campaign: Path, out: Path, circuit_format: str | None, missing: Path | None, bit_order: str | None) -> None:
+def build(
+    campaign: Path,
+    out: Path,
+    circuit_format: str | None,
+    missing: Path | None,
+    processes: int | None,
+    bit_order: str | None,
+) -> None:
     """Write the circuits of a campaign, their roster and the hand-over note into a folder."""
     from rcbench.campaign import load_campaign
     from rcbench.kit import build_kit
@@ -170,8 +178,23 @@ def build(campaign: Path, out: Path, circuit_format: str | None, missing: Path |
         wanted = None
         if missing is not None:
             wanted = _missing(campaign, out, missing, bit_order)
-        kit = build_kit(loaded, out, circuit_format=circuit_format, missing=wanted, progress=step("building circuits"))
+        kit = build_kit(
+            loaded,
+            out,
+            circuit_format=circuit_format,
+            missing=wanted,
+            progress=step("building circuits"),
+            processes=processes or _processes(loaded),
+        )
     click.echo(f"{out}: {len(kit.rows)} circuits to run; see HANDOVER.md")
+
+
+def _processes(campaign: Any) -> int:
+    """One process for a small kit: starting another costs more than it saves."""
+    from rcbench.engine.threads import available_threads
+
+    circuits = sum(experiment.instances * len(experiment.depths) for experiment in campaign.experiments)
+    return available_threads() if circuits >= 1000 else 1
 
 
 def _missing(campaign: Path, out: Path, shots: Path, bit_order: str | None) -> frozenset[str]:

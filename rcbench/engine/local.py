@@ -10,14 +10,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rcbench.arrays import BoolArray, FloatArray
+from rcbench.arrays import BoolArray, ComplexArray, FloatArray
 from rcbench.circuits.circuit import Circuit
 from rcbench.engine import memory, tree
 from rcbench.engine.cones import clusters, cone, cone_rows, layer_times, simplified
 from rcbench.engine.distribution import Distribution
 from rcbench.engine.noise import NoiseModel
 from rcbench.engine.parts import Parts, Prediction
-from rcbench.engine.register import How, needed_bytes, probabilities, whole_distributions
+from rcbench.engine.register import How, needed_bytes, probability_blocks, whole_distributions
 from rcbench.engine.work import Work
 from rcbench.errors import InputError
 
@@ -54,21 +54,25 @@ def z_averages(
     members = [cone(small, group)[0] for group in groups]
     out = np.zeros(circuit.n_qubits)
     for index, state in tree.walk(members, dtype=dtype, memory_limit=memory_limit, threads=threads, work=work):
-        averages = z_of_all(probabilities(state))
+        averages = z_of_all(state)
         out[list(groups[index])] = averages[list(members[index].measured_qubits)]
     return out[list(qubits)]
 
 
-def z_of_all(outcomes: FloatArray) -> FloatArray:
-    """(n,) <Z> of every qubit from the probabilities of all outcomes (2**n,); about two passes over them."""
-    out = []
-    while len(outcomes) > 1:
-        zero, one = outcomes.reshape(2, -1)
-        both = zero + one
-        # the sum of a half in double precision also where probabilities are single
-        out.append(float(zero.sum(dtype=np.float64) - one.sum(dtype=np.float64)))
-        outcomes = both
-    return np.array(out)
+def z_of_all(state: ComplexArray) -> FloatArray:
+    """(n,) <Z> of every qubit in a state (2**n,), in one pass over it, a block at a time."""
+    n = len(state).bit_length() - 1
+    out = np.zeros(n)
+    for start, block in probability_blocks(state):
+        outer = n - (len(block).bit_length() - 1)
+        for qubit in range(outer, n):
+            zero, one = block.reshape(2, -1)
+            # sums in double precision also where probabilities are single
+            out[qubit] += float(zero.sum(dtype=np.float64) - one.sum(dtype=np.float64))
+            block = zero + one
+        signs = 1.0 - 2.0 * (start >> np.arange(n - 1, n - 1 - outer, -1) & 1)
+        out[:outer] += float(block[0]) * signs
+    return out
 
 
 def shared_cones(circuit: Circuit, qubits: Sequence[int]) -> list[tuple[int, ...]]:
@@ -104,7 +108,9 @@ class Piece:
     def fits(self, noisy: bool, how: How) -> bool:
         """Whether it can be simulated within the memory."""
         limit = memory.available_memory() if how.memory_limit is None else how.memory_limit
-        return len(self.bits) <= MOST_JOINT_BITS and needed_bytes(self.circuit.n_qubits, noisy, how.dtype) <= limit
+        return len(self.bits) <= MOST_JOINT_BITS and (
+            needed_bytes(self.circuit.n_qubits, len(self.bits), noisy, how.dtype) <= limit
+        )
 
 
 def reduces(circuit: Circuit, noise: NoiseModel | None, how: How) -> bool:
@@ -144,7 +150,7 @@ def _ideal_pieces(circuit: Circuit, how: How) -> tuple[list[Piece], bool]:
         worst = max(len(Piece.of(small, [bit]).qubits) for bit in range(len(circuit.measured_qubits)))
         raise InputError(
             "memory",
-            f"{needed_bytes(worst, False, how.dtype)} bytes for the light cone of one qubit, {worst} of "
+            f"{needed_bytes(worst, 1, False, how.dtype)} bytes for the light cone of one qubit, {worst} of "
             f"{circuit.n_qubits} qubits",
             "fewer qubits, a lower depth, or more memory",
         )

@@ -79,7 +79,11 @@ def whole_distributions(
 ) -> Iterator[tuple[int, Distribution, Distribution | None]]:
     """The distribution of every circuit, states of all its qubits evolved; as `predict.distributions`."""
     for circuit in circuits:
-        require(circuit.n_qubits, noise is not None, how)
+        n, noisy_too = circuit.n_qubits, noise is not None
+        needed = needed_bytes(n, len(circuit.measured_qubits), noisy_too, how.dtype)
+        what = f"{'trajectories' if noisy_too else 'a state and its distribution'} of {n} qubits"
+        memory.require(needed, how.memory_limit, what)
+        work.holds(needed)
     states = tree.walk(circuits, dtype=how.dtype, memory_limit=how.memory_limit, threads=how.threads, work=work)
     with Pool(how.threads) as pool:
         for index, state in states:
@@ -95,17 +99,11 @@ def whole_distributions(
                 yield index, ideal, noisy
 
 
-def needed_bytes(n_qubits: int, noisy: bool, dtype: str) -> int:
-    """Bytes that the distribution of one circuit on its whole register takes to make."""
+def needed_bytes(n_qubits: int, n_bits: int, noisy: bool, dtype: str) -> int:
+    """Bytes that the distribution of one circuit over n_bits takes to make on its whole register."""
     if noisy:
         return bytes_needed(n_qubits, dtype, batch_count(n_qubits), len(SOURCES))
-    return memory.bytes_needed(n_qubits, dtype)
-
-
-def require(n_qubits: int, noisy: bool, how: How) -> None:
-    """Refuse a register that does not fit the memory."""
-    what = f"{'trajectories' if noisy else 'a state'} of {n_qubits} qubits"
-    memory.require(needed_bytes(n_qubits, noisy, how.dtype), how.memory_limit, what)
+    return memory.bytes_needed(n_qubits, dtype) + 2**n_bits * np.dtype(probability_type(n_bits)).itemsize
 
 
 def batch_count(n_qubits: int) -> int:

@@ -6,13 +6,22 @@ import os
 import subprocess
 import sys
 import threading
+import tracemalloc
 from pathlib import Path
 
+import numpy as np
 import pytest
+from engine_cases import noise_model, turns_circuit
 
 import rcbench
+from rcbench.circuits.circuit import Circuit, CircuitBuilder
 from rcbench.engine import compiled, memory, threads
+from rcbench.engine.local import z_of_all
+from rcbench.engine.readout import measured as measured_bits
+from rcbench.engine.register import How, measured_probabilities, probabilities, whole_distributions
+from rcbench.engine.state import final_state
 from rcbench.engine.threads import Pool
+from rcbench.engine.work import Work
 from rcbench.errors import InputError
 
 
@@ -105,3 +114,58 @@ def test_a_package_folder_and_home_that_cannot_be_written_still_give_a_state(tmp
     done = subprocess.run([sys.executable, "-c", code], env=environment, capture_output=True, text=True, check=False)
     assert done.returncode == 0, done.stderr
     assert abs(float(done.stdout) - 0.5) < 1e-6
+
+
+def in_use(work) -> tuple[int, object]:
+    """The most bytes of arrays that were held at once while a function ran, and what it gave."""
+    tracemalloc.start()
+    try:
+        given = work()
+        return tracemalloc.get_traced_memory()[1], given
+    finally:
+        tracemalloc.stop()
+
+
+@pytest.mark.parametrize("measured", [[3], [0, 21, 9], []])
+def test_a_state_is_evolved_in_place_and_read_in_blocks(measured):
+    """Nothing above 1.1 times the state's own size, for the state alone and for few measured qubits."""
+    builder = CircuitBuilder(22)
+    builder.append(turns_circuit(22, 3, seed=1, names=("cz",)), range(22))
+    gates = builder.build()
+    keep = gates.gate_rows
+    gates = Circuit(
+        22, *(part[keep] for part in (gates.layer, gates.kind, gates.qubits, gates.first)), gates.parameters
+    )
+    builder = CircuitBuilder(22)
+    builder.append(gates)
+    if not measured:
+        peak, _ = in_use(lambda: final_state(gates))
+    else:
+        builder.measure(measured)
+        whole = builder.build()
+        peak, _ = in_use(lambda: list(whole_distributions([whole], None, How(), Work())))
+    assert peak < 1.1 * memory.bytes_needed(22)
+
+
+def test_predicted_memory_of_a_distribution_is_what_is_taken():
+    whole, work = turns_circuit(22, 3, seed=1), Work()
+    peak, _ = in_use(lambda: list(whole_distributions([whole], None, How(), work)))
+    assert peak == pytest.approx(work.peak_bytes, rel=0.1)
+
+
+def test_predicted_memory_of_trajectories_is_what_is_taken():
+    whole, work = turns_circuit(18, 3, seed=1), Work()
+    noise = noise_model(18)
+    peak, _ = in_use(lambda: list(whole_distributions([whole], noise, How(trajectories=16), work)))
+    assert 0.5 * work.peak_bytes < peak < 1.1 * work.peak_bytes
+
+
+def test_z_of_all_qubits_is_that_of_the_marginals():
+    rng = np.random.default_rng(0)
+    state = rng.normal(size=2**19) + 1j * rng.normal(size=2**19)
+    state /= np.linalg.norm(state)
+    p = np.abs(state) ** 2
+    wanted = [measured_bits(p, [qubit]) @ [1, -1] for qubit in range(19)]
+    np.testing.assert_allclose(z_of_all(state), wanted, atol=1e-12)
+    np.testing.assert_allclose(measured_probabilities(state, [17, 0, 3]), measured_bits(p, [17, 0, 3]), atol=1e-12)
+    np.testing.assert_allclose(probabilities(state), p, atol=1e-18)

@@ -108,7 +108,7 @@ def test_shots_of_a_missing_circuit_are_moved_there_where_that_is_clear(tmp_path
 
 
 def test_noise_is_answered_with_cannot_tell_and_shots_that_do_tell(world):
-    """At F = 0.15 some of 8 sampled circuits of 300 shots are open; with the shots asked for, nine of ten are settled."""
+    """At F = 0.15 some of 8 circuits are open after 300 shots; with the shots asked for, nine of ten are settled."""
     drawn = drawn_at(world, 0.15, shots=300)
     open_now = [f for f in examined(world, drawn) if not f.told and f.kind == "identity"]
     assert open_now

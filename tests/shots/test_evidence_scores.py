@@ -102,7 +102,7 @@ def test_a_wrong_circuit_is_credited_with_t_nats_at_most_once_in_exp_t():
 
 
 def test_biased_independent_bits_and_pairs_hold_no_many_bit_structure():
-    """One run of 200,000 shots: the readout bias and one correlated pair give much structure, none of it beyond pairs."""
+    """One run of 200,000 shots: readout bias and a correlated pair give much structure, none of it beyond pairs."""
     rng = np.random.default_rng(4)
     bits = (rng.random((200_000, N)) < [0.3, 0.45, 0.5, 0.6, 0.4, 0.35]).astype(np.int64)
     bits[:, 1] ^= bits[:, 0] & (rng.random(200_000) < 0.5)

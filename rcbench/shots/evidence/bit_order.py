@@ -117,7 +117,8 @@ def candidate_orders(
         known: orders that were found in other runs. thorough: try any permutation, not only named ones.
     """
     pool = runs.doubtful
-    named = [*named_orders(pool.n_bits, labels), *(one for one in known if len(one.source) == pool.n_bits)]
+    # known ones first: where several fit alike, the same order everywhere is likeliest
+    named = [*(one for one in known if len(one.source) == pool.n_bits), *named_orders(pool.n_bits, labels)]
     start = max(named, key=lambda order: evidence(pool, order)[0])
     found = [Candidate(start, math.log(len(named)))]
     fits = runs.told(*found[0]) is not None
@@ -125,7 +126,7 @@ def candidate_orders(
         return found
     # from a named order that fits, one may have to go on; from none, one starts where correlations lead
     flipped = start.flipped if fits else ()
-    sources = [start.source] if fits else [pool.matched(), *_random_starts(pool.n_bits)]
+    sources = [start.source] if fits else [start.source, pool.matched(), *_random_starts(pool.n_bits)]
     climbed = [Order("", climb(pool, source), flipped) for source in sources]
     top = max(climbed, key=lambda order: evidence(pool, order)[0])
     # the runs that are not doubtful settle what the others leave open

@@ -179,8 +179,19 @@ def _all_orders(
 ) -> list[WrongOrder]:
     """The wrong orders of all lanes; aside: runs whose shots are spoilt otherwise; whole: only those of whole lanes."""
     found: list[WrongOrder] = []
+    known = list(dict.fromkeys(one.found.order for one in before))
+    open_lanes = []
     for study in sorted(studies, key=lambda study: not study.lane.returns):  # strings that return tell most
-        known = list(dict.fromkeys(one.found.order for one in [*before, *found]))
+        if study.lane.returns and len(studies) > 1:
+            asked = _one_order(study, ideals, known, aside, whole)
+            if asked is not None and asked.alike:  # another lane may settle what these strings leave open
+                known.append(asked.order)
+                study.searched.clear()
+                open_lanes.append(study)
+                continue
+        found += _orders(study, ideals, runs_in_all, known, aside, whole)
+        known = list(dict.fromkeys([*(one.found.order for one in found), *known]))
+    for study in open_lanes:
         found += _orders(study, ideals, runs_in_all, known, aside, whole)
     return found
 

@@ -106,7 +106,7 @@ class Crossed:
 
 def crossed(ratio: FloatArray, counts: IntArray, starts: IntArray, excess: FloatArray) -> Crossed:
     """X of each run; ratio: (k,) p / g of each outcome, excess: (runs,) or a number, v."""
-    shots = np.add.reduceat(counts, starts).astype(np.float64)
+    shots = np.maximum(np.add.reduceat(counts, starts), 1).astype(np.float64)  # a half of one shot may have none
     w = np.asarray(ratio, dtype=np.float64) - 1
     mean = np.add.reduceat(counts * w, starts) / shots
     square = np.add.reduceat(counts * w * w, starts) / shots
