@@ -465,8 +465,11 @@ def _predict_experiment(
         if kit is not None
         else runs_of_campaign(campaign, experiment, protocol)
     )
-    for place, runs in enumerate(batches):
-        predict_instance(writer, protocol, runs, noise, options, campaign.seed)
+    aside = {role.name for role in protocol.roles if role.every_batch}  # calibrations belong to no instance
+    for place, batch in enumerate(batches):
+        runs = [run for run in batch if run.role not in aside]
+        if runs:
+            predict_instance(writer, protocol, runs, noise, options, campaign.seed)
         if progress:
             progress(done + place + 1, total, experiment.name)
     writer.averages()

@@ -10,7 +10,7 @@ import numpy as np
 from rcbench.arrays import FloatArray, IntArray
 from rcbench.estimators.sample import Value
 
-BLOCK = 2**18  # outcomes that are worked on at once
+BLOCK = 2**16  # outcomes that are worked on at once
 
 
 @dataclass(frozen=True, slots=True, eq=False)

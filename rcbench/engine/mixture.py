@@ -17,6 +17,7 @@ from rcbench.engine.threads import Pool
 from rcbench.engine.trajectories import BLOCK_QUBITS, Changes, NoisyProgram, Patterns, changed_operators
 from rcbench.engine.work import Work
 
+_RESULTS = 6  # distributions beside the sums: error-free, mixed, as read
 SAVED_BYTES = 2**27  # error-free states kept to start trajectories from
 
 
@@ -41,8 +42,8 @@ def probability_type(n_qubits: int) -> type[np.floating]:
 def bytes_needed(n_qubits: int, dtype: str, batches: int, sources: int) -> int:
     """Bytes that the sums and the states of a run take beside the circuit's own state, saved states left out."""
     numbers = np.dtype(probability_type(n_qubits)).itemsize
-    sums = 2**n_qubits * numbers * (batches + sources * (1 + (batches if n_qubits <= BLOCK_QUBITS else 0)))
-    return int(sums) + memory.bytes_needed(n_qubits, dtype, states=3)
+    arrays = batches + sources * (2 + (batches if n_qubits <= BLOCK_QUBITS else 0)) + _RESULTS
+    return int(2**n_qubits * numbers * arrays) + memory.bytes_needed(n_qubits, dtype, states=3)
 
 
 def run_patterns(noisy: NoisyProgram, patterns: Patterns, dtype: str, pool: Pool, work: Work) -> Sums:

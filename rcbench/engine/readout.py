@@ -24,10 +24,13 @@ def measured(probabilities: FloatArray, qubits: Sequence[int]) -> FloatArray:
     return np.ascontiguousarray(tensor).reshape(*outer, 2 ** len(qubits))
 
 
-def flip(probabilities: FloatArray, confusion: FloatArray) -> FloatArray:
-    """The distribution as read; probabilities: (..., 2**k), confusion: (k, 2, 2) as [bit, read, true]."""
+def flip(probabilities: FloatArray, confusion: FloatArray, *, in_place: bool = False) -> FloatArray:
+    """The distribution as read; probabilities: (..., 2**k), confusion: (k, 2, 2) as [bit, read, true].
+
+    in_place: the result takes the place of the probabilities where their memory lies in one piece.
+    """
     size = probabilities.shape[-1]
-    out = np.array(probabilities, order="C")
+    out = np.ascontiguousarray(probabilities) if in_place else np.array(probabilities, order="C")
     _flip(out.reshape(-1, size), confusion.astype(out.dtype))
     return out
 

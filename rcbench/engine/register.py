@@ -103,7 +103,7 @@ def needed_bytes(n_qubits: int, n_bits: int, noisy: bool, dtype: str) -> int:
     """Bytes that the distribution of one circuit over n_bits takes to make on its whole register."""
     if noisy:
         return bytes_needed(n_qubits, dtype, batch_count(n_qubits), len(SOURCES))
-    return memory.bytes_needed(n_qubits, dtype) + 2**n_bits * np.dtype(probability_type(n_bits)).itemsize
+    return memory.bytes_needed(n_qubits, dtype) + int(2**n_bits * np.dtype(probability_type(n_bits)).itemsize)
 
 
 def batch_count(n_qubits: int) -> int:
@@ -131,14 +131,17 @@ def noisy_distribution(
         draw = Draw(seed, "trajectories", content_key(circuit))
         patterns = draw_patterns(noisy, trajectories, batch_count(circuit.n_qubits), draw)
         sums = run_patterns(noisy, patterns, dtype, pool, work)
-        batches = measured(sums.by_batch, qubits) * (patterns.batches / len(patterns))
+        batches = measured(sums.by_batch, qubits)
+        batches *= patterns.batches / len(patterns)
         mixture = weight * exact + (1 - weight) * batches.mean(axis=0)
-        scored = measured(sums.scored, qubits) / len(patterns)
+        scored = measured(sums.scored, qubits)
+        scored /= len(patterns)
         tilts = _tilts(noisy, patterns, noise, exact, mixture, scored)
-        tilts = {source: flip(tilt, confusion) for source, tilt in tilts.items()}
-        batches = flip(batches, confusion)
+        tilts = {source: flip(tilt, confusion, in_place=True) for source, tilt in tilts.items()}
+        batches = flip(batches, confusion, in_place=True)
     if noise.uncertainty.get("readout_0to1") or noise.uncertainty.get("readout_1to0"):
-        tilts["readout"] = flip(mixture, noise.confusion(qubits, sigmas=1)) - flip(mixture, confusion)
+        tilts["readout"] = flip(mixture, noise.confusion(qubits, sigmas=1))
+        tilts["readout"] -= flip(mixture, confusion)
     return Distribution(len(qubits), flip(exact, confusion), weight if batches is not None else 1.0, batches, tilts)
 
 

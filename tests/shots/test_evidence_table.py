@@ -21,7 +21,7 @@ LEAST = {
 @pytest.mark.slow
 @pytest.mark.parametrize(("n_qubits", "runs"), [(6, 100), (12, 100), (20, 2)])
 def test_faults_are_found_and_clean_shots_are_not_accused(tmp_path, capsys, n_qubits, runs):
-    """False alarms: 900 clean or otherwise faulty sets of shots a size; at most 1 in 100 with a finding that is wrong."""
+    """False alarms: of all sets of shots, clean or with another fault, at most 1 in 100 with a wrong finding."""
     world = table_world(tmp_path, n_qubits)
     rows = [measure(world, kind, fidelity, runs) for kind in PLANTS for fidelity in FIDELITIES]
     with capsys.disabled():

@@ -8,9 +8,10 @@ A run is doubtful where its own circuit does not explain it. That run comes from
   one;
 - its likelihood under c exceeds that under its own circuit, and every other, by more than ln(candidates / ALPHA) nats.
 
-Runs that exchange places vouch for each other, so the first condition is not asked of them: the runs are assigned to
-places so that the total likelihood is greatest, and a cycle of m among S runs is told where it gains more than m ln
-S - ln m + ln(1 / ALPHA) nats.
+The runs are assigned to places so that the total likelihood is greatest. Runs that exchange places vouch for each
+other: a cycle of m among S runs is told where it gains more than m ln S - ln m + ln(1 / ALPHA) nats, and of these
+circuits only half of the coincidences is asked, and no widened null. A string that returns is that of another
+circuit by chance once in 2^n, so it is credited with n ln 2 nats at most.
 
 Doubtful runs times circuits times outcomes set the cost; a campaign in which every run is explained pays only for the
 circuits of the same instance, which all runs are compared with.
@@ -80,9 +81,10 @@ def sampled_fit(
     picked, sub_starts = entries(starts, len(index), look)
     likelihood = scores.log_likelihoods(ratio[picked], counts[picked], sub_starts)
     best[look] = scores.best(likelihood)
-    can = orphans.consistent(found, cross, orphans.CLAIMED_SHARE)
+    can = orphans.consistent(found, cross)
     mixed[look] = np.where(can[look], scores.mixture(likelihood), -np.inf)
-    return Fit(mixed, best, z > norm.isf(ALPHA / tests))
+    sure = (z > norm.isf(ALPHA / tests)) & orphans.consistent(found, cross, orphans.CLAIMED_SHARE)
+    return Fit(mixed, best, sure)
 
 
 def returned_fit(lane: Lane, target: int) -> Fit:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections import defaultdict
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -15,7 +15,7 @@ from rcbench.randomness import Draw
 from rcbench.shots.evidence import identity, wording
 from rcbench.shots.evidence.cases import Case, Ideals, Lane, drop_bits, place_of, target_index
 from rcbench.shots.evidence.finding import ALPHA, Finding
-from rcbench.shots.evidence.identity import NOWHERE, Fit, Move
+from rcbench.shots.evidence.identity import NOWHERE, Fit
 from rcbench.shots.shots import RunKey, Shots
 
 if TYPE_CHECKING:
@@ -200,30 +200,37 @@ class _Assignment:
         """Exchanges and chains, then runs of a circuit whose place another run holds."""
         value = self.fits.mixed[:, self.circuit_of_slot]
         goes = identity.assign(value, self.own)
-        found, settled = [], set()
         most = self.most[self.circuit_of_slot]
-        for move in identity.moves(goes, value, self.own, len(self.candidates), most):
-            if not move.closed and not all(
-                self._clear(run, self.circuit_of_slot[place]) for run, place in zip(move.runs, move.places, strict=True)
-            ):
-                continue
-            displaced = self._displaced(move, goes)
-            found.append(wording.moved([self.doubts[run].case for run in move.runs], self._keys(move), move, displaced))
-            settled |= set(move.runs)
-        found += [copy for run in range(len(self.doubts)) if run not in settled and (copy := self._copy(run, settled))]
-        for run in settled:
-            self.doubts[run].study.explained.add(self.doubts[run].case.key)
+        cycles = [m for m in identity.moves(goes, value, self.own, len(self.candidates), most) if m.closed]
+        moved = {run: place for move in cycles for run, place in zip(move.runs, move.places, strict=True)}
+        alone = {
+            run: int(place)
+            for run, place in enumerate(goes)
+            if place not in (run, NOWHERE) and run not in moved and self._clear(run, self.circuit_of_slot[place])
+        }
+        found = [wording.exchanged_runs(self._cases(m.runs), self._keys(m.places), m.gain, m.limit) for m in cycles]
+        if alone:
+            found.append(self._alone(alone, {**moved, **alone}))
+        moved |= alone
+        found += [copy for run in range(len(self.doubts)) if run not in moved and (copy := self._copy(run))]
         return found
 
-    def _keys(self, move: Move) -> list[RunKey]:
-        return [self.slots[place] for place in move.places]
+    def _cases(self, runs: Iterable[int]) -> list[Case]:
+        out = []
+        for run in runs:
+            self.doubts[run].study.explained.add(self.doubts[run].case.key)
+            out.append(self.doubts[run].case)
+        return out
 
-    def _displaced(self, move: Move, goes: np.ndarray) -> RunKey | None:
-        """The run in whose place the last of a chain comes, and which has no place itself."""
-        last = move.places[-1]
-        if move.closed or last >= len(self.doubts) or goes[last] != NOWHERE:
-            return None
-        return self.slots[last]
+    def _keys(self, places: Iterable[int]) -> list[RunKey]:
+        return [self.slots[place] for place in places]
+
+    def _alone(self, alone: Mapping[int, int], moved: Mapping[int, int]) -> Finding:
+        """Runs that are clearly of another place each, and the runs that must leave these places with nowhere to go."""
+        lead = sum(self._lead(run, self.circuit_of_slot[place]) for run, place in alone.items())
+        limit = len(alone) * math.log(len(self.doubts) * len(self.candidates) / ALPHA)
+        displaced = [place for place in alone.values() if place < len(self.doubts) and place not in moved]
+        return wording.refiled(self._cases(alone), self._keys(alone.values()), self._keys(displaced), lead, limit)
 
     def _clear(self, run: int, column: int) -> bool:
         """Whether one circuit stands out for a run against its own and all others."""
@@ -238,12 +245,12 @@ class _Assignment:
         others[alike] = 0.0
         return float(self.fits.mixed[run, column] - max(float(others.max()), self.own[run]))
 
-    def _copy(self, run: int, settled: set[int]) -> Finding | None:
+    def _copy(self, run: int) -> Finding | None:
         """A run of a circuit that has its own shots already."""
         column = int(np.argmax(self.fits.mixed[run]))
         case = self.doubts[run].case
         if self.candidates[column].base_id == case.base or not self._clear(run, column):
             return None
-        settled.add(run)
+        self._cases([run])
         limit = math.log(len(self.doubts) * len(self.candidates) / ALPHA)
         return wording.copied(case, self.candidates[column].circuit_id, self._lead(run, column), limit)

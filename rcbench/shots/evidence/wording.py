@@ -13,7 +13,6 @@ from rcbench.shots.evidence.blocks import Block
 from rcbench.shots.evidence.cases import Case, Lane
 from rcbench.shots.evidence.drift import Between
 from rcbench.shots.evidence.finding import ALPHA, APPLY, NATS, Finding, Repair, some
-from rcbench.shots.evidence.identity import Move
 from rcbench.shots.evidence.orders import Order, words
 from rcbench.shots.evidence.own import Own
 from rcbench.shots.evidence.seed import OtherKit
@@ -120,27 +119,46 @@ def _wrong_order(order: Order, members: Sequence[WrongOrder]) -> Finding:
     )
 
 
-def moved(cases: Sequence[Case], places: Sequence[RunKey], move: Move, displaced: RunKey | None) -> Finding:
-    """Runs that belong elsewhere."""
-    targets = dict(zip(keys_of(cases), places, strict=True))
-    if move.closed and len(cases) == 2:
+def exchanged_runs(cases: Sequence[Case], places: Sequence[RunKey], gain: float, limit: float) -> Finding:
+    """Runs that stand in each other's places."""
+    moves = dict(zip(keys_of(cases), places, strict=True))
+    if len(cases) == 2:
         text = f"the shots of {_run(cases[0].key)} and {_run(cases[1].key)} are exchanged"
-    elif len(cases) == 1:
+    else:
+        text = f"the shots of {len(cases)} circuits are filed under one another: {_listed(moves)}"
+    return _misfiled(text, cases, moves, gain, limit)
+
+
+def refiled(
+    cases: Sequence[Case], places: Sequence[RunKey], displaced: Sequence[RunKey], gain: float, limit: float
+) -> Finding:
+    """Runs that are of another place each; displaced: runs that stand in these places and are of none."""
+    moves = dict(zip(keys_of(cases), places, strict=True))
+    if len(cases) == 1:
         text = f"the shots filed under {_run(cases[0].key)} are of {_run(places[0])}"
     else:
-        chain = "; ".join(f"{_run(a)} holds {_run(b)}" for a, b in list(targets.items())[:4])
-        text = f"the shots of {len(cases)} circuits are filed under one another: {chain}" + "; ..." * (len(cases) > 4)
-    moves = dict(targets)
-    if displaced is not None:
-        text += f"; those filed under {_run(displaced)} are of no circuit of this kit that can be told"
-        moves[displaced] = (UNFILED + displaced[0], displaced[1])
+        text = f"the shots of {len(cases)} circuits are filed under other circuits: {_listed(moves)}"
+    if displaced:
+        there = some(tuple(map(_run, displaced)))
+        text += f"; what is filed under {there} is of no circuit of this kit that can be told"
+        moves |= {key: (UNFILED + key[0], key[1]) for key in displaced}
+    return _misfiled(text, cases, moves, gain, limit)
+
+
+def _listed(moves: Mapping[RunKey, RunKey]) -> str:
+    shown = "; ".join(f"{_run(a)} holds {_run(b)}" for a, b in list(moves.items())[:3])
+    return shown + (f" and {len(moves) - 3} more" if len(moves) > 3 else "")
+
+
+def _misfiled(text: str, cases: Sequence[Case], moves: Mapping[RunKey, RunKey], gain: float, limit: float) -> Finding:
+    there = [place for place in moves.values() if place not in moves and not place[0].startswith(UNFILED)]
     return Finding(
         kind="other-circuit",
         text=text,
-        runs=(*keys_of(cases), *(place for place in places if place not in targets)),
+        runs=(*moves, *there),
         files=files_of(cases),
-        evidence=move.gain,
-        limit=move.limit,
+        evidence=gain,
+        limit=limit,
         measure=NATS,
         mend=APPLY,
         repair=Repair(moves=moves),
