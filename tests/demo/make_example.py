@@ -1,6 +1,6 @@
 """Make the worked example in reports/example: the demo's report, and a picture of its first page for the README.
 
-    python tests/demo/make_example.py          # needs chromium for the picture
+python tests/demo/make_example.py          # needs chromium for the picture
 """
 
 from __future__ import annotations

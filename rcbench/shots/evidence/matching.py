@@ -24,6 +24,7 @@ if TYPE_CHECKING:
 
 ENSEMBLE = 12  # circuits of one depth that their overlap is worked out from
 SAMPLED_OUTCOMES = 2**14  # and outcomes, where there are more
+BATCH, BATCH_SHARE = 6, 2 / 3  # runs that make a shuffled batch, and their share of those that seem to be elsewhere
 ALIKE = 1e-3  # nats: circuits with the same ideal outcomes
 
 
@@ -203,11 +204,11 @@ class _Assignment:
         most = self.most[self.circuit_of_slot]
         cycles = [m for m in identity.moves(goes, value, self.own, len(self.candidates), most) if m.closed]
         moved = {run: place for move in cycles for run, place in zip(move.runs, move.places, strict=True)}
-        alone = {
-            run: int(place)
-            for run, place in enumerate(goes)
-            if place not in (run, NOWHERE) and run not in moved and self._clear(run, self.circuit_of_slot[place])
-        }
+        leave = {run: int(place) for run, place in enumerate(goes) if place not in (run, NOWHERE) and run not in moved}
+        alone = {run: place for run, place in leave.items() if self._clear(run, self.circuit_of_slot[place])}
+        settled, all_told = len(moved) + len(alone), len(moved) + len(leave)
+        if settled >= max(BATCH, BATCH_SHARE * all_told):  # a shuffled batch: what is settled vouches for the rest
+            alone = {run: place for run, place in leave.items() if self._stands_out(run, self.circuit_of_slot[place])}
         found = [wording.exchanged_runs(self._cases(m.runs), self._keys(m.places), m.gain, m.limit) for m in cycles]
         if alone:
             found.append(self._alone(alone, {**moved, **alone}))
@@ -233,10 +234,13 @@ class _Assignment:
         return wording.refiled(self._cases(alone), self._keys(alone.values()), self._keys(displaced), lead, limit)
 
     def _clear(self, run: int, column: int) -> bool:
-        """Whether one circuit stands out for a run against its own and all others."""
+        """Whether one circuit stands out for a run, and a foreign one could not look like it."""
+        return bool(self.fits.sure[run, column]) and self._stands_out(run, column)
+
+    def _stands_out(self, run: int, column: int) -> bool:
+        """Whether one circuit leads for a run against its own and all others."""
         limit = math.log(len(self.doubts) * len(self.candidates) / ALPHA)
-        lead = min(self._lead(run, column), float(self.most[column]))
-        return bool(self.fits.sure[run, column]) and lead > limit
+        return min(self._lead(run, column), float(self.most[column])) > limit
 
     def _lead(self, run: int, column: int) -> float:
         others = self.fits.best[run].copy()
