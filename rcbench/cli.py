@@ -350,7 +350,7 @@ def _finish(result: Any, out: Path, strict: bool) -> None:
 @cli.command()
 @click.argument("folder", type=_EXISTING, metavar="DIR")
 def report(folder: Path) -> None:
-    """Write the report of a comparison: HTML, Markdown, tables and figures."""
+    """Write the report of a comparison, or of a prediction alone: HTML, Markdown, tables and figures."""
     from rcbench.report.write import write_report
 
     click.echo(f"report: {write_report(folder)}")

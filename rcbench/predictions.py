@@ -389,6 +389,8 @@ def predict(
     Raises:
         InputError: bad campaign or kit, a folder of other inputs, or a state that does not fit the memory.
     """
+    from rcbench.kit.build import write_resolved
+
     out, options = Path(out), options or Options()
     campaign, kit, identity = open_source(Path(source))
     inputs = {"source": identity, "trajectories": options.trajectories, "dtype": options.dtype}
@@ -400,6 +402,7 @@ def predict(
             frame = predict_parts(campaign, kit, out / ".parts", options, progress)
         write_csv(out / "predictions.csv", frame, PREDICTIONS)
         write_parquet(out / "predictions.parquet", frame, PREDICTIONS)
+        write_resolved(campaign, out)
         remove_parts(out / ".parts")
         seconds = round(time.perf_counter() - started, 3)
         folder.finish(seconds=seconds, peak_memory_bytes=peak_memory(), **work.facts())

@@ -97,6 +97,14 @@ def _with_own_protocols(campaign: Campaign) -> tuple[Campaign, dict[str, bytes]]
     return replace(campaign, experiments=tuple(experiments)), own
 
 
+def write_resolved(campaign: Campaign, folder: Path) -> None:
+    """Write campaign.toml with every default filled in and a user's protocol files beside it: it reads alone."""
+    campaign, own = _with_own_protocols(campaign)
+    for name, data in own.items():
+        write_bytes(folder / name, data)
+    write_text(folder / CAMPAIGN, dump_campaign(campaign))
+
+
 def _check_readable(text: str, own: dict[str, bytes]) -> None:
     """A campaign that was made in Python may hold what no file may: told now, not when the circuits are written."""
     with tempfile.TemporaryDirectory() as folder:

@@ -21,8 +21,8 @@ def experiments_table(source: Source) -> Table:
                     experiment.name,
                     experiment.protocol or "predicted only",
                     f"{experiment.circuits.family}, {experiment.circuits.gates}",
-                    _qubits(source, experiment),
-                    _depths(experiment),
+                    qubits_of(source, experiment),
+                    depths_of(experiment),
                     str(experiment.instances),
                     whole(experiment.shots),
                     whole(len(roster)),
@@ -38,7 +38,8 @@ def experiments_table(source: Source) -> Table:
     return table("experiments", "Experiments as planned", columns, rows)
 
 
-def _depths(experiment: Experiment) -> str:
+def depths_of(experiment: Experiment) -> str:
+    """Depths in words."""
     depths = experiment.depths
     step = depths[1] - depths[0] if len(depths) > 1 else 0
     if len(depths) > 3 and depths == tuple(range(depths[0], depths[-1] + 1, step)):
@@ -46,7 +47,8 @@ def _depths(experiment: Experiment) -> str:
     return ", ".join(str(depth) for depth in depths)
 
 
-def _qubits(source: Source, experiment: Experiment) -> str:
+def qubits_of(source: Source, experiment: Experiment) -> str:
+    """Number and names of the qubits, the first and the last where they are many."""
     names = [source.qubit_name(qubit) for qubit in experiment.qubits]
     return f"{len(names)}: {' '.join(names)}" if len(names) <= 3 else f"{len(names)}: {names[0]} … {names[-1]}"
 

@@ -42,6 +42,20 @@ def decimals_for(uncertainty: object, fallback: int = 3) -> int:
     return min(max(1 - math.floor(math.log10(float(uncertainty))), 0), 6)  # type: ignore[arg-type]
 
 
+def bracketed(value: object, error: object) -> str:
+    """A number with the error of its last digits in brackets, as ``2.31(11)``; four digits where no error is known."""
+    if not is_number(value):
+        return MISSING
+    size = abs(float(value))  # type: ignore[arg-type]
+    if not is_number(error) or float(error) < 1e-6 * max(size, 1e-3):  # type: ignore[arg-type]
+        return "0" if size < 1e-9 else number(value, 4)
+    spread = float(error)  # type: ignore[arg-type]
+    if size >= 1e6 or spread < 1e-5:
+        return f"{number(value, 3)} ± {number(error, 2)}"
+    decimals = decimals_for(spread)
+    return f"{fixed(value, decimals)}({spread * 10**decimals:.0f})"
+
+
 def interval(low: object, high: object, decimals: int = 3) -> str:
     """An interval as ``[low, high]``; the missing sign where neither end is known."""
     if not is_number(low) and not is_number(high):

@@ -138,6 +138,30 @@ def read_source(folder: Path) -> Source:
     )
 
 
+def is_prediction(folder: Path) -> bool:
+    """Whether `predict` left the folder, so that there is nothing measured in it."""
+    return read_provenance(folder).get("command") == "predict"
+
+
+def read_prediction(folder: Path) -> Source:
+    """Read the folder that a prediction left: nothing was planned or measured, so the other tables are empty.
+
+    Raises:
+        InputError: the prediction is unfinished, or a file or column is missing.
+    """
+    provenance = read_provenance(folder)
+    if not provenance.get("complete"):
+        raise InputError("folder", str(folder), "a finished prediction; the same predict command finishes it")
+    return Source(
+        campaign=load_campaign(folder / "campaign.toml"),
+        roster=pd.DataFrame(columns=list(tables.ROSTER)),
+        comparison=pd.DataFrame(columns=list(tables.COMPARISON)),
+        estimates=pd.DataFrame(columns=list(tables.ESTIMATES)),
+        predictions=_read(folder, "predictions", tables.PREDICTIONS),
+        provenance=provenance,
+    )
+
+
 def _read(folder: Path, name: str, columns: tuple[str, ...]) -> pd.DataFrame:
     path = folder / f"{name}.csv"
     frame = read_csv(path, columns, text=[column for column in columns if column in _TEXT])

@@ -7,7 +7,6 @@ from pathlib import Path
 from typing import Any
 
 from rcbench.campaign import Experiment
-from rcbench.circuits.families import ADOPTED, family_of
 from rcbench.files import write_text
 from rcbench.report.bottom_line import BottomLine, bottom_lines
 from rcbench.report.campaign_table import experiments_table, facts, margins_table, rule_fixed
@@ -25,12 +24,14 @@ from rcbench.report.device_table import device_facts, device_table
 from rcbench.report.locate import suspects
 from rcbench.report.page import inline, render
 from rcbench.report.predicted_table import predicted_table
+from rcbench.report.prediction_report import write_prediction
 from rcbench.report.printed import fixed, interval, whole
 from rcbench.report.rule import DISCLAIMER, KEPT_ABOVE, LIMITS, RULE
-from rcbench.report.source import Source, groups, read_source
+from rcbench.report.source import Source, groups, is_prediction, read_prediction, read_source
 from rcbench.report.table import SIGNS, Row, Table, finding_text, table
 from rcbench.report.uncertainty_table import uncertainty_table
-from rcbench.signatures.registry import SIGNATURES, Signature
+from rcbench.report.value_table import fitted_table, value_table
+from rcbench.report.words import about, cards
 
 LAYOUTS = {"report.html": "report.html.jinja", "report.md": "report.md.jinja", "summary.html": "summary.html.jinja"}
 
@@ -45,20 +46,26 @@ class Section:
     pictures: list[Any]
     fits: Table | None
     predicted: Table | None
+    fitted: Table | None
 
 
 def write_report(folder: Path | str) -> Path:
     """Write report.html, report.md, summary.html, tables/ and figures/ into the folder that a comparison left.
 
+    In a folder that `predict` left, a report of the predictions alone, with no summary.
+
     Args:
         folder: holds campaign.toml, roster.csv, comparison.csv, estimates.csv, predictions.csv, audit.json and
-            provenance.json.
+            provenance.json; of a prediction campaign.toml, predictions.csv and provenance.json.
     Returns:
         The path of report.html. The same folder gives the same bytes again.
     Raises:
         InputError: a file or column is missing, a layout is broken, or the folder cannot be written.
     """
-    return write_source(read_source(Path(folder)), Path(folder))
+    folder = Path(folder)
+    if is_prediction(folder):
+        return write_prediction(read_prediction(folder), folder)
+    return write_source(read_source(folder), folder)
 
 
 def write_source(source: Source, folder: Path) -> Path:
@@ -89,7 +96,10 @@ def report_context(source: Source, figures: Path) -> dict[str, Any]:
         disagreements(source), experiments_table(source), margins_table(source), comparison_table(source),
         departures(source), usage_table(source), files_table(source), uncertainty_table(source),
         device_table(source), *path_tables,
-        *(shown for section in sections for shown in (section.fits, section.predicted) if shown is not None),
+        *(
+            shown for section in sections for shown in (section.fits, section.fitted, section.predicted)
+            if shown is not None
+        ),
     ]  # fmt: skip
     return {
         "title": source.campaign.title,
@@ -156,29 +166,22 @@ def _paths(source: Source, lines: list[BottomLine], folder: Path) -> tuple[list[
 def _section(source: Source, experiment: Experiment, folder: Path) -> Section:
     from rcbench.report.figure_decay import decay_figure
     from rcbench.report.figure_otoc import otoc_figure
+    from rcbench.report.predicted_figures import predicted_figures
 
     keys = source.signatures(experiment.name)
     pictures = [decay_figure(source, experiment, key, folder) for key in keys]
     pictures.append(otoc_figure(source, experiment, folder))
+    if experiment.protocol is None:
+        pictures += predicted_figures(source, experiment, folder)
     rows = source.comparison[source.comparison["experiment"] == experiment.name]
-    others = {
-        ADOPTED: "imported circuits",
-        "product": "no entangling gate, the same one-qubit layers: it cannot spread",
-        "dimers": "the same gate count, but each qubit keeps one partner: the same loss, no spreading",
-    }
-    circuits = others.get(experiment.circuits.family, family_of(experiment.circuits.two_qubit).about)
-    role = f" Control for {experiment.control_for}." if experiment.control_for else ""
-    about = (
-        f"{experiment.protocol or 'Predicted only'}, {experiment.circuits.family} ({circuits}), "
-        f"{experiment.circuits.gates}.{role}"
-    )
     return Section(
         experiment=experiment,
-        about=about,
+        about=about(experiment),
         counts=counts(rows),
         pictures=[picture for picture in pictures if picture is not None],
         fits=fits_table(source, experiment.name),
-        predicted=predicted_table(source, experiment.name),
+        predicted=predicted_table(source, experiment.name) if experiment.protocol else value_table(source, experiment),
+        fitted=fitted_table(source, experiment) if experiment.protocol is None else None,
     )
 
 
@@ -189,9 +192,3 @@ def _suspects(source: Source) -> list[str]:
         f"(from {found.experiment})."
         for found in suspects(source)
     ]
-
-
-def cards(source: Source) -> list[Signature]:
-    """The registry's rows of every signature that the comparison or the predictions hold, by axis."""
-    used = set(source.comparison["signature"]) | set(source.predictions["signature"])
-    return [row for key, row in SIGNATURES.items() if key in used]

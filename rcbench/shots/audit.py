@@ -79,22 +79,22 @@ class Audit:
     def _problems_text(self) -> list[str]:
         lines = []
         for problem in self.problems:
-            lines.append(f"{problem.severity}: {_safe(problem.text)}")
+            lines.append(f"{problem.severity}: {safe(problem.text)}")
             if problem.hint:
-                lines.append(f"  to mend it: {_safe(problem.hint)}")
+                lines.append(f"  to mend it: {safe(problem.hint)}")
         return ["\n".join(lines)] if lines else []
 
     def _files_text(self) -> str:
-        width = max(len(_safe(file.name)) for file in self.files) if self.files else 0
+        width = max(len(safe(file.name)) for file in self.files) if self.files else 0
         lines = [
-            f"{_safe(f.name):<{width}}  sha256 {f.sha256[:12]}" + f"  {f.rows} rows" * (f.rows > 0) for f in self.files
+            f"{safe(f.name):<{width}}  sha256 {f.sha256[:12]}" + f"  {f.rows} rows" * (f.rows > 0) for f in self.files
         ]
         return "\n".join(["Files read", *lines])
 
     def _execution_text(self) -> str:
         facts = self.execution.facts()
         width = max(map(len, facts))
-        lines = [f"{key:<{width}}  {_safe(value)}" for key, value in facts.items() if value != NOT_STATED]
+        lines = [f"{key:<{width}}  {safe(value)}" for key, value in facts.items() if value != NOT_STATED]
         missing = ", ".join(self.execution.not_stated())
         head = "Execution" if lines else f"Execution: nothing stated (no {EXECUTION_FILE} beside the shots)"
         return "\n".join([head, *lines, *([f"{'not stated':<{width}}  {missing}"] if lines and missing else [])])
@@ -184,7 +184,7 @@ def _records(table: pd.DataFrame) -> list[dict[str, Any]]:
 def _table_text(table: pd.DataFrame) -> str:
     """Columns aligned, words to the left and numbers to the right."""
     heads = [name.replace("_", " ") for name in table.columns]
-    rows = [[_safe(str(cell)) for cell in row] for row in table.itertuples(index=False)]
+    rows = [[safe(str(cell)) for cell in row] for row in table.itertuples(index=False)]
     widths = [max(len(row[place]) for row in [heads, *rows]) for place in range(len(heads))]
     lines = [
         "  ".join(
@@ -196,6 +196,6 @@ def _table_text(table: pd.DataFrame) -> str:
     return "\n".join(line.rstrip() for line in lines)
 
 
-def _safe(text: str) -> str:
+def safe(text: str) -> str:
     """Text from a file without what could steer a terminal."""
     return "".join(c if c.isprintable() or c == "\n" else ascii(c)[1:-1] for c in text)

@@ -113,3 +113,16 @@ def test_growth_with_depth(depth):
     circuit, _ = haar_brickwork(20, depth)
     (ours,) = medians(3, lambda: final_state(circuit))
     note(f"haar n=20 depth {depth}", ours.wall)
+
+
+@pytest.mark.parametrize(("name", "make"), [("haar", haar_brickwork), ("cz+quarter-turns", turns_brickwork)])
+def test_rounding(name, make):
+    """Not a time: how far single precision is from double after 200 layers; a norm within 1e-5."""
+    n = 14
+    circuit, _ = make(n, 200)
+    single, double = final_state(circuit).astype(np.complex128), final_state(circuit, "complex128")
+    norm = abs(float(np.linalg.norm(single)) - 1)
+    note(f"{name} n={n}, 200 layers: error of the norm (not a time)", norm, wanted=1e-5)
+    note(f"{name} n={n}, 200 layers: 1 - fidelity to complex128", abs(1 - abs(np.vdot(single, double)) ** 2))
+    note(f"{name} n={n}, 200 layers: distance to complex128", float(np.linalg.norm(single - double)))
+    assert norm < 1e-5

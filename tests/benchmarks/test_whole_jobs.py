@@ -81,7 +81,7 @@ def peer_tmi(state: np.ndarray, n: int) -> float:
     return -sum(sign * np.log(purity_of_parts(state, list(kept), n)) for kept, sign in signs.items())
 
 
-@pytest.mark.parametrize("instances", [10, 100, 200])
+@pytest.mark.parametrize("instances", [25, 50, 100])
 def test_nested_depths_of_many_instances(instances):
     n, depths, sample = 12, range(1, 17), 4
     ours_all, peers = [], []
@@ -130,7 +130,7 @@ def test_nested_depths_of_many_instances(instances):
     np.testing.assert_allclose(found[: sample * 16], with_qsim(), atol=1e-3)
     np.testing.assert_allclose(found[: sample * 16], with_steps(), atol=1e-3)
     mine, *theirs = medians(ROUNDS, ours, with_qsim, with_steps)
-    if instances != 100:
+    if instances < 100:
         note(f"growth: {instances} instances, n={n}, depths 1..16, TMI", mine.wall)
         return
     best = min(range(2), key=lambda place: theirs[place].wall)
@@ -161,7 +161,7 @@ def peer_z(state: np.ndarray) -> np.ndarray:
 def test_butterfly_echoes(name, make):
     """Both do every fifth site at every depth: the same share of the work."""
     n = 20
-    pairs = [echo(make(n, depth), [(site, 0)]) for depth in range(1, 13) for site in range(0, n, 5)]
+    pairs = [echo(make(n, depth), [(site, 0)]) for depth in range(1, 13) for site in range(2, n, 5)]
     run = fastest(pairs[-1][1])
 
     def ours() -> list[np.ndarray]:

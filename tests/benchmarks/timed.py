@@ -1,7 +1,7 @@
 """What the timed comparisons share: circuits in both forms, taking turns, one table.
 
-Ours and the peer take turns, so that what disturbs the machine disturbs all, and medians are compared. Processor time of
-all threads is noted beside wall time: on a machine that does other work it is the steadier of the two.
+Ours and the peer take turns, so that what disturbs the machine disturbs all, and medians are compared. Processor time
+of all threads is noted beside wall time: on a machine that does other work it is the steadier of the two.
 RCBENCH_BENCHMARK_FOLDER names a folder for the table as CSV.
 """
 

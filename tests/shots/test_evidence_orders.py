@@ -4,7 +4,9 @@ import pytest
 from rcbench.shots.evidence.bit_order import Runs, best_told, candidate_orders, permutations
 from rcbench.shots.evidence.cases import Case
 from rcbench.shots.evidence.orders import Order, identity, named_orders, words
-from rcbench.shots.evidence.pools import match, return_pool, sampled_pool, walsh_transform
+from rcbench.shots.evidence.pools import match
+from rcbench.shots.evidence.return_pool import return_pool
+from rcbench.shots.evidence.sampled_pool import sampled_pool, walsh_transform
 from rcbench.shots.evidence.stuck import inverted_bits, stuck_bits
 
 
@@ -45,8 +47,7 @@ def delivered(order):
 
 
 def pool_of(cases, ideals):
-    n = cases[0].n_bits
-    return sampled_pool(cases, ideals, np.full(2**n, 2.0**n), np.zeros(n))
+    return sampled_pool(cases, ideals)
 
 
 def told(pool, doubtful=None, **how):

@@ -94,8 +94,8 @@ class Runs:
 def _told(half: Pool, other: Pool, order: Order, log_candidates: float) -> FoundOrder | None:
     asked, held_limit = identity(half.n_bits), math.log(1 / ALPHA)
     limit = log_candidates + math.log(1 / ALPHA)
-    gain = min(evidence(half, order)[0] - evidence(half, asked)[1], half.most_gain(order))
-    held_out = min(evidence(other, order)[0] - evidence(other, asked)[1], other.most_gain(order))
+    gain = min(evidence(half, order, asked)[0] - evidence(half, asked, order)[1], half.most_gain(order))
+    held_out = min(evidence(other, order, asked)[0] - evidence(other, asked, order)[1], other.most_gain(order))
     if gain <= limit or held_out <= held_limit:
         return None
     return FoundOrder(order, gain, limit, held_out, held_limit)
@@ -119,7 +119,8 @@ def candidate_orders(
     pool = runs.doubtful
     # known ones first: where several fit alike, the same order everywhere is likeliest
     named = [*(one for one in known if len(one.source) == pool.n_bits), *named_orders(pool.n_bits, labels)]
-    start = max(named, key=lambda order: evidence(pool, order)[0])
+    asked = identity(pool.n_bits)
+    start = max(named, key=lambda order: evidence(pool, order, asked)[0])
     found = [Candidate(start, math.log(len(named)))]
     fits = runs.told(*found[0]) is not None
     if not thorough or (fits and start in known):
@@ -128,7 +129,7 @@ def candidate_orders(
     flipped = start.flipped if fits else ()
     sources = [start.source] if fits else [start.source, pool.matched(), *_random_starts(pool.n_bits)]
     climbed = [Order("", climb(pool, source), flipped) for source in sources]
-    top = max(climbed, key=lambda order: evidence(pool, order)[0])
+    top = max(climbed, key=lambda order: evidence(pool, order, asked)[0])
     # the runs that are not doubtful settle what the others leave open
     names = {(one.source, one.flipped): one for one in named}
     for source in dict.fromkeys((top.source, climb(runs.half, top.source))):
@@ -166,18 +167,19 @@ def _random_starts(n_bits: int) -> list[tuple[int, ...]]:
 
 def with_ties(pool: Pool, found: FoundOrder) -> FoundOrder:
     """Name the exchanges of two bits that leave the fit as it is."""
-    here = evidence(pool, found.order)[1]
+    here, asked = evidence(pool, found.order, identity(pool.n_bits))[1], identity(pool.n_bits)
     alike = []
     for a in range(pool.n_bits):
         for b in range(a):
             source = list(found.order.source)
             source[a], source[b] = source[b], source[a]
-            if evidence(pool, Order("", tuple(source), found.order.flipped))[1] > here - TIE:
+            if evidence(pool, Order("", tuple(source), found.order.flipped), asked)[1] > here - TIE:
                 alike.append((b, a))
     return FoundOrder(found.order, found.gain, found.limit, found.held_out, found.held_limit, tuple(alike))
 
 
 def gains_by_run(pool: Pool, order: Order) -> tuple[FloatArray, FloatArray]:
     """(runs,) nats by which each run prefers an order to the one asked for, and (runs,) the other way round."""
-    found, asked = pool.by_run(order), pool.by_run(identity(pool.n_bits))
+    before = identity(pool.n_bits)
+    found, asked = pool.by_run(order, before), pool.by_run(before, order)
     return scores.mixture(found) - scores.best(asked), scores.mixture(asked) - scores.best(found)

@@ -134,10 +134,12 @@ def place_of(row: RosterRow) -> tuple[str, int, int, str]:
 
 
 class Ideals:
-    """Ideal probabilities by circuit, kept while they fit into CACHE_BYTES."""
+    """Ideal probabilities by circuit, kept while they fit into CACHE_BYTES; told: called with how many are done."""
 
-    def __init__(self, ideal: Probabilities, max_qubits: int = MAX_QUBITS) -> None:
-        self._ideal, self._max_qubits = ideal, max_qubits
+    def __init__(
+        self, ideal: Probabilities, max_qubits: int = MAX_QUBITS, told: Callable[[int], None] | None = None
+    ) -> None:
+        self._ideal, self._max_qubits, self._told, self._done = ideal, max_qubits, told, 0
         self.refused: dict[str, str] = {}  # circuits that cannot be simulated, and why
         self._held: dict[str, FloatArray | None] = {}
         self._bytes = 0
@@ -157,6 +159,9 @@ class Ideals:
         return _marginal(self._held[base], dropped)
 
     def _simulated(self, base: str) -> FloatArray | None:
+        self._done += 1
+        if self._told is not None:
+            self._told(self._done)
         try:
             found = self._ideal(base)
         except InputError as error:  # too little memory, or a circuit that the engine does not take
@@ -291,11 +296,16 @@ def make_lanes(cases: Sequence[Case]) -> list[list[Case]]:
 
 def lane_of(cases: Sequence[Case], ideals: Ideals, dropped: tuple[int, ...] = ()) -> Lane:
     """A lane of runs that share a floor, without some bits that say nothing."""
-    kept = [case.without(dropped) for case in cases]
-    if kept[0].target is not None:
-        return Lane(kept, dropped, np.zeros(kept[0].n_bits), returned_bias(kept))
-    bias = common_bias(kept, ideals, dropped)
-    return Lane(kept, dropped, bias, bias)
+    nothing = np.zeros(0)
+    return refloored(Lane([case.without(dropped) for case in cases], dropped, nothing, nothing), ideals)
+
+
+def refloored(lane: Lane, ideals: Ideals) -> Lane:
+    """The lane with its floor worked out from its runs as they are now."""
+    if lane.returns:
+        return replace(lane, bias=np.zeros(lane.n_bits), pair_bias=returned_bias(lane.cases))
+    bias = common_bias(lane.cases, ideals, lane.dropped)
+    return replace(lane, bias=bias, pair_bias=bias)
 
 
 def entries(starts: IntArray, size: int, runs: Sequence[int] | IntArray) -> tuple[IntArray, IntArray]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
+from rcbench.shots.audit import safe
 from rcbench.shots.evidence.orders import Order
 from rcbench.shots.shots import RunKey
 
@@ -82,7 +83,7 @@ def evidence_text(findings: list[Finding]) -> str:
     """All findings for a terminal, worst first as they are listed."""
     if not findings:
         return "What the shots say for themselves: nothing against the kit."
-    lines = [line for finding in findings for line in finding.lines()]
+    lines = [safe(line) for finding in findings for line in finding.lines()]
     told = sum(finding.told for finding in findings)
     head = f"{told} found" if told else "nothing found"
     return "\n".join([f"What the shots say for themselves: {head}", *lines])

@@ -20,7 +20,7 @@ from rcbench.shots.shots import RunKey, Shots
 
 if TYPE_CHECKING:
     from rcbench.kit import Kit, RosterRow
-    from rcbench.shots.evidence.examine import LaneStudy
+    from rcbench.shots.evidence.studies import LaneStudy
 
 ENSEMBLE = 12  # circuits of one depth that their overlap is worked out from
 SAMPLED_OUTCOMES = 2**14  # and outcomes, where there are more

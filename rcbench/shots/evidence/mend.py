@@ -156,7 +156,7 @@ def _new_name(name: str, taken: set[str]) -> str:
     stem = name
     for ending in (".gz", ".csv", ".json", ".npz", ".parquet"):
         stem = stem.removesuffix(ending)
-    stem = stem or _ORIGINAL
+    stem = stem.lstrip(".") or _ORIGINAL  # a hidden file would not be read
     new, number = f"{stem}.parquet", 1
     while new in taken:
         number += 1

@@ -79,10 +79,20 @@ def named_orders(n_bits: int, labels: Sequence[str] = ()) -> list[Order]:
     # the bit at place k is order[k], so that bit j stands at the inverse of it
     found = {tuple(_inverse(order)): name for name, order in [*inverse[::-1], *delivered[::-1]] if order != bits}
     orders = [Order(name, source) for source, name in reversed(found.items())]
-    everything = tuple(bits)
-    orders.append(Order("every bit inverted", everything, everything))
-    orders.append(Order("reversed, every bit inverted", everything[::-1], everything))
-    return orders
+    return [*orders, *(order for name in INVERTED if (order := by_name(name, n_bits)))]
+
+
+INVERTED = ("every bit inverted", "reversed, every bit inverted")
+
+
+def by_name(name: str, n_bits: int) -> Order | None:
+    """The orders that mean the same for any number of bits; None for another name."""
+    everything = tuple(range(n_bits))
+    if name == "reversed":
+        return Order(name, everything[::-1])
+    return (
+        Order(name, everything if name == INVERTED[0] else everything[::-1], everything) if name in INVERTED else None
+    )
 
 
 def _halves(bits: list[int]) -> list[int]:

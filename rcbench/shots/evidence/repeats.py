@@ -16,7 +16,7 @@ from rcbench.shots.evidence.series import Series
 from rcbench.shots.shots import RunKey, Shots
 
 if TYPE_CHECKING:
-    from rcbench.shots.evidence.examine import LaneStudy
+    from rcbench.shots.evidence.studies import LaneStudy
 
 
 def same_shots(cases: Sequence[Case], series: Series) -> list[Finding]:

@@ -11,7 +11,9 @@ from rcbench.arrays import FloatArray
 from rcbench.shots.evidence.bit_order import Candidate, Runs
 from rcbench.shots.evidence.finding import ALPHA
 from rcbench.shots.evidence.orders import Order
-from rcbench.shots.evidence.pools import Pool, ReturnPool, SampledPool, walsh_transform
+from rcbench.shots.evidence.pools import Pool
+from rcbench.shots.evidence.return_pool import ReturnPool
+from rcbench.shots.evidence.sampled_pool import SampledPool, walsh_transform
 
 FEWEST_RUNS = 3  # for any set of bits: two runs that are exchanged look like one, if each should return a string
 MOST_MOVED = 0.03  # a bit that takes its other value more often is a bad qubit, not a stuck bit

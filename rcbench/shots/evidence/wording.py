@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import NamedTuple
 
 import numpy as np
@@ -81,15 +82,34 @@ class WrongOrder(NamedTuple):
     in_all: bool
 
 
-def wrong_orders(wrong: Sequence[WrongOrder]) -> list[Finding]:
-    """Bits in another order, or inverted; one finding an order, wherever it was found."""
-    groups: dict[Order, list[WrongOrder]] = {}
+def wrong_orders(
+    wrong: Sequence[WrongOrder], alike: Mapping[RunKey, Order], by_key: Mapping[RunKey, Case]
+) -> list[Finding]:
+    """Bits in another order, or inverted; one finding an order, wherever it was found.
+
+    alike: the order of runs that cannot show it and are taken to be like the others. by_key: every run.
+    """
+    groups: dict[str, list[WrongOrder]] = {}
     for one in wrong:
-        groups.setdefault(one.whole, []).append(one)
-    return [_wrong_order(order, members) for order, members in groups.items()]
+        groups.setdefault(words(one.whole), []).append(one)
+    found = [_wrong_order(members) for members in groups.values()]
+    if not alike or len(found) != 1:
+        return found
+    [told] = found
+    cases = [by_key[key] for key in alike]
+    return [
+        replace(
+            told,
+            text=f"{told.text}; {named(cases)} cannot show it and are taken to be alike",
+            runs=(*told.runs, *alike),
+            files=tuple(dict.fromkeys((*told.files, *files_of(cases)))),
+            repair=Repair(orders={**told.repair.orders, **alike}),
+        )
+    ]
 
 
-def _wrong_order(order: Order, members: Sequence[WrongOrder]) -> Finding:
+def _wrong_order(members: Sequence[WrongOrder]) -> Finding:
+    order = members[0].whole
     cases = [case for member in members for case in member.cases]
     if order.flipped and order.source == tuple(range(len(order.source))):
         kind, what = "flipped-bits", f"{words(order)} in the shots of {named(cases)}"
@@ -115,7 +135,7 @@ def _wrong_order(order: Order, members: Sequence[WrongOrder]) -> Finding:
         limit=sum(member.found.limit for member in members),
         measure=NATS,
         mend=mend,
-        repair=Repair(orders=dict.fromkeys(keys_of(cases), order)),
+        repair=Repair(orders={case.key: member.whole for member in members for case in member.cases}),
     )
 
 
