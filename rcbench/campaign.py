@@ -26,6 +26,7 @@ ONE_QUBIT = ("none", "haar", "quarter-turns", "azimuth", "clifford")
 REFERENCES = ("ideal", "noise-model")
 CIRCUIT_FORMATS = ("qasm3", "qasm2", "cirq-json")
 RULE = "equivalence of paired differences"
+MAX_DEPTH = 10_000
 _NAME = re.compile(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,59}")
 
 
@@ -92,8 +93,8 @@ class Margin:
     relative: bool = False
 
     def __post_init__(self) -> None:
-        if not 0 < self.value < float("inf"):
-            raise InputError("margin", self.value, "a number above 0")
+        if not 0 < self.value <= 1e6:
+            raise InputError("margin", self.value, "a number above 0, at most 1e6")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -141,6 +142,8 @@ class Experiment:
     def __post_init__(self) -> None:
         if not self.depths or any(b <= a for a, b in zip((-1, *self.depths), self.depths, strict=False)):
             raise InputError("depths", self.depths, "whole numbers from 0 up, each larger than the last")
+        if self.depths[-1] > MAX_DEPTH:
+            raise InputError("depths", self.depths[-1], f"at most {MAX_DEPTH} layers")
         for key in ("instances", "shots", "repeats", "settings"):
             if getattr(self, key) < 1:
                 raise InputError(key, getattr(self, key), "a whole number, 1 or more")
@@ -223,11 +226,17 @@ def load_campaign(path: Path | str) -> Campaign:
         top.error("experiment", "nothing", "one or more tables [[experiment]]")
     top.close()
     experiments: list[Experiment] = []
+    broken: list[object] = []
     if device is not None:
         for section in sections:
+            if section.data.get("same_circuits_as") in broken:  # its own errors say it; what would follow is noise
+                broken.append(section.data.get("name"))
+                continue
             experiment = _read_experiment(section, device, experiments, path.parent)
             if experiment is not None:
                 experiments.append(experiment)
+            else:
+                broken.append(section.data.get("name"))
     if not errors:
         _check_links(sections, experiments)
     raise_all(errors)

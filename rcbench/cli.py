@@ -252,7 +252,7 @@ def _cost_of(facts: Any) -> str:
 @click.option("--apply", type=_NEW, metavar="OUT", help="Write mended shots into a new folder; the originals stay.")
 @click.option(
     "--max-qubits",
-    type=click.IntRange(1, 40),
+    type=click.IntRange(1, 30),
     default=20,
     show_default=True,
     help="Larger circuits are not simulated; each qubit more doubles time and memory.",
@@ -283,8 +283,11 @@ def check(
             "--apply", str(apply), "without --quick: what to mend is found by the examination it leaves out"
         )
     source = read_kit(kit)
+    for row in source.rows:  # somebody may have run a circuit that was edited
+        source.text(row)
     returned = read_shots(shots, source, bit_order=bit_order, skip_bad=skip_bad)
     found = check_shots(source, returned)
+    click.echo("What the files say")
     click.echo(found.text())
     attention = found.needs_attention
     if not quick:

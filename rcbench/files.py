@@ -142,6 +142,22 @@ def sha256_file(path: Path) -> str:
         return hashlib.file_digest(file, "sha256").hexdigest()
 
 
+def file_hashes(folder: Path, names: Sequence[str]) -> dict[str, str]:
+    """SHA-256 of files by name, so that a later step can tell whether they were edited."""
+    return {name: sha256_file(folder / name) for name in names if (folder / name).is_file()}
+
+
+def check_files(folder: Path, facts: Mapping[str, object]) -> None:
+    """Refuse files that are missing or were edited since the provenance recorded their hashes under `files`."""
+    recorded = facts.get("files")
+    for name, digest in recorded.items() if isinstance(recorded, dict) else ():
+        path = folder / str(name)
+        if not path.is_file():
+            raise InputError("file", str(path), "the file that rcbench wrote; it is missing")
+        if sha256_file(path) != digest:
+            raise InputError("file", str(path), "the file as rcbench wrote it; this one was edited since")
+
+
 def versions() -> dict[str, str]:
     """Versions of rcbench and of the libraries that numbers depend on."""
     from importlib.metadata import PackageNotFoundError, version

@@ -28,6 +28,7 @@ PLAN = (
     "experiment", "protocol", "signature", "depth", "circuits", "shots", "device_seconds", "expected", "std_error",
     "margin", "instances_needed", "advice",
 )  # fmt: skip
+MOST_RATIO = 1e4  # more than 10^8 times the instances is no advice
 POWER = 0.9  # chance to find agreement where there is no difference at all
 _PER_SHOT_POLARIZATION = 0.55  # standard deviation of one shot, 0.43 to 0.66 for 4 to 16 qubits
 
@@ -179,13 +180,14 @@ def _precision(
         return out | {"advice": "no margin fixed"}
     width = margin.value * (abs(expected) if margin.relative else 1)
     quantiles = float(norm.ppf(confidence) + norm.ppf((1 + POWER) / 2))
-    needed = max(5, math.ceil((quantiles * error / width) ** 2 * experiment.instances)) if width else None
+    ratio = quantiles * error / width if width else math.inf
+    needed = max(5, math.ceil(ratio**2 * experiment.instances)) if ratio < MOST_RATIO else None
     out |= {"margin": width, "instances_needed": needed}
     null = signature(key).null_value(facts[2]) or 0.0
-    alive = abs((expected if key != "otoc" else facts[0]) - null) > width + 2 * error
-    if not alive:
+    distance = abs((expected if key != "otoc" else facts[0]) - null)
+    if needed is None or distance <= width:
         out["advice"] = "no signal left to test at this depth"
-    elif needed is not None and needed > experiment.instances:
+    elif needed > experiment.instances:
         out["advice"] = f"{needed} instances, or {math.ceil(experiment.shots * needed / experiment.instances)} shots"
     else:
         out["advice"] = "enough"

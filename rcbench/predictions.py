@@ -24,7 +24,7 @@ from rcbench.engine.work import Work, collecting
 from rcbench.errors import InputError
 from rcbench.estimators import estimator
 from rcbench.estimators.sample import Group, Measured, Run
-from rcbench.files import output_folder, read_csv, sha256_bytes, write_csv, write_parquet
+from rcbench.files import file_hashes, output_folder, read_csv, sha256_bytes, write_csv, write_parquet
 from rcbench.signatures.registry import signature
 from rcbench.tables import PREDICTIONS
 
@@ -405,7 +405,8 @@ def predict(
         write_resolved(campaign, out)
         remove_parts(out / ".parts")
         seconds = round(time.perf_counter() - started, 3)
-        folder.finish(seconds=seconds, peak_memory_bytes=peak_memory(), **work.facts())
+        files = file_hashes(out, ("campaign.toml", "predictions.csv"))
+        folder.finish(seconds=seconds, peak_memory_bytes=peak_memory(), files=files, **work.facts())
         return frame
 
 

@@ -9,7 +9,16 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from rcbench.errors import InputError
-from rcbench.files import output_folder, read_provenance, write_bytes, write_csv, write_parquet, write_text
+from rcbench.files import (
+    check_files,
+    file_hashes,
+    output_folder,
+    read_provenance,
+    write_bytes,
+    write_csv,
+    write_parquet,
+    write_text,
+)
 from rcbench.predictions import Options, Progress, predict, predict_parts, read_predictions, remove_parts, runs_of_kit
 from rcbench.tables import COMPARISON, ESTIMATES, PREDICTIONS
 
@@ -19,6 +28,10 @@ if TYPE_CHECKING:
     from rcbench.arrays import FloatArray
     from rcbench.kit import Kit
     from rcbench.shots.reader import Shots
+
+
+# what a comparison leaves for the report, which refuses them when they were edited since
+COMPARED = ("campaign.toml", "roster.csv", "predictions.csv", "estimates.csv", "comparison.csv", "audit.json")
 
 
 @dataclass(frozen=True, slots=True)
@@ -91,6 +104,7 @@ def compare(
     """
     from rcbench.comparison import compare_frames, estimate
     from rcbench.kit import read_kit
+    from rcbench.kit.folder import PROTOCOLS
     from rcbench.shots.audit import check_shots
     from rcbench.shots.reader import bad_rows_csv, read_shots
 
@@ -121,7 +135,8 @@ def compare(
         write_csv(out / "comparison.csv", table, COMPARISON)
         write_parquet(out / "comparison.parquet", table, COMPARISON)
         write_text(out / "audit.json", json.dumps(audit.as_dict(), indent=1, sort_keys=True) + "\n")
-        for name in ("campaign.toml", "roster.csv"):
+        own = [f"{PROTOCOLS}/{path.name}" for path in sorted((source.folder / PROTOCOLS).glob("*.toml"))]
+        for name in ("campaign.toml", "roster.csv", *own):  # the campaign names a user's protocols by their place
             write_bytes(out / name, (source.folder / name).read_bytes())
         remove_parts(out / ".parts")
         folder.finish(
@@ -129,6 +144,7 @@ def compare(
             kit_built=read_provenance(source.folder).get("started", ""),
             rule_fixed_before_data=rule_fixed_before_data(source, measured),
             seed=source.campaign.seed,
+            files=file_hashes(out, COMPARED),
         )
         return _compared(_read_comparison(out), audit.needs_attention)
 
@@ -164,6 +180,7 @@ def _predictions(
     made_for = inputs.get("source") if isinstance(inputs, dict) else None
     if made_for != kit.hash or not facts.get("complete"):
         raise InputError("predictions", str(folder), f"a complete folder of `rcbench predict` for kit {kit.hash[:12]}")
+    check_files(Path(folder), facts)
     return read_predictions(Path(folder) / "predictions.csv")
 
 

@@ -8,6 +8,7 @@ from rcbench.campaign import Experiment
 from rcbench.report.printed import MISSING, number, percent, whole
 from rcbench.report.source import NOT_STATED, Source
 from rcbench.report.table import Row, Table, table
+from rcbench.report.words import protocol_name
 
 
 def experiments_table(source: Source) -> Table:
@@ -19,7 +20,7 @@ def experiments_table(source: Source) -> Table:
             Row(
                 cells=(
                     experiment.name,
-                    experiment.protocol or "predicted only",
+                    protocol_name(experiment) or "predicted only",
                     f"{experiment.circuits.family}, {experiment.circuits.gates}",
                     qubits_of(source, experiment),
                     depths_of(experiment),

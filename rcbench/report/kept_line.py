@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from rcbench.campaign import Experiment
 from rcbench.report.axis_line import Line, above
 from rcbench.report.curves import compared_curve
 from rcbench.report.printed import percent
 from rcbench.report.source import Group, Source
+from rcbench.signatures.registry import signature
 
 
 def kept_line(source: Source, group: Group, threshold: float) -> Line:
@@ -15,6 +17,15 @@ def kept_line(source: Source, group: Group, threshold: float) -> Line:
         points = compared_curve(source, experiment.name, "self_fidelity")
         if len(points) == 0:
             continue
+        most = 1 + _margin(experiment)
+        if any(low > most for low in points.low):
+            return Line(
+                axis="kept",
+                status="undecided",
+                text=f"kept above {threshold:g} undecided",
+                detail=f"{experiment.name}: the shots coincide far more often than these circuits can make them: a "
+                "stuck device, shots of another circuit, or repeated shots.",
+            )
         line = above("kept", points, threshold, level, f"{experiment.name}: collision-based self-fidelity")
         if line.status != "undecided":
             return line
@@ -43,6 +54,12 @@ def kept_line(source: Source, group: Group, threshold: float) -> Line:
         text=f"kept above {threshold:g} undecided" if echoes else "kept not measured",
         detail=why if echoes else "No signature of the kept axis is in the data.",
     )
+
+
+def _margin(experiment: Experiment) -> float:
+    """What a self-fidelity may exceed 1 by."""
+    margin = experiment.margins.get("self_fidelity")
+    return margin.value if margin is not None else signature("self_fidelity").margin
 
 
 def faithful_line(source: Source, group: Group, threshold: float) -> Line:

@@ -17,7 +17,7 @@ from rcbench.report.printed import MISSING, duration, whole
 from rcbench.report.source import Source
 from rcbench.report.table import Table, table
 from rcbench.report.value_table import fitted_table, value_table, warnings
-from rcbench.report.words import about, cards
+from rcbench.report.words import about, cards, protocol_name
 
 LAYOUTS = {"report.html": "prediction.html.jinja", "report.md": "prediction.md.jinja"}
 LIMITS = (
@@ -84,7 +84,7 @@ def _experiments(source: Source) -> Table:
     rows = [
         (
             experiment.name,
-            experiment.protocol or "signatures only",
+            protocol_name(experiment) or "signatures only",
             f"{experiment.circuits.family}, {experiment.circuits.gates}",
             qubits_of(source, experiment),
             depths_of(experiment),

@@ -11,12 +11,14 @@ RULE = (
     "Spread is complete at the first depth at which the mean over (butterfly, probe) pairs of |OTOC - scrambled "
     "value|, each pair averaged over instances first, lies within the OTOC margin and does not leave it again, while "
     "every probe's reference echo stands more than five of its standard errors above zero. The scrambled value is "
-    "-1/(4^n - 1). Where a control that cannot spread falls as well, spread is undecided.",
+    "-1/(4^n - 1). Where a control that cannot spread falls as well, or the circuits without errors would not spread "
+    "by that depth, spread is undecided.",
     "Without an OTOC, spread is read from the circuits: the first depth at which their ideal collision probability is "
     "within 10 % of the Porter-Thomas one, provided the cross-entropy fidelity shows that the device ran them. That "
     "is a weaker statement, about outcomes and not operators, and is marked as such.",
     "Kept ends where the collision-based self-fidelity first falls below the threshold p. Where collisions decide "
-    "nothing, the cross-entropy fidelity bounds it from below. An echo alone never supports kept.",
+    "nothing, the cross-entropy fidelity bounds it from below. An echo alone never supports kept, and a self-fidelity "
+    "beyond 1 by more than its margin decides nothing.",
     "Each interval holds the depths at which the confidence band of the curve meets the level, with straight lines "
     "between measured depths; ends are given as whole layers. What the data do not settle is called undecided.",
 )

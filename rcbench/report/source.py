@@ -15,7 +15,7 @@ from rcbench import tables
 from rcbench.campaign import Campaign, Circuits, Experiment, load_campaign
 from rcbench.circuits.families import ADOPTED, CONTROLS
 from rcbench.errors import InputError
-from rcbench.files import read_csv, read_provenance, read_text
+from rcbench.files import check_files, read_csv, read_provenance, read_text
 
 _TEXT = frozenset({
     "circuit_id", "experiment", "protocol", "role", "family", "gates", "measured_qubits", "physical_qubits", "patch",
@@ -127,6 +127,10 @@ def groups(source: Source) -> list[Group]:
 
 def read_source(folder: Path) -> Source:
     """Read the folder that a comparison left; InputError names a file or column that is missing."""
+    provenance = read_provenance(folder)
+    if not provenance:
+        raise InputError("folder", str(folder), "a folder that `rcbench compare` wrote, with its provenance.json")
+    check_files(folder, provenance)
     return Source(
         campaign=load_campaign(folder / "campaign.toml"),
         roster=_read(folder, "roster", tables.ROSTER),
@@ -134,7 +138,7 @@ def read_source(folder: Path) -> Source:
         estimates=_read(folder, "estimates", tables.ESTIMATES),
         predictions=_read(folder, "predictions", tables.PREDICTIONS),
         audit=_read_audit(folder / "audit.json"),
-        provenance=read_provenance(folder),
+        provenance=provenance,
     )
 
 
@@ -152,6 +156,7 @@ def read_prediction(folder: Path) -> Source:
     provenance = read_provenance(folder)
     if not provenance.get("complete"):
         raise InputError("folder", str(folder), "a finished prediction; the same predict command finishes it")
+    check_files(folder, provenance)
     return Source(
         campaign=load_campaign(folder / "campaign.toml"),
         roster=pd.DataFrame(columns=list(tables.ROSTER)),

@@ -72,8 +72,20 @@ def _spread_from_otoc(source: Source, group: Group, experiment: Experiment) -> L
     if fallen:
         return line("undecided", "spread undecided", f"The control that cannot spread ({fallen}) fell as well.")
     depth = int(points.depth[0]) if at.value == -math.inf else first_layer(at.value)
+    circuits = _ideal_distance(source, experiment, target, depth)
+    if circuits > margin:
+        detail = f"Their circuits do not spread so soon: without errors it is {circuits:.2f}. So this is not spreading."
+        return line("undecided", "spread undecided", detail)
     text = f"spread complete by depth {depth} {ends(at, points, level, up=True)}"
     return line("complete", text, f"Last with a living reference: {last}.{beyond}", depth, at)
+
+
+def _ideal_distance(source: Source, experiment: Experiment, target: float, depth: int) -> float:
+    """The same mean for an ideal device, at the first measured depth from there on: what the circuits can do."""
+    rows = source.compared(experiment.name, "otoc").dropna(subset=["ideal"])
+    distance = (rows["ideal"].astype(float) - target).abs().groupby(rows["depth"].astype(float)).mean()
+    later = distance[distance.index >= depth]
+    return float(later.iloc[0]) if len(later) else math.inf
 
 
 def _fallen_controls(source: Source, group: Group, margin: float, depth: float) -> str:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+
 from rcbench.campaign import Experiment
 from rcbench.circuits.families import ADOPTED, family_of
 from rcbench.report.source import Source
@@ -14,12 +16,17 @@ _OTHERS = {
 }
 
 
+def protocol_name(experiment: Experiment) -> str:
+    """A protocol's name, of a file its name without the folder; empty where there is none."""
+    return Path(experiment.protocol).name if experiment.protocol else ""
+
+
 def about(experiment: Experiment) -> str:
     """Protocol, circuits and gates of an experiment, and what it is a control for."""
     circuits = _OTHERS.get(experiment.circuits.family, family_of(experiment.circuits.two_qubit).about)
     role = f" Control for {experiment.control_for}." if experiment.control_for else ""
     return (
-        f"{experiment.protocol or 'Predicted only'}, {experiment.circuits.family} ({circuits}), "
+        f"{protocol_name(experiment) or 'Predicted only'}, {experiment.circuits.family} ({circuits}), "
         f"{experiment.circuits.gates}.{role}"
     )
 

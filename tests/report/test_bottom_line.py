@@ -34,8 +34,13 @@ def only(source: Source, *names: str) -> Source:
     return replace(source, campaign=replace(source.campaign, experiments=kept), **frames)
 
 
-def with_values(source: Source, experiment: str, signature: str, value, error: float = 0.005, scatter: float = 0.0):
-    """The same data with a signature of one experiment set to value(depth, region), the same in every instance."""
+def with_values(
+    source: Source, experiment: str, signature: str, value, error: float = 0.005, scatter: float = 0.0, ideal=True
+):
+    """The same data with a signature of one experiment set to value(depth, region), the same in every instance.
+
+    ideal: an OTOC's ideal value follows it, so that the circuits spread as the data say.
+    """
     draw = np.random.default_rng(11)
 
     def chosen(frame: pd.DataFrame) -> pd.Series:
@@ -49,6 +54,8 @@ def with_values(source: Source, experiment: str, signature: str, value, error: f
     rows = chosen(comparison)
     exact = np.array([value(d, r) for d, r in zip(comparison[rows]["depth"], comparison[rows]["region"], strict=True)])
     comparison.loc[rows, "measured"] = exact
+    if signature == "otoc" and ideal:
+        comparison.loc[rows, "ideal"] = exact
     comparison.loc[rows, "std_error"] = error
     comparison.loc[rows, "ci_low"], comparison.loc[rows, "ci_high"] = exact - 2.2 * error, exact + 2.2 * error
     return replace(source, estimates=estimates, comparison=comparison)
@@ -88,6 +95,21 @@ def test_known_depths_of_spreading_and_loss_are_found(source):
     assert "T1, T2" in found.scope
     assert "invented" in found.scope
     assert "2031-04-02" in found.scope
+
+
+def test_an_otoc_that_falls_before_the_circuits_can_spread_is_not_called_spreading(source):
+    data = with_values(source, "butterfly", "otoc", lambda *_: 1.0)
+    data = with_values(data, "butterfly", "otoc", lambda *_: 0.0, ideal=False)
+    (found,) = bottom_lines(data)
+    assert found.spread.status == "undecided"
+    assert "do not spread so soon" in found.spread.detail
+
+
+def test_shots_that_coincide_more_often_than_the_circuits_allow_decide_nothing_about_kept(source):
+    data = with_values(source, "sampling", "self_fidelity", lambda *_: 6.7)
+    (found,) = bottom_lines(data)
+    assert found.kept.status == "undecided"
+    assert "stuck device" in found.kept.detail
 
 
 def test_a_device_that_only_decoheres_is_never_called_scrambled(source):

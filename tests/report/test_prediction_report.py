@@ -9,7 +9,10 @@ import pandas as pd
 import pytest
 from test_write import Page
 
+from rcbench.campaign import load_campaign
 from rcbench.errors import InputError
+from rcbench.files import shipped
+from rcbench.kit import build_kit
 from rcbench.predictions import predict
 from rcbench.reference import haar
 from rcbench.report import figure_entropy, figure_front
@@ -21,6 +24,7 @@ from rcbench.report.source import read_prediction
 from rcbench.report.value_table import fitted_table, value_table
 from rcbench.report.write import write_report
 from rcbench.signatures import ENSEMBLE_KEYS, INSTANCE_KEYS
+from rcbench.verbs import compare
 
 DEVICE = """
 [campaign]
@@ -199,3 +203,23 @@ def test_regions_stand_by_size_and_depths_are_thinned_with_both_ends_kept():
     assert by_size(["10", "2", "0-1", "3"]) == ["2", "3", "10", "0-1"]
     assert by_size(["probe=10;V=Z", "probe=9;V=Z"]) == ["probe=9;V=Z", "probe=10;V=Z"]
     assert at_depths(pd.DataFrame({"depth": range(12)}), 4) == [0, 4, 7, 11]
+
+
+def test_a_comparison_reports_what_was_only_predicted_and_needs_no_other_folder(tmp_path):
+    """With a protocol file of the user's own, which the compared folder carries with it; shots are uniform."""
+    (tmp_path / "mine.toml").write_text((shipped("protocols") / "direct-sampling.toml").read_text(encoding="utf-8"))
+    text = DEVICE + PROTOCOL.replace('"direct-sampling"', '"mine.toml"') + CUTS
+    (tmp_path / "campaign.toml").write_text(text, encoding="utf-8")
+    kit = build_kit(load_campaign(tmp_path / "campaign.toml"), tmp_path / "kit")
+    counts = [f"{outcome:03b},{6 + (outcome < 2)}" for outcome in range(8)]  # 50 shots
+    lines = [f"{row.circuit_id},{count}" for row in kit.rows for count in counts]
+    (tmp_path / "shots.csv").write_text("\n".join(["circuit_id,bitstring,count", *lines]) + "\n", encoding="utf-8")
+    compare(tmp_path / "kit", tmp_path / "shots.csv", tmp_path / "out", bit_order="q0-first")
+    for gone in ("mine.toml", "campaign.toml"):
+        (tmp_path / gone).unlink()
+    page = write_report(tmp_path / "out").read_text(encoding="utf-8")
+    assert (tmp_path / "out" / "figures" / "profile-entropies.svg").is_file()
+    assert "Predicted values by depth" in page
+    assert "Each line is one depth" in page
+    assert "mine.toml, brickwork" in page
+    assert str(tmp_path) not in page

@@ -82,6 +82,19 @@ def test_shots_of_one_order_and_misfiled_too_are_told_both(world):
     assert found[0].repair.moves == {keys[1]: keys[4], keys[4]: keys[1]} or found[1].repair.moves
 
 
+def test_runs_that_cannot_show_their_order_are_taken_to_be_like_the_others(tmp_path):
+    """Echoes that return to zeros look alike in any order, and three probes are too few to tell."""
+    more = BUTTERFLY + MIRROR.replace('"mirror"', '"echo"').replace("mirror-echo", "loschmidt-echo")
+    world = make_world(tmp_path, 6, depths=(2, 6), instances=3, more=more)
+    width = {row.circuit_id: len(row.measured_qubits) for row in world.kit.rows}
+    drawn = {k: permuted(v, width[k[0]], range(width[k[0]])[::-1]) for k, v in drawn_at(world, 0.6).items()}
+    [found] = [f for f in examined(world, drawn) if f.told]
+    assert found.kind == "bit-order"
+    assert set(found.repair.orders) == set(drawn)
+    assert all(order.source == tuple(range(width[k[0]]))[::-1] for k, order in found.repair.orders.items())
+    assert "cannot show it and are taken to be alike" in found.text
+
+
 def test_one_circuit_in_reversed_order_is_told_alone(world):
     drawn = drawn_at(world, 0.6, seed=3)
     key = sorted(key for key in drawn if key[0].startswith("sampling"))[-1]

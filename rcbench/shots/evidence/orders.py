@@ -88,11 +88,10 @@ INVERTED = ("every bit inverted", "reversed, every bit inverted")
 def by_name(name: str, n_bits: int) -> Order | None:
     """The orders that mean the same for any number of bits; None for another name."""
     everything = tuple(range(n_bits))
-    if name == "reversed":
-        return Order(name, everything[::-1])
-    return (
-        Order(name, everything if name == INVERTED[0] else everything[::-1], everything) if name in INVERTED else None
-    )
+    if name not in ("reversed", *INVERTED):
+        return None
+    source = everything if name == INVERTED[0] else everything[::-1]
+    return Order(name, source, everything if name in INVERTED else ())
 
 
 def _halves(bits: list[int]) -> list[int]:

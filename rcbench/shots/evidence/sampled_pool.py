@@ -32,7 +32,7 @@ class SampledPool:
     Args:
         n_bits: bits. index, counts: (k,) outcomes as delivered, and how often. starts: (runs,).
         first: (runs,) where the probabilities of the run's circuit start in `flat`, those of all circuits in turn.
-        ideal_z: (runs, n) mean Z of the circuits' bits. depth: (runs,) number of the depth.
+        ideal_z: (runs, n) mean Z of the circuits' bits. square: (runs,) sum p^2. depth: (runs,) number of the depth.
     """
 
     n_bits: int
@@ -42,8 +42,10 @@ class SampledPool:
     first: IntArray
     flat: FloatArray
     ideal_z: FloatArray
+    square: FloatArray
     depth: IntArray
     held: dict[tuple[tuple[int, ...], tuple[int, ...]], FloatArray] = field(default_factory=dict)
+    seen_z: FloatArray | None = None
 
     @property
     def offset(self) -> IntArray:
@@ -67,6 +69,7 @@ class SampledPool:
             first=self.first[chosen],
             flat=self.flat,
             ideal_z=self.ideal_z[chosen],
+            square=self.square[chosen],
             depth=self.depth[chosen],
         )
 
@@ -80,9 +83,11 @@ class SampledPool:
 
     def mean_z(self) -> FloatArray:
         """(runs, n) mean Z of the bits as delivered."""
-        shifts = range(self.n_bits - 1, -1, -1)
-        ones = [np.add.reduceat((self.index >> shift & 1) * self.counts, self.starts) for shift in shifts]
-        return np.asarray(1 - 2 * np.array(ones).T / self.shots[:, None])
+        if self.seen_z is None:
+            shifts = range(self.n_bits - 1, -1, -1)
+            ones = [np.add.reduceat((self.index >> shift & 1) * self.counts, self.starts) for shift in shifts]
+            self.seen_z = np.asarray(1 - 2 * np.array(ones).T / self.shots[:, None])
+        return self.seen_z
 
     def bias(self, order: Order) -> FloatArray:
         """(n,) mean Z of the floor, of the bits as delivered, if they come in this order."""
@@ -91,10 +96,9 @@ class SampledPool:
             if len(self.held) >= FLOORS:
                 self.held.clear()
             size = 2.0**self.n_bits
-            v = np.array([float(np.square(self.circuit(r), dtype=np.float64).sum()) for r in range(len(self.starts))])
             seen = self.flat[self.offset + order.mended(self.index)].astype(np.float64)
             cross = size * np.add.reduceat(seen * self.counts, self.starts) / self.shots - 1
-            share = np.clip(cross / np.maximum(size * v - 1, scores.LEAST_EXCESS), 0, 1)
+            share = np.clip(cross / np.maximum(size * self.square - 1, scores.LEAST_EXCESS), 0, 1)
             of_circuits = np.empty_like(self.ideal_z)
             of_circuits[:, list(order.source)] = self.ideal_z * self._signs(order)
             self.held[key] = np.median(self.mean_z() - share[:, None] * of_circuits, axis=0)
@@ -125,7 +129,10 @@ class SampledPool:
     def split(self, draw: Draw) -> tuple[Pool, Pool]:
         """As Pool."""
         first, second = halves(self.counts, draw)
-        return replace(self, counts=first, held={}), replace(self, counts=second, held={})
+        return (
+            replace(self, counts=first, held={}, seen_z=None),
+            replace(self, counts=second, held={}, seen_z=None),
+        )
 
     def objective(self, source: Sequence[int]) -> Climb:
         """As Pool."""
@@ -244,5 +251,6 @@ def sampled_pool(cases: Sequence[Case], probabilities: Sequence[FloatArray]) -> 
         first=np.arange(len(cases), dtype=np.int64) << n,
         flat=np.concatenate(probabilities),
         ideal_z=np.array([1 - 2 * marginal_ones(p) for p in probabilities]),
+        square=np.array([float(np.square(p, dtype=np.float64).sum()) for p in probabilities]),
         depth=numbered([case.row.depth for case in cases]),
     )
