@@ -34,6 +34,14 @@ if TYPE_CHECKING:
 COMPARED = ("campaign.toml", "roster.csv", "predictions.csv", "estimates.csv", "comparison.csv", "audit.json")
 
 
+NOT_EXAMINED = {
+    "severity": "note",
+    "text": "What the shots themselves give evidence of (another bit order, exchanged files, stuck bits) was not "
+    "examined for this report.",
+    "hint": "rcbench check KIT SHOTS examines it",
+}
+
+
 @dataclass(frozen=True, slots=True)
 class Compared:
     """What a comparison gave: the table, and whether the audit or a finding needs attention."""
@@ -134,7 +142,9 @@ def compare(
         table = compare_frames(source, estimates, predicted)
         write_csv(out / "comparison.csv", table, COMPARISON)
         write_parquet(out / "comparison.parquet", table, COMPARISON)
-        write_text(out / "audit.json", json.dumps(audit.as_dict(), indent=1, sort_keys=True) + "\n")
+        said = audit.as_dict()
+        said["problems"] = [*said["problems"], NOT_EXAMINED]
+        write_text(out / "audit.json", json.dumps(said, indent=1, sort_keys=True) + "\n")
         own = [f"{PROTOCOLS}/{path.name}" for path in sorted((source.folder / PROTOCOLS).glob("*.toml"))]
         for name in ("campaign.toml", "roster.csv", *own):  # the campaign names a user's protocols by their place
             write_bytes(out / name, (source.folder / name).read_bytes())

@@ -30,6 +30,8 @@ def test_the_floor_is_the_product_of_its_bits():
         for bits in (format(x, "06b") for x in range(SIZE))
     ]
     assert_allclose(scores.floor(bias), expected, rtol=1e-12)
+    index = np.array([0, 5, 63, 17])
+    assert_allclose(1 / scores.inverse_floor_at(index, bias), np.array(expected)[index], rtol=1e-12)
 
 
 def test_log_likelihoods_are_those_of_the_multinomial_distribution():

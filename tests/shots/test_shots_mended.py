@@ -12,7 +12,7 @@ from fault_cases import draw, exchange, make_world, permuted
 from rcbench.cli import cli
 from rcbench.errors import InputError
 from rcbench.shots.audit import check_shots
-from rcbench.shots.evidence.mend import mended_string
+from rcbench.shots.evidence.mend import mended_characters
 from rcbench.shots.evidence.orders import Order
 from rcbench.shots.evidence.series import read_series
 from rcbench.shots.mended import MENDED_FILE, mended_notes
@@ -145,6 +145,10 @@ def test_a_folder_that_is_there_is_never_written_into(world, tmp_path, capsys):
     with pytest.raises(InputError, match="a folder that does not exist yet"):
         check(capsys, world.kit.folder, folder, "--apply", tmp_path / "out")
     assert list((tmp_path / "out").iterdir()) == []
+
+
+def mended_string(text, order, columns):
+    return mended_characters(np.frombuffer(text.encode(), dtype=np.uint8)[None], order, columns).tobytes().decode()
 
 
 def test_symbols_for_lost_qubits_move_with_their_bit_and_are_never_inverted():

@@ -9,20 +9,20 @@ is told where
   ones, or all permutations that move as few bits, n! in the end;
 - the other half, which had no part in the search, prefers it by more than ln(1 / ALPHA);
 - the circuits fit clearly better: the shots as asked keep less than KEPT of the fidelity;
-- the circuits then explain orphans.CLAIMED_SHARE of the structure of the runs that prefer it, and pools.POOLED_SHARE
-  of that of all: shots of something else fit some order, too.
+- the circuits then explain orphans.CLAIMED_SHARE of the structure of the runs that prefer it, and
+  sampled_pool.POOLED_SHARE of that of all: shots of something else fit some order, too.
 
 A deep circuit keeps 2^-(n - cycles) of its cross-entropy under a permutation, so one exchange halves it. Where
 circuits are symmetric several orders fit alike: exchanges that change nothing are counted and told.
 
-The search costs n^2 / 2 likelihoods of at most pools.SEARCH_ENTRIES outcomes a step, and some n steps a start.
+The search costs n^2 / 2 likelihoods of at most sampled_pool.SEARCH_ENTRIES outcomes a step, and some n steps a start.
 """
 
 from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import NamedTuple
 
 from rcbench.arrays import FloatArray
@@ -167,15 +167,12 @@ def _random_starts(n_bits: int) -> list[tuple[int, ...]]:
 
 def with_ties(pool: Pool, found: FoundOrder) -> FoundOrder:
     """Name the exchanges of two bits that leave the fit as it is."""
-    here, asked = evidence(pool, found.order, identity(pool.n_bits))[1], identity(pool.n_bits)
-    alike = []
-    for a in range(pool.n_bits):
-        for b in range(a):
-            source = list(found.order.source)
-            source[a], source[b] = source[b], source[a]
-            if evidence(pool, Order("", tuple(source), found.order.flipped), asked)[1] > here - TIE:
-                alike.append((b, a))
-    return FoundOrder(found.order, found.gain, found.limit, found.held_out, found.held_limit, tuple(alike))
+    if found.order.flipped:
+        return found
+    place = pool.objective(found.order.source)
+    here = place.score()
+    pairs = [(b, a) for a in range(pool.n_bits) for b in range(a) if place.exchanged(a, b) > here - TIE]
+    return replace(found, alike=tuple(pairs))
 
 
 def gains_by_run(pool: Pool, order: Order) -> tuple[FloatArray, FloatArray]:

@@ -236,12 +236,7 @@ class Lane:
 
     def inverse_floor_at(self, bias: FloatArray) -> FloatArray:
         """(k,) 1 / g of all outcomes of all runs, g the floor of a given mean Z; for any number of bits."""
-        bias = np.clip(bias, -scores.LARGEST_BIAS, scores.LARGEST_BIAS)
-        index, out = self.index, np.ones(sum(len(case.index) for case in self.cases))
-        for bit in range(self.n_bits):
-            one = index >> (self.n_bits - 1 - bit) & 1
-            out *= np.where(one == 1, 2 / (1 - bias[bit]), 2 / (1 + bias[bit]))
-        return out
+        return scores.inverse_floor_at(self.index, bias)
 
     def collisions(self) -> scores.Collisions:
         """Coincidences of each run."""

@@ -22,13 +22,14 @@ from rcbench.arrays import IntArray
 from rcbench.errors import InputError
 from rcbench.files import cannot_write, write_text
 from rcbench.shots.declarations import EXECUTION_FILE, SHOTS_FILE, Declared, read_declared
+from rcbench.shots.decode import ZERO
 from rcbench.shots.evidence.finding import Finding
 from rcbench.shots.evidence.orders import Order, words
 from rcbench.shots.evidence.series import files_set_aside
 from rcbench.shots.findings import many
 from rcbench.shots.intake import Runs
 from rcbench.shots.mended import MENDED_FILE
-from rcbench.shots.records import Batch, Irregular
+from rcbench.shots.records import MAX_REPEAT, Batch, Irregular, Text
 from rcbench.shots.shots import RunKey, Shots
 from rcbench.shots.sources import Source, list_sources
 
@@ -219,12 +220,9 @@ class _Rewriter:
             if not len(batch):
                 continue
             repeat = self._repeats(batch)
-            strings = self._strings(batch, repeat)
-            ids, repeats = self._places(batch, repeat)
-            columns: dict[str, Any] = {
-                "circuit_id": pa.array(ids, pa.string()),
-                "bitstring": pa.array(strings, pa.string()),
-            }
+            runs = list(_runs_of(batch, repeat))
+            ids, repeats = self._places(batch, repeat, runs)
+            columns: dict[str, Any] = {"circuit_id": ids, "bitstring": self._strings(batch, runs)}
             columns["count"] = pa.array(np.ones(len(batch), dtype=np.int64) if batch.count is None else batch.count)
             columns["repeat"] = pa.array(repeats, pa.int64())
             if batch.label is not None:
@@ -256,57 +254,66 @@ class _Rewriter:
         run = int(self.runs.only_run[number])
         return self.runs.keys[run][1] if run >= 0 else 0
 
-    def _places(self, batch: Batch, repeat: IntArray) -> tuple[list[str], IntArray]:
+    def _places(self, batch: Batch, repeat: IntArray, runs: Sequence[tuple[RunKey, IntArray]]) -> tuple[Any, IntArray]:
         """Circuit ids and repeats as they should be."""
-        ids = [batch.ids[place] for place in batch.circuit.tolist()]
-        out = repeat.copy()
-        for place, name in enumerate(batch.ids):
-            rows = np.flatnonzero(batch.circuit == place)
-            for number in np.unique(repeat[rows]).tolist():
-                new = self.moves.get((name, int(number)))
-                if new is None:
-                    continue
-                for row in rows[repeat[rows] == number].tolist():
-                    ids[row], out[row] = new
-        return ids, out
+        import pyarrow as pa
 
-    def _strings(self, batch: Batch, repeat: IntArray) -> list[str]:
-        """The strings with their bits in order, still written as shots.toml declares."""
+        names, place, out = list(batch.ids), batch.circuit.astype(np.int32), repeat.copy()
+        for key, rows in runs:
+            new = self.moves.get(key)
+            if new is not None:
+                place[rows], out[rows] = len(names), new[1]
+                names.append(new[0])
+        return pa.DictionaryArray.from_arrays(pa.array(place), pa.array(names, pa.string())).dictionary_decode(), out
+
+    def _strings(self, batch: Batch, runs: Sequence[tuple[RunKey, IntArray]]) -> Any:
+        """The strings with their bits in order, still written as shots.toml declares; other lengths are left alone."""
+        import pyarrow as pa
+
         bits = batch.bits.without(ord(self.reading.separator)) if self.reading.separator else batch.bits
-        strings = [bits.get(row) for row in range(len(batch))]
-        for place, name in enumerate(batch.ids):
-            rows = np.flatnonzero(batch.circuit == place)
-            for number in np.unique(repeat[rows]).tolist():
-                order = self.orders.get((name, int(number)))
-                if order is None:
-                    continue
-                for row in rows[repeat[rows] == number].tolist():
-                    strings[row] = self._mended(strings[row], order)
-        return strings
-
-    def _mended(self, text: str, order: Order) -> str:
-        n = len(order.source)
-        if len(text) != self.reading.n_characters(n):
-            return text  # a bad row stays one
-        return mended_string(text, order, self.reading.columns(n))
-
-
-_INVERTED = str.maketrans("01", "10")
+        data, lengths = bits.data.copy(), bits.lengths()
+        for key, rows in runs:
+            order = self.orders.get(key)
+            if order is None:
+                continue
+            n = len(order.source)
+            width = self.reading.n_characters(n)
+            rows = rows[lengths[rows] == width]  # a bad row stays one
+            if len(rows):
+                at = bits.offsets[:-1][rows][:, None] + np.arange(width)
+                data[at] = mended_characters(bits.data[at], order, self.reading.columns(n))
+        if len(data) and data.max() > 127:  # no text of ours: as the reader shows it
+            mended = Text(data, bits.offsets)
+            return pa.array([mended.get(row) for row in range(len(batch))], pa.string())
+        offsets = pa.py_buffer(np.ascontiguousarray(bits.offsets, dtype=np.int64))
+        return pa.LargeStringArray.from_buffers(len(batch), offsets, pa.py_buffer(data))
 
 
-def mended_string(text: str, order: Order, columns: slice | IntArray) -> str:
-    """One string with its bits in order; symbols for lost qubits move with their bit.
+def _runs_of(batch: Batch, repeat: IntArray) -> Iterator[tuple[RunKey, IntArray]]:
+    """The runs of a batch, and the rows of each."""
+    code = batch.circuit.astype(np.int64) * (MAX_REPEAT + 2) + np.clip(repeat, -1, MAX_REPEAT) + 1
+    order = np.argsort(code, kind="stable")
+    starts = np.flatnonzero(np.diff(code[order], prepend=-1))
+    for rows in np.split(order, starts[1:]):
+        yield (batch.ids[int(batch.circuit[rows[0]])], int(repeat[rows[0]])), rows
+
+
+def mended_characters(text: IntArray, order: Order, columns: slice | IntArray) -> IntArray:
+    """Strings with their bits in order; symbols for lost qubits move with their bit and are never inverted.
 
     Args:
-        order: of the classical bits. columns: position of the character of each classical bit.
+        text: (rows, width) characters, uint8. order: of the classical bits.
+        columns: position of the character of each classical bit.
     """
     n = len(order.source)
-    where = list(range(n))[columns] if isinstance(columns, slice) else columns.tolist()
-    out = list(text)
+    where = np.arange(n)[columns] if isinstance(columns, slice) else np.asarray(columns)
+    out = text.copy()
     for bit, place in enumerate(order.source):
-        character = text[where[place]]
-        out[where[bit]] = character.translate(_INVERTED) if bit in order.flipped else character
-    return "".join(out)
+        characters = text[:, where[place]]
+        if bit in order.flipped:
+            characters = np.where((characters == ZERO) | (characters == ZERO + 1), characters ^ 1, characters)
+        out[:, where[bit]] = characters
+    return out
 
 
 def summary(record: Mapping[str, Any], out: Path) -> str:

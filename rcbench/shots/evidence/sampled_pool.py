@@ -15,7 +15,7 @@ from rcbench.shots.evidence.cases import Case, entries, marginal_ones
 from rcbench.shots.evidence.orders import Order
 from rcbench.shots.evidence.pools import CLEAR, Climb, Pool, halves, match, numbered, preference
 
-SEARCH_ENTRIES = 40_000  # outcomes that the search climbs on; the decision uses all
+SEARCH_ENTRIES = 20_000  # outcomes that the search climbs on; the decision uses all
 SEARCH_FIDELITY = 0.2
 FLOORS = 8  # floors of different orders that are kept
 READOUT_BIAS = 0.1
@@ -111,13 +111,19 @@ class SampledPool:
         """(2**n,) 1 / g, by the bits in order."""
         return 1 / scores.floor(self.bias(order)[list(order.source)] * self._signs(order))
 
+    def _inverse_floor_at(self, order: Order) -> FloatArray:
+        """(k,) 1 / g of each outcome: from a table, or bit by bit where that would be much larger than the outcomes."""
+        if 2**self.n_bits <= 4 * len(self.index):
+            return np.asarray(self.inverse_floor(order)[order.mended(self.index)])
+        return scores.inverse_floor_at(self.index, self.bias(order))
+
     def by_run(self, order: Order, rival: Order) -> FloatArray:
         """As Pool: with the floor of either order, so that none wins by its floor alone; over uniform shots."""
         mended = order.mended(self.index)
         p = self.flat[self.offset + mended]
         found = []
         for owner in dict.fromkeys((order, rival)):
-            at = self.inverse_floor(owner)[owner.mended(self.index)]
+            at = self._inverse_floor_at(owner)
             base = -np.add.reduceat(self.counts * np.log(at / 2.0**self.n_bits), self.starts)[:, None]
             found += [base, base + scores.log_likelihoods(p * at, self.counts, self.starts)]
         return np.concatenate(found, axis=1)

@@ -42,6 +42,14 @@ def floor(bias: FloatArray) -> FloatArray:
     return out
 
 
+def inverse_floor_at(index: IntArray, bias: FloatArray) -> FloatArray:
+    """(k,) 1 / g at some outcomes, for any number of bits; index: (k,), bias: (n,) as for `floor`."""
+    n, out = len(bias), np.ones(len(index))
+    for bit, mean in enumerate(np.clip(bias, -LARGEST_BIAS, LARGEST_BIAS)):
+        out *= np.where(index >> (n - 1 - bit) & 1, 2 / (1 - mean), 2 / (1 + mean))
+    return out
+
+
 def log_likelihoods(ratio: FloatArray, counts: IntArray, starts: IntArray) -> FloatArray:
     """(runs, len(FIDELITIES)) log-likelihood ratio of F p + (1 - F) g to g, for each F.
 
