@@ -18,8 +18,11 @@ LEAST = {
 }
 
 
-@pytest.mark.slow
-@pytest.mark.parametrize(("n_qubits", "runs"), [(6, 100), (12, 100), (20, 2)])
+FULL = [pytest.param(n, runs, marks=pytest.mark.benchmark) for n, runs in ((6, 100), (12, 100), (20, 2))]  # hours
+SHORT = [pytest.param(6, 4, marks=pytest.mark.slow)]
+
+
+@pytest.mark.parametrize(("n_qubits", "runs"), [*SHORT, *FULL])
 def test_faults_are_found_and_clean_shots_are_not_accused(tmp_path, capsys, n_qubits, runs):
     """False alarms: of all sets of shots, clean or with another fault, at most 1 in 100 with a wrong finding."""
     world = table_world(tmp_path, n_qubits)

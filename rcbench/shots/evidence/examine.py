@@ -3,6 +3,17 @@
 Stuck bits come first, since they are left out of what follows; then the order of bits, since nothing matches in a wrong
 one; then which circuit a run is of; then what is left without an explanation. Repeated blocks and drift ask for
 nothing of this. See `find_evidence`.
+
+False alarms. The limits are set for finding.ALPHA = 1e-3 a kind and campaign. Measured on shots drawn by Cirq, with
+tests/shots/fault_table.py (30 runs a set, 2000 shots each, F = 0.6, 0.2 and 0.05, readout flips of 1 % and 3 %):
+
+- 6 qubits: 0 of 75 clean sets with a finding, and 0 of 825 sets, clean or with one planted fault, with a wrong one;
+- 12 qubits: 0 of 24 clean sets. Of 8 sets with two files exchanged at F = 0.05, one had a repair that was half right:
+  it moved one run to its place, and the other to none. tests/shots/test_evidence_table.py makes the whole table;
+- depolarising gates and amplitude damping, by Cirq's density matrices of 6 qubits, 300 to 50,000 shots: 0 of 48 sets.
+
+What cannot show: runs that return the same string exchanged among themselves, and circuits with equal outcomes.
+Foreign shots in one file need about 4 sqrt(2 D) / F^2 shots: 2000 are enough at F = 0.6, not at 0.2.
 """
 
 from __future__ import annotations
