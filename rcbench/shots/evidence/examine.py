@@ -5,7 +5,8 @@ one; then which circuit a run is of; then what is left without an explanation. R
 nothing of this. See `find_evidence`.
 
 False alarms. The limits are set for finding.ALPHA = 1e-3 a kind and campaign. Measured on shots drawn by Cirq, with
-tests/shots/fault_table.py (30 runs a set, 2000 shots each, F = 0.6, 0.2 and 0.05, readout flips of 1 % and 3 %):
+tests/shots/fault_table.py (25 runs a set at 6 qubits, 8 at 12; 2000 shots each, F = 0.6, 0.2 and 0.05, readout flips
+of 1 % and 3 %):
 
 - 6 qubits: 0 of 75 clean sets with a finding, and 0 of 825 sets, clean or with one planted fault, with a wrong one;
 - 12 qubits: 0 of 24 clean sets. Of 8 sets with two files exchanged at F = 0.05, one had a repair that was half right:
